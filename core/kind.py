@@ -1,0 +1,180 @@
+"""The one face of every kind of plan, and the register of kinds.
+
+A kind is one module below `steelyard.core.kinds`. It says how its plans are written (`Grammar`), what
+their parameter is, and how likely they reject and accept at given parameters. Abilities that only some
+kinds have (p-values, stages, a smallest plan) are small protocols in `steelyard.core.abilities`;
+a question that needs one refuses in one sentence where a kind lacks it.
+"""
+
+from __future__ import annotations
+
+from abc import ABC, abstractmethod
+from collections.abc import Callable, Iterable, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from steelyard.core.errors import InvalidValue
+from steelyard.core.numbers import write_number
+from steelyard.core.parameter import Columns, Floats, Parameter
+from steelyard.core.plan import Claim, Plan, split_claim
+
+
+@dataclass(frozen=True, slots=True)
+class Field:
+    """One field of a plan's text, such as ``n 50`` or ``planning-sigma 0.4``.
+
+    Parameters
+    ----------
+    word : str
+        The word that starts the field; the design's attribute has ``_`` for ``-``.
+    read : callable
+        Turns the text after the word into a value; raises `InvalidValue`.
+    write : callable
+        Turns a value into text.
+    default : object
+        Value of a missing field, which is then not written; `REQUIRED` if it must be there.
+    """
+
+    word: str
+    read: Callable[[str, str], Any]
+    write: Callable[[Any], str] = write_number
+    default: Any = None
+
+    @property
+    def attribute(self) -> str:
+        """Name of the value in the design."""
+        return self.word.replace("-", "_")
+
+
+REQUIRED = object()
+
+
+@dataclass(frozen=True, slots=True)
+class Grammar:
+    """How the plans of a kind are written.
+
+    Parameters
+    ----------
+    kind : str
+        The kind's name, unique: ``Plan.kind``.
+    head : str
+        The words that open the text; several kinds may share a head.
+    marker : str
+        The field that tells this kind from others with the same head.
+    design : type
+        Frozen dataclass of the design; checks itself when made.
+    fields : tuple of Field
+        The design's fields.
+    order : tuple of str
+        Canonical order of all fields, common ones (claim, alpha, split, verdict) included.
+    rules : tuple of str
+        The fields that together make the rule, e.g. ``("reject",)``.
+    read_rule, write_rule : callable
+        From those fields' texts (dict) and the design to the rule, and back.
+    """
+
+    kind: str
+    head: str
+    marker: str
+    design: Callable[..., Any]
+    fields: tuple[Field, ...]
+    order: tuple[str, ...]
+    rules: tuple[str, ...]
+    read_rule: Callable[[dict[str, str], Any], Any]
+    write_rule: Callable[[Any], dict[str, str]]
+    splits: bool = True
+
+
+class Kind(ABC):
+    """A kind of plan: everything the questions need to know of it."""
+
+    grammar: Grammar
+    parameters: tuple[Parameter, ...]
+
+    @abstractmethod
+    def columns(self, plans: Sequence[Plan]) -> Columns:
+        """Return the plans as a struct of arrays, each of shape ``(len(plans),)``."""
+
+    @abstractmethod
+    def reject(self, columns: Columns, *rates: Floats) -> Floats:
+        """Return the probability that each plan rejects its claim; columns and rates broadcast."""
+
+    @abstractmethod
+    def accept(self, columns: Columns, *rates: Floats) -> Floats:
+        """Return the probability of not rejecting, accurate where it is small."""
+
+    def read_claim(self, text: str, design: Any) -> Claim:
+        """Return the claim that a text such as ``p<=0.02`` makes on this kind's parameter.
+
+        Raises
+        ------
+        InvalidValue
+            When the text has another form, another symbol or a value out of range.
+        """
+        symbol, relation, value = split_claim(text)
+        parameter = self.parameters[0]
+        if symbol.lower() not in (parameter.symbol.lower(), *parameter.aliases):
+            raise InvalidValue("claim", f"be about {parameter.symbol} ({parameter.name})", text)
+        return Claim(parameter.symbol, relation, parameter.claimed(value, relation, design))
+
+    def verify(self, plan: Plan) -> None:
+        """Raise when design, claim and rule do not go together."""
+
+    def size(self, plan: Plan) -> float:
+        """Return the largest power over the claim; here power is monotone, so at its boundary.
+
+        Raises
+        ------
+        InvalidValue
+            When the plan has no claim.
+        """
+        return float(self.reject(self.columns([plan]), np.array([claim_of(plan).value]))[0])
+
+    def algebra(self, plan: Plan) -> str | None:
+        """Return the power function as algebra, or None where there is none."""
+        del plan
+        return None
+
+    def native(self, plan: Plan, cell: str) -> str | None:
+        """Return a formula of the spreadsheet's own functions for the power at `cell`, or None."""
+        del plan, cell
+        return None
+
+
+def claim_of(plan: Plan) -> Any:
+    """Return the plan's claim; refuse with one sentence where a rule came without."""
+    if plan.claim is None:
+        raise InvalidValue("claim", "be written in the plan for this question", None, "e.g. claim p<=0.02")
+    return plan.claim
+
+
+KINDS: dict[str, Kind] = {}
+
+
+def register(kind: Kind) -> Kind:
+    """Add a kind to the register; its name must be new."""
+    name = kind.grammar.kind
+    if name in KINDS:
+        raise InvalidValue("kind", "be registered once", name)
+    KINDS[name] = kind
+    return kind
+
+
+def kind_of(plan: Plan) -> Kind:
+    """Return the kind that a plan is of."""
+    return KINDS[plan.kind]
+
+
+def heads() -> dict[str, list[Kind]]:
+    """Return the kinds by the words that open their text."""
+    found: dict[str, list[Kind]] = {}
+    for kind in KINDS.values():
+        found.setdefault(kind.grammar.head, []).append(kind)
+    return found
+
+
+def words_of(kinds: Iterable[Kind]) -> list[str]:
+    """Return the field words of several kinds, each once, in order."""
+    return list(dict.fromkeys(word for kind in kinds for word in kind.grammar.order))

@@ -1,0 +1,8 @@
+"""The kinds of plans; importing this package registers them all."""
+
+from importlib import import_module
+
+MODULES = ("binomial", "poisson", "hypergeometric")
+
+for _module in MODULES:
+    import_module(f"{__name__}.{_module}")

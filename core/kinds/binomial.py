@@ -1,0 +1,64 @@
+"""Defectives among items from a process: the binomial law."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+from steelyard.core import tails
+from steelyard.core.errors import InvalidValue
+from steelyard.core.kind import REQUIRED, Field, Grammar, register
+from steelyard.core.law import Law
+from steelyard.core.numbers import read_whole
+from steelyard.core.parameter import Columns, Floats, Parameter
+from steelyard.core.threshold import ThresholdKind, threshold_fields
+
+MOST_ITEMS = 10_000_000
+
+
+@dataclass(frozen=True, slots=True)
+class Items:
+    """`n` items inspected, each defective or not."""
+
+    n: int
+
+    def __post_init__(self) -> None:
+        if not 1 <= self.n <= MOST_ITEMS:
+            raise InvalidValue("n", f"be a whole number from 1 to {MOST_ITEMS}", self.n)
+
+
+class BinomialLaw(Law):
+    """Defectives among n independent items with defect rate p."""
+
+    statistic, step = "x", 1
+
+    def at_most(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
+        """Return P(X <= x)."""
+        return tails.binomial_at_most(x, columns["n"], rates[0])
+
+    def at_least(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
+        """Return P(X >= x)."""
+        return tails.binomial_at_least(x, columns["n"], rates[0])
+
+    def support(self, design: Items) -> tuple[float, float]:
+        """Return 0 and n."""
+        return 0, design.n
+
+
+class BinomialKind(ThresholdKind):
+    """Single plans for the rate of defectives."""
+
+    law = BinomialLaw()
+    parameters = (Parameter("p", "defect rate", "proportion between 0 and 1", 0.0, 1.0),)
+    grammar = Grammar(
+        kind="binomial",
+        head="binomial",
+        marker="n",
+        design=Items,
+        fields=(Field("n", lambda text, name: read_whole(text, name, 1, MOST_ITEMS), default=REQUIRED),),
+        order=("n", "claim", "alpha", "split", "reject", "verdict"),
+        **threshold_fields("x", whole=True),
+    )
+
+
+BINOMIAL = register(BinomialKind())

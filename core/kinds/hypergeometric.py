@@ -1,0 +1,138 @@
+"""Defectives in a finite lot: the hypergeometric law. The parameter is D, a whole number of defectives."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from steelyard.core import tails
+from steelyard.core.errors import InvalidValue
+from steelyard.core.kind import REQUIRED, Field, Grammar, register
+from steelyard.core.law import Law
+from steelyard.core.numbers import read_number, read_whole, typed
+from steelyard.core.parameter import Columns, Floats, Parameter
+from steelyard.core.plan import Claim, split_claim
+from steelyard.core.threshold import ThresholdKind, threshold_fields
+
+MOST_ITEMS = 1_000_000
+
+
+@dataclass(frozen=True, slots=True)
+class LotSample:
+    """`n` items drawn without replacement from a lot of `lot` items."""
+
+    lot: int
+    n: int
+
+    def __post_init__(self) -> None:
+        if not 2 <= self.lot <= MOST_ITEMS:
+            raise InvalidValue("lot", f"be a whole number from 2 to {MOST_ITEMS}", self.lot)
+        if not 1 <= self.n <= self.lot:
+            raise InvalidValue("n", f"be a whole number from 1 to the lot's {self.lot}", self.n)
+
+
+def is_proportion(value: Any, number: float) -> bool:
+    """Tell a proportion of the lot from a count: a bare 1 is one defective, ``1%`` a proportion."""
+    return 0 < number < 1 or (isinstance(value, str) and value.strip().lower().endswith(("%", "ppm")))
+
+
+class Defectives(Parameter):
+    """D, the defectives in the lot, also asked for as a proportion of it."""
+
+    __slots__ = ()
+
+    def read(self, value: Any, design: LotSample | None = None) -> float:
+        """Return D; a proportion must give a whole number of items of the lot.
+
+        Raises
+        ------
+        InvalidValue
+            Naming both neighbours where the proportion lies between two whole numbers.
+        """
+        number = read_number(value, self.symbol)
+        if design is None:
+            return super().read(value)
+        lot = design.lot
+        if not is_proportion(value, number):
+            if number.is_integer() and 0 <= number <= lot:
+                return number
+            raise InvalidValue("D", f"be a whole number from 0 to {lot}, or a proportion of the lot", value)
+        count = round(number * lot)
+        if count / lot == number and count <= lot:
+            return float(count)
+        near = math.floor(typed(number) * lot)
+        hint = f"neighbours: D = {near} is {near / lot:.6g}, D = {near + 1} is {(near + 1) / lot:.6g}"
+        raise InvalidValue("rate", f"give a whole number of items in a lot of {lot}", value, hint)
+
+    def claimed(self, value: Any, relation: str, design: LotSample | None = None) -> float:
+        """Return the claim's D: ``p<=a`` becomes floor(lot a), ``p>=a`` becomes ceil(lot a)."""
+        number = read_number(value, self.symbol)
+        if design is None or relation == "=" or not is_proportion(value, number):
+            return self.read(value, design)
+        exact = typed(number) * design.lot
+        return self.read(float(math.floor(exact) if relation == "<=" else math.ceil(exact)), design)
+
+    def convert(self, values: Floats, columns: Columns) -> Floats:
+        """Return D for queried values, NaN where a value is no whole number of items of the lot."""
+        lot = columns["lot"]
+        if ((values == np.floor(values)) & (values >= 0) & (values <= lot)).all():
+            return values
+        counts = np.rint(values * lot)
+        share = (values > 0) & (values < 1)
+        matching = share & (counts / lot == values)
+        whole = (values == np.floor(values)) & (values >= 0) & (values <= lot)
+        return np.where(matching, counts, np.where(whole, values, np.nan))
+
+
+class HypergeometricLaw(Law):
+    """Defectives among n items drawn from a lot with D defectives."""
+
+    statistic, step = "x", 1
+
+    def at_most(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
+        """Return P(X <= x)."""
+        return tails.hypergeometric_at_most(x, columns["lot"], rates[0], columns["n"])
+
+    def at_least(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
+        """Return P(X >= x)."""
+        return tails.hypergeometric_at_least(x, columns["lot"], rates[0], columns["n"])
+
+    def support(self, design: LotSample) -> tuple[float, float]:
+        """Return 0 and n: what can be found over all D."""
+        return 0, design.n
+
+
+class HypergeometricKind(ThresholdKind):
+    """Single plans for a finite lot."""
+
+    law = HypergeometricLaw()
+
+    parameters = (
+        Defectives("D", "defectives in the lot", "items per lot", 0.0, math.inf, aliases=("p",)),
+    )
+    grammar = Grammar(
+        kind="hypergeometric",
+        head="hypergeometric",
+        marker="n",
+        design=LotSample,
+        fields=(
+            Field("lot", lambda text, name: read_whole(text, name, 2, MOST_ITEMS), default=REQUIRED),
+            Field("n", lambda text, name: read_whole(text, name, 1, MOST_ITEMS), default=REQUIRED),
+        ),
+        order=("lot", "n", "claim", "alpha", "split", "reject", "verdict"),
+        **threshold_fields("x", whole=True),
+    )
+
+    def read_claim(self, text: str, design: Any) -> Claim:
+        """Return the claim on D; ``D<=8`` names a count, ``p<=1%`` a proportion of the lot."""
+        symbol, _, value = split_claim(text)
+        number = read_number(value, symbol)
+        if symbol.lower() == "d" and is_proportion(value, number) and not value.strip().endswith("%"):
+            raise InvalidValue("claim", "name a whole number of defectives, or a rate as p<=1%", text)
+        return super().read_claim(text, design)
+
+
+HYPERGEOMETRIC = register(HypergeometricKind())

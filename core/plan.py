@@ -1,0 +1,143 @@
+"""What a plan is: a kind of test, its design, its rule, and the claim that it judges."""
+
+from __future__ import annotations
+
+import re
+from dataclasses import dataclass
+from typing import Any
+
+from steelyard.core.errors import InvalidValue
+from steelyard.core.numbers import write_number
+
+SIDES = {"<=": "above", ">=": "below", "=": "either"}
+RELATIONS = {side: relation for relation, side in SIDES.items()}
+SPLITS = ("half", "nearest", "rarest")
+VERDICTS = ("fail", "pass")
+_CLAIM = re.compile(r"(?P<symbol>[a-z]\w*)\s*(?P<relation><=|>=|=|≤|≥)\s*(?P<value>\S.*)", re.IGNORECASE)
+_SIGNS = {"≤": "<=", "≥": ">="}
+
+
+@dataclass(frozen=True, slots=True)
+class Claim:
+    """The null hypothesis on a parameter, e.g. ``p<=0.02``.
+
+    Parameters
+    ----------
+    symbol : str
+        The parameter, e.g. ``"p"``, ``"rate"``, ``"D"``, ``"mean"``.
+    relation : {"<=", ">=", "="}
+        How the parameter compares with `value` when the claim is true.
+    value : float
+        The claim's boundary, in the parameter's unit.
+    reference : str, optional
+        In comparisons the other sample's parameter that `value` is added to.
+
+    Examples
+    --------
+    >>> claim = Claim("p", "<=", 0.02)
+    >>> str(claim), claim.side, claim.holds(0.01), claim.holds(0.05)
+    ('p<=0.02', 'above', True, False)
+    """
+
+    symbol: str
+    relation: str
+    value: float
+    reference: str = ""
+
+    @property
+    def side(self) -> str:
+        """Where the true parameter lies when the claim is false: above, below or either."""
+        return SIDES[self.relation]
+
+    def holds(self, rate: float) -> bool:
+        """Tell whether the claim is true at this value of the parameter."""
+        if self.relation == "=":
+            return rate == self.value
+        return rate <= self.value if self.relation == "<=" else rate >= self.value
+
+    def __str__(self) -> str:
+        if not self.reference:
+            return f"{self.symbol}{self.relation}{write_number(self.value)}"
+        shift = "" if self.value == 0 else f"{'+' if self.value > 0 else '-'}{write_number(abs(self.value))}"
+        return f"{self.symbol}{self.relation}{self.reference}{shift}"
+
+
+@dataclass(frozen=True, slots=True)
+class Reject:
+    """Reject the claim when the statistic is at most `low` or at least `high`.
+
+    Either end may be None: that tail is empty.
+
+    Examples
+    --------
+    >>> Reject(None, 4).text("x"), Reject(30, 50).text("x"), Reject(0, None).signs("x")
+    ('x>=4', 'x<=30 or x>=50', 'x ≤ 0')
+    """
+
+    low: float | None
+    high: float | None
+
+    def __post_init__(self) -> None:
+        if self.low is None and self.high is None:
+            raise InvalidValue("reject", "name at least one end, such as x>=4", None)
+        if self.low is not None and self.high is not None and self.low >= self.high:
+            raise InvalidValue("reject", "leave room between its two ends", self.text("x"))
+
+    def text(self, statistic: str) -> str:
+        """Return the rule as a plan's text writes it."""
+        ends = []
+        if self.low is not None:
+            ends.append(f"{statistic}<={write_number(self.low)}")
+        if self.high is not None:
+            ends.append(f"{statistic}>={write_number(self.high)}")
+        return " or ".join(ends)
+
+    def signs(self, statistic: str) -> str:
+        """Return the rule with mathematical signs, as cells show it."""
+        return self.text(statistic).replace("<=", " ≤ ").replace(">=", " ≥ ")
+
+
+@dataclass(frozen=True, slots=True)
+class Plan:
+    """A decision rule for a sample; its text form is one readable line.
+
+    Parameters
+    ----------
+    kind : str
+        Name of a registered kind, e.g. ``"binomial"``.
+    design : object
+        The kind's own frozen record of what is inspected, e.g. ``Items(n=50)``.
+    rule : object
+        What rejects the claim; for plans that compare one statistic with limits a `Reject`.
+    claim : Claim, optional
+        The null hypothesis; missing where a rule comes from outside.
+    alpha : float, optional
+        Nominal significance level, strictly between 0 and 1.
+    split : {"half", "nearest", "rarest"}
+        How a two-sided test shares alpha between its tails.
+    verdict : {"fail", "pass"}
+        What rejecting the claim means for the lot.
+    """
+
+    kind: str
+    design: Any
+    rule: Any
+    claim: Claim | None = None
+    alpha: float | None = None
+    split: str = "half"
+    verdict: str = "fail"
+
+
+def split_claim(text: str) -> tuple[str, str, str]:
+    """Return symbol, relation and value text of a claim such as ``p<=0.02``.
+
+    Raises
+    ------
+    InvalidValue
+        When the text has no such form.
+    """
+    match = _CLAIM.fullmatch(text.strip())
+    if match is None:
+        raise InvalidValue("claim", "have the form p<=0.02, p>=0.02 or p=0.02", text)
+    relation = match["relation"]
+    return match["symbol"], _SIGNS.get(relation, relation), match["value"]

@@ -1,0 +1,140 @@
+"""Plans as one readable line of text: reading and writing.
+
+Fields may stand in any order after the kind, case and spaces are free, the decimal mark is a point.
+The canonical order is written back; writing then reading gives an equal plan.
+"""
+
+from __future__ import annotations
+
+from difflib import get_close_matches
+from typing import Any
+
+from steelyard.core.errors import InvalidValue
+from steelyard.core.kind import REQUIRED, Grammar, Kind, heads, kind_of, words_of
+from steelyard.core.numbers import read_choice, read_probability, write_number
+from steelyard.core.plan import SPLITS, VERDICTS, Plan
+
+LONGEST = 255
+
+
+def read_plan(text: str) -> Plan:
+    """Return the plan that a line of text describes.
+
+    Raises
+    ------
+    InvalidValue
+        Naming the field and what is allowed: unknown kind, unknown or doubled field, a value out of
+        range, a rule that can never or always reject.
+
+    Examples
+    --------
+    >>> plan = read_plan("Binomial | claim p<=2% | n 50 | reject x>=4")
+    >>> write_plan(plan)
+    'binomial | n 50 | claim p<=0.02 | reject x>=4'
+    """
+    opening, *segments = [part.strip() for part in str(text).split("|")]
+    candidates, words = _candidates(opening)
+    for segment in segments:
+        word, _, rest = segment.partition(" ")
+        _store(words, word, rest, candidates)
+    kind = _choose(candidates, words)
+    plan = _assemble(kind.grammar, kind, words)
+    kind.verify(plan)
+    if len(write_plan(plan)) > LONGEST:
+        raise InvalidValue("plan text", f"be at most {LONGEST} characters long", text)
+    return plan
+
+
+def write_plan(plan: Plan) -> str:
+    """Return a plan's canonical text.
+
+    Examples
+    --------
+    >>> write_plan(read_plan("binomial | n 59 | claim p>=5% | reject x<=0 | alpha 5% | verdict pass"))
+    'binomial | n 59 | claim p>=0.05 | alpha 0.05 | reject x<=0 | verdict pass'
+    """
+    grammar = kind_of(plan).grammar
+    texts = dict(grammar.write_rule(plan.rule))
+    for field in grammar.fields:
+        value = getattr(plan.design, field.attribute)
+        if value != field.default:
+            texts[field.word] = field.write(value)
+    if plan.claim is not None:
+        texts["claim"] = str(plan.claim)
+    if plan.alpha is not None:
+        texts["alpha"] = write_number(plan.alpha)
+    if plan.split != "half":
+        texts["split"] = plan.split
+    if plan.verdict != "fail":
+        texts["verdict"] = plan.verdict
+    opening = f"{grammar.head} {texts.pop(grammar.head)}" if grammar.head in texts else grammar.head
+    return " | ".join([opening, *(f"{word} {texts[word]}" for word in grammar.order if word in texts)])
+
+
+def _candidates(opening: str) -> tuple[list[Kind], dict[str, str]]:
+    """Find the kinds that the first segment may open; ``until 3 defectives`` is head and field in one."""
+    known, wanted = heads(), " ".join(opening.lower().split())
+    if wanted in known:
+        return known[wanted], {}
+    head, _, rest = wanted.partition(" ")
+    if head in known and any(head == field.word for kind in known[head] for field in kind.grammar.fields):
+        return known[head], {head: rest}
+    close = get_close_matches(wanted, known, n=1)
+    hint = f"did you mean {close[0]}?" if close else ""
+    raise InvalidValue("kind", f"be one of {', '.join(known)}", opening, hint)
+
+
+def _store(words: dict[str, str], word: str, rest: str, candidates: list[Kind]) -> None:
+    known, word = words_of(candidates), word.lower()
+    for name in known:  # a field of several words, such as "at end accept x<=3"
+        if " " in name and f"{word} {rest}".lower().startswith(name + " "):
+            word, rest = name, f"{word} {rest}"[len(name) :]
+    if word not in known:
+        close = get_close_matches(word, known, n=1)
+        hint = f"did you mean {close[0]}?" if close else ""
+        raise InvalidValue("field", f"be one of {', '.join(known)}", word, hint)
+    if word in words:
+        raise InvalidValue(word, "be written once", f"{word} {words[word]} and {word} {rest.strip()}")
+    if not rest.strip():
+        raise InvalidValue(word, "have a value", None)
+    words[word] = rest.strip()
+
+
+def _choose(candidates: list[Kind], words: dict[str, str]) -> Kind:
+    fitting = [kind for kind in candidates if kind.grammar.marker in words]
+    if len(fitting) == 1:
+        kind = fitting[0]
+    elif fitting:
+        markers = " and ".join(kind.grammar.marker for kind in fitting)
+        raise InvalidValue("plan", f"have only one of {markers}", "all of them")
+    elif len(candidates) == 1:
+        kind = candidates[0]
+    else:
+        markers = " or ".join(kind.grammar.marker for kind in candidates)
+        raise InvalidValue("plan", f"say {markers}", None)
+    for word in words:
+        if word not in (*kind.grammar.order, kind.grammar.head):
+            raise InvalidValue("field", f"be one of {', '.join(kind.grammar.order)}", word)
+    return kind
+
+
+def _assemble(grammar: Grammar, kind: Kind, words: dict[str, str]) -> Plan:
+    values: dict[str, Any] = {}
+    for field in grammar.fields:
+        if field.word in words:
+            values[field.attribute] = field.read(words[field.word], field.word)
+        elif field.default is REQUIRED:
+            raise InvalidValue(field.word, "be written in the plan", None)
+        else:
+            values[field.attribute] = field.default
+    design = grammar.design(**values)
+    rule = grammar.read_rule({word: words[word] for word in grammar.rules if word in words}, design)
+    return Plan(
+        kind=grammar.kind,
+        design=design,
+        rule=rule,
+        claim=kind.read_claim(words["claim"], design) if "claim" in words else None,
+        alpha=read_probability(words["alpha"], "alpha") if "alpha" in words else None,
+        split=read_choice(words.get("split", SPLITS[0]), "split", SPLITS),
+        verdict=read_choice(words.get("verdict", VERDICTS[0]), "verdict", VERDICTS),
+    )

@@ -1,0 +1,113 @@
+"""Every kind of plan that compares one statistic with limits."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from typing import Any
+
+import numpy as np
+
+from steelyard.core.errors import InvalidValue
+from steelyard.core.kind import Kind
+from steelyard.core.law import Law
+from steelyard.core.numbers import read_number
+from steelyard.core.parameter import Columns, Floats
+from steelyard.core.plan import Plan, Reject
+
+
+class ThresholdKind(Kind):
+    """A kind whose rule is ``x<=low or x>=high`` for one statistic x with a known law."""
+
+    law: Law
+
+    def columns(self, plans: Sequence[Plan]) -> Columns:
+        """Return the design's fields and the rule's ends; a missing end is NaN."""
+        columns = {
+            field.attribute: np.array([getattr(plan.design, field.attribute) for plan in plans])
+            for field in self.grammar.fields
+        }
+        for end in ("low", "high"):
+            columns[end] = np.array([getattr(plan.rule, end) for plan in plans], dtype=float)
+        return columns
+
+    def reject(self, columns: Columns, *rates: Floats) -> Floats:
+        """Return P(x <= low) + P(x >= high)."""
+        low, high = columns["low"], columns["high"]
+        no_low, no_high = np.isnan(low), np.isnan(high)
+        if no_low.all():
+            return self.law.at_least(high, columns, *rates)
+        if no_high.all():
+            return self.law.at_most(low, columns, *rates)
+        lower = self.law.at_most(np.where(no_low, -np.inf, low), columns, *rates)
+        upper = self.law.at_least(np.where(no_high, np.inf, high), columns, *rates)
+        return np.minimum(lower + upper, 1.0)
+
+    def accept(self, columns: Columns, *rates: Floats) -> Floats:
+        """Return P(low < x < high), from the tails on whichever side lose the least."""
+        low, high, step = columns["low"], columns["high"], self.law.step
+        no_low, no_high = np.isnan(low), np.isnan(high)
+        if no_low.all():
+            return self.law.at_most(high - step, columns, *rates)
+        if no_high.all():
+            return self.law.at_least(low + step, columns, *rates)
+        low, high = np.where(no_low, -np.inf, low), np.where(no_high, np.inf, high)
+        below, above = (self.law.at_most(x, columns, *rates) for x in (low, high - step))
+        right, beyond = (self.law.at_least(x, columns, *rates) for x in (low + step, high))
+        return np.clip(np.where(above <= right, above - below, right - beyond), 0.0, 1.0)
+
+    def verify(self, plan: Plan) -> None:
+        """Refuse rules that can never or always reject, or that reject on the claim's own side."""
+        rule, (least, most) = plan.rule, self.law.support(plan.design)
+        text = rule.text(self.law.statistic)
+        if not self._possible(rule.low, least, most) or not self._possible(rule.high, least, most):
+            reach = f"a value from {least:g} to {most:g}" if math.isfinite(most) else f"a value from {least:g}"
+            raise InvalidValue("reject", f"name {reach}", text)
+        if rule.low is not None and rule.low >= most or rule.high is not None and rule.high <= least:
+            raise InvalidValue("reject", "leave some outcome that does not reject", text)
+        if rule.low is not None and rule.high is not None and rule.high - rule.low <= self.law.step:
+            raise InvalidValue("reject", "leave some outcome that does not reject", text)
+        side = plan.claim.side if plan.claim else "either"
+        if side == "above" and rule.low is not None or side == "below" and rule.high is not None:
+            raise InvalidValue("reject", f"not lie on the side where the claim {plan.claim} is true", text)
+
+    @staticmethod
+    def _possible(end: float | None, least: float, most: float) -> bool:
+        return end is None or least <= end <= most
+
+
+def read_reject(texts: dict[str, str], statistic: str, whole: bool) -> Reject:
+    """Return the rule that ``x<=30 or x>=50`` describes.
+
+    Raises
+    ------
+    InvalidValue
+        When the field is missing, has another form, or names a broken count.
+    """
+    example = f"{statistic}>=4" if whole else f"{statistic}>=4.5"
+    text = texts.get("reject")
+    if text is None:
+        raise InvalidValue("reject", f"be written in the plan, e.g. reject {example}", None)
+    ends: dict[str, float] = {}
+    for part in text.lower().replace("≤", "<=").replace("≥", ">=").split(" or "):
+        compact = part.replace(" ", "")
+        relation = "<=" if "<=" in compact else ">="
+        subject, _, number = compact.partition(relation)
+        end = "low" if relation == "<=" else "high"
+        if subject != statistic or not number or end in ends:
+            both = f"{statistic}<=1 or {statistic}>=9"
+            raise InvalidValue("reject", f"have the form {example} or {both}", text)
+        value = read_number(number, "reject")
+        if whole and not value.is_integer():
+            raise InvalidValue("reject", "name whole numbers", text)
+        ends[end] = value
+    return Reject(ends.get("low"), ends.get("high"))
+
+
+def threshold_fields(statistic: str, whole: bool) -> dict[str, Any]:
+    """Return the grammar's part that is alike in every threshold kind."""
+    return {
+        "rules": ("reject",),
+        "read_rule": lambda texts, design: read_reject(texts, statistic, whole),
+        "write_rule": lambda rule: {"reject": rule.text(statistic)},
+    }
