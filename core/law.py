@@ -2,8 +2,11 @@
 
 from __future__ import annotations
 
+import math
 from abc import ABC, abstractmethod
-from typing import Any
+from collections.abc import Iterable, Mapping
+from fractions import Fraction
+from typing import Any, Protocol
 
 from steelyard.core.parameter import Columns, Floats
 
@@ -33,3 +36,59 @@ class Law(ABC):
     @abstractmethod
     def support(self, design: Any) -> tuple[float, float]:
         """Return the least and the greatest value of the statistic."""
+
+
+class ExactLaw(Protocol):
+    """One law at one decimal rate, for comparisons that floats cannot decide."""
+
+    def compare(self, tails: Iterable[tuple[int, str, int]], bound: Fraction) -> int:
+        """Return the sign of a weighted sum of tails minus a bound.
+
+        Parameters
+        ----------
+        tails : iterable of (weight, end, x)
+            End ``"low"`` stands for P(X <= x), ``"high"`` for P(X >= x).
+        bound : Fraction
+            What the sum is compared with, e.g. alpha.
+        """
+
+    def compare_counts(self, x: int, y: int) -> int:
+        """Return the sign of P(X = x) - P(X = y)."""
+
+
+class CountLaw(Law):
+    """The law of a count 0, 1, 2 …
+
+    Attributes
+    ----------
+    amount : str
+        The column that says how much is inspected, e.g. ``"n"``.
+    """
+
+    step = 1
+    amount: str
+
+    @abstractmethod
+    def exactly(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
+        """Return P(X = x)."""
+
+    @abstractmethod
+    def exact(self, row: Mapping[str, Any], rate: Fraction) -> ExactLaw:
+        """Return the law of one design, its fields given by name, at a decimal rate."""
+
+    def most(self, columns: Columns) -> Any:
+        """Return the greatest possible count."""
+        return columns[self.amount]
+
+    def support(self, design: Any) -> tuple[float, float]:
+        """Return 0 and the greatest possible count."""
+        return 0, self.most({self.amount: getattr(design, self.amount)})
+
+
+class UnboundedCountLaw(CountLaw):
+    """The law of a count that has no greatest value."""
+
+    def most(self, columns: Columns) -> Any:
+        """Return infinity."""
+        del columns
+        return math.inf

@@ -1,0 +1,149 @@
+"""How a test of a count weighs its evidence: the p-value as a sum of tails, compared with alpha exactly.
+
+A p-value is a weighted sum of tails of the law at the claim's boundary. With F = P(X <= x),
+S = P(X >= x) and f = P(X = x), a low count has the evidence
+
+- one-sided: F;
+- split ``half``: 2 F;
+- split ``nearest``: 2 F - f, which is P(X <= x) + P(X <= x - 1);
+- split ``rarest``: F + P(X >= y) for the first y beyond x with f(y) <= f(x);
+
+a high count the same, mirrored. The p-value of a two-sided test is the smaller of the two, at most 1.
+
+Ties: a count whose p-value equals alpha is rejected, counts of equal probability go together. Floats
+decide unless they lie within `NEAR` of each other; then the law decides in exact arithmetic on the
+decimals as typed.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from steelyard.core.law import CountLaw, ExactLaw
+from steelyard.core.numbers import typed
+from steelyard.core.parameter import Columns, Floats
+
+Tail = tuple[Any, str, Floats]
+Truth = NDArray[np.bool_]
+
+NEAR = 1e-8  # relative; wider than a tail's error, because a rate near 1 leaves few digits of 1 - rate
+ONE_SIDED = "one-sided"
+
+
+def tails_of(law: CountLaw, columns: Columns, rate: Floats, x: Floats, end: str, split: str) -> list[Tail]:
+    """Return the tails whose weighted sum is the evidence of the counts `x` at one end.
+
+    Parameters
+    ----------
+    law : CountLaw
+    columns : dict of ndarray
+        The designs' fields; they broadcast with `rate` and `x`.
+    rate : ndarray of float
+        The claim's boundary.
+    x : ndarray of float
+        Whole counts.
+    end : {"low", "high"}
+    split : {"one-sided", "half", "nearest", "rarest"}
+
+    Returns
+    -------
+    list of (weight, end, counts)
+    """
+    outwards, other = (1.0, "low") if end == "high" else (-1.0, "high")
+    if split == "half":
+        return [(2, end, x)]
+    if split == "nearest":
+        return [(1, end, x), (1, end, x + outwards)]
+    if split == "rarest":
+        chance = law.exactly(x, columns, rate)
+        # An impossible count has no part of the other tail.
+        return [(1, end, x), (np.sign(chance), other, _opposite(law, columns, rate, x, -outwards))]
+    return [(1, end, x)]
+
+
+def weigh(law: CountLaw, columns: Columns, rate: Floats, tails: list[Tail]) -> Floats:
+    """Return the weighted sum of tails, at most 1."""
+    sides = {"low": law.at_most, "high": law.at_least}
+    total: Any = sum(weight * sides[end](x, columns, rate) for weight, end, x in tails)
+    return np.minimum(total, 1.0)
+
+
+def within(law: CountLaw, columns: Columns, rate: Floats, tails: list[Tail], alpha: float) -> Truth:
+    """Tell where a weighted sum of tails is at most alpha; a tie, decided exactly, counts as within."""
+    total = weigh(law, columns, rate, tails)
+    ends = [end for _, end, _ in tails]
+
+    def settle(exact: ExactLaw, *numbers: Any) -> bool:
+        weights, counts = numbers[: len(ends)], numbers[len(ends) :]
+        return (
+            exact.compare(list(zip(map(int, weights), ends, map(int, counts), strict=True)), typed(alpha))
+            <= 0
+        )
+
+    numbers = [weight for weight, _, _ in tails] + [x for _, _, x in tails]
+    return _settle(law, columns, rate, total <= alpha, np.abs(total - alpha) <= NEAR * alpha, settle, numbers)
+
+
+def first_whole(predicate: Callable[[Floats], Truth], start: Floats, step: float = 1.0) -> Floats:
+    """Return the first of ``start, start + step, start + 2 step …`` where a monotone predicate is true.
+
+    Parameters
+    ----------
+    predicate : callable
+        From whole numbers to booleans of the same shape; false, then true, and true somewhere.
+    start : ndarray of float
+        Where to begin; the answer's shape is that of ``predicate(start)``.
+    step : {1.0, -1.0}
+        The direction.
+    """
+    ahead = np.array(np.broadcast_to(start, predicate(start).shape), dtype=float)
+    behind, stride = ahead - step, step
+    while not (found := predicate(ahead)).all():
+        behind, stride = np.where(found, behind, ahead), 2 * stride
+        ahead = np.where(found, ahead, ahead + stride)
+    while (np.abs(ahead - behind) > 1).any():
+        middle = np.trunc((ahead + behind) / 2)
+        true = predicate(middle)
+        ahead, behind = np.where(true, middle, ahead), np.where(true, behind, middle)
+    return ahead
+
+
+def _opposite(law: CountLaw, columns: Columns, rate: Floats, x: Floats, step: float) -> Floats:
+    """Return the first count beyond `x`, across the mode, that is not more probable than `x`."""
+    chance = law.exactly(x, columns, rate)
+
+    def settle(exact: ExactLaw, y: Any, x: Any) -> bool:
+        return exact.compare_counts(int(y), int(x)) <= 0
+
+    def rarer(y: Floats) -> Truth:
+        other = law.exactly(y, columns, rate)
+        close = (np.abs(other - chance) <= NEAR * chance) & (chance > 0)
+        return _settle(law, columns, rate, other <= chance, close, settle, [y, x])
+
+    return first_whole(rarer, x + step, step)
+
+
+def _settle(
+    law: CountLaw,
+    columns: Columns,
+    rate: Floats,
+    answer: Truth,
+    close: Truth,
+    question: Callable[..., bool],
+    numbers: list[Any],
+) -> Truth:
+    """Replace the answers that floats cannot give by those of the exact law."""
+    if not close.any():
+        return answer
+    answer = np.array(answer)
+    fields = {name: np.broadcast_to(column, answer.shape) for name, column in columns.items()}
+    spread = [np.broadcast_to(number, answer.shape) for number in (rate, *numbers)]
+    for place in map(tuple, np.argwhere(close)):
+        row: Mapping[str, Any] = {name: field[place] for name, field in fields.items()}
+        at, *values = (part[place] for part in spread)
+        answer[place] = question(law.exact(row, typed(at)), *values)
+    return answer
