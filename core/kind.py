@@ -15,10 +15,13 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core.errors import InvalidValue
+from steelyard.core.errors import InvalidValue, NoAnswer
 from steelyard.core.numbers import write_number
 from steelyard.core.parameter import Columns, Floats, Parameter
-from steelyard.core.plan import Claim, Plan, split_claim
+from steelyard.core.plan import Claim, Plan, Reject, split_claim
+
+
+REQUIRED = object()
 
 
 @dataclass(frozen=True, slots=True)
@@ -47,8 +50,32 @@ class Field:
         """Name of the value in the design."""
         return self.word.replace("-", "_")
 
+    @property
+    def required(self) -> bool:
+        """Whether a plan must have the field."""
+        return self.default is REQUIRED
 
-REQUIRED = object()
+
+@dataclass(frozen=True, slots=True)
+class Wording:
+    """How people speak of a kind's plans.
+
+    Parameters
+    ----------
+    title : str
+        What lists call the kind, e.g. ``"defectives among items"``.
+    sample : str
+        The instruction at the bench; ``{n}`` and other fields of the design are filled in.
+    found : str
+        What the statistic counts or measures, after a value, e.g. ``"defectives"``.
+    assumptions : tuple of str
+        What must hold for the probabilities to be true; each can be ticked.
+    """
+
+    title: str
+    sample: str
+    found: str
+    assumptions: tuple[str, ...]
 
 
 @dataclass(frozen=True, slots=True)
@@ -73,6 +100,12 @@ class Grammar:
         The fields that together make the rule, e.g. ``("reject",)``.
     read_rule, write_rule : callable
         From those fields' texts (dict) and the design to the rule, and back.
+    wording : Wording
+        How people speak of these plans.
+    extent : str
+        The field that says how much is inspected.
+    extra : str
+        The field, if any, that must be known beside it: the lot, or sigma.
     """
 
     kind: str
@@ -84,7 +117,9 @@ class Grammar:
     rules: tuple[str, ...]
     read_rule: Callable[[dict[str, str], Any], Any]
     write_rule: Callable[[Any], dict[str, str]]
-    splits: bool = True
+    wording: Wording
+    extent: str = "n"
+    extra: str = ""
 
 
 class Kind(ABC):
@@ -105,6 +140,15 @@ class Kind(ABC):
     def accept(self, columns: Columns, *rates: Floats) -> Floats:
         """Return the probability of not rejecting, accurate where it is small."""
 
+    def passing(self, columns: Columns, *rates: Floats) -> Floats:
+        """Return the probability that the lot passes: the verdict decides which of the two it is."""
+        demonstrates = columns["pass"]
+        if not demonstrates.any():
+            return self.accept(columns, *rates)
+        if demonstrates.all():
+            return self.reject(columns, *rates)
+        return np.where(demonstrates, self.reject(columns, *rates), self.accept(columns, *rates))
+
     def read_claim(self, text: str, design: Any) -> Claim:
         """Return the claim that a text such as ``p<=0.02`` makes on this kind's parameter.
 
@@ -118,6 +162,11 @@ class Kind(ABC):
         if symbol.lower() not in (parameter.symbol.lower(), *parameter.aliases):
             raise InvalidValue("claim", f"be about {parameter.symbol} ({parameter.name})", text)
         return Claim(parameter.symbol, relation, parameter.claimed(value, relation, design))
+
+    def given_rule(self, rule: Reject) -> Any:
+        """Return a rule of this kind from critical values given from outside."""
+        message = f"a rule for a plan of kind {self.grammar.kind} is no pair of critical values: type its plan text"
+        raise NoAnswer(message)
 
     def verify(self, plan: Plan) -> None:
         """Raise when design, claim and rule do not go together."""

@@ -34,6 +34,8 @@ class Parameter:
         Whether `lower` itself is no possible value (a standard deviation of 0).
     aliases : tuple of str
         Other symbols that a claim may be written with, in lower case.
+    optional : bool
+        Whether a question may leave it out (a sigma that the plan already knows).
     """
 
     symbol: str
@@ -43,6 +45,7 @@ class Parameter:
     upper: float
     lower_open: bool = False
     aliases: tuple[str, ...] = ()
+    optional: bool = False
 
     def read(self, value: Any, design: Any = None) -> float:
         """Return one value of the parameter from a number or text.
@@ -79,6 +82,12 @@ class Parameter:
         del columns
         return values if self.allowed(values).all() else np.where(self.allowed(values), values, np.nan)
 
+    def show(self, value: float, bare: bool = False) -> str:
+        """Return a value as sentences show it, with its name unless `bare`."""
+        if self.upper == 1.0:
+            return show_rate(value)
+        return f"{value:.6g}" if bare else f"{value:.6g} {self.name}"
+
     def rule(self) -> str:
         """Return what a value must do, for messages."""
         if math.isfinite(self.lower) and math.isfinite(self.upper):
@@ -86,3 +95,14 @@ class Parameter:
         if math.isfinite(self.lower):
             return f"be greater than {self.lower:g}" if self.lower_open else f"be at least {self.lower:g}"
         return "be a finite number"
+
+
+def show_rate(value: float) -> str:
+    """Return a proportion as people read it: percent, or ppm where it is small.
+
+    Examples
+    --------
+    >>> show_rate(0.02), show_rate(0.00005), show_rate(0.017762)
+    ('2 %', '50 ppm', '1.776 %')
+    """
+    return f"{value * 1e6:.4g} ppm" if 0 < value < 0.0005 else f"{value * 100:.4g} %"

@@ -129,12 +129,14 @@ def _answer(
     local = np.searchsorted(group.places, index)
     columns = {name: values[local] for name, values in group.columns.items()}
     own = group.kind.parameters
-    converted = [own[min(i, len(own) - 1)].convert(rate, columns) for i, rate in enumerate(rates)]
+    if not sum(not parameter.optional for parameter in own) <= len(rates) <= len(own):
+        return np.full(np.broadcast_shapes(index.shape, *(rate.shape for rate in rates)), np.nan)
+    converted = [own[i].convert(rate, columns) for i, rate in enumerate(rates)]
     refused = [np.isnan(rate) for rate in converted]
     if not any(mask.any() for mask in refused):
         return question(group.kind)(columns, *converted)
     safe = [
-        np.where(mask, _harmless(own[min(i, len(own) - 1)]), rate)
+        np.where(mask, _harmless(own[i]), rate)
         for i, (mask, rate) in enumerate(zip(refused, converted, strict=True))
     ]
     bad = refused[0]

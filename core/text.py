@@ -10,7 +10,7 @@ from difflib import get_close_matches
 from typing import Any
 
 from steelyard.core.errors import InvalidValue
-from steelyard.core.kind import REQUIRED, Grammar, Kind, heads, kind_of, words_of
+from steelyard.core.kind import Grammar, Kind, heads, kind_of, words_of
 from steelyard.core.numbers import read_choice, read_probability, write_number
 from steelyard.core.plan import SPLITS, VERDICTS, Plan
 
@@ -123,7 +123,7 @@ def _assemble(grammar: Grammar, kind: Kind, words: dict[str, str]) -> Plan:
     for field in grammar.fields:
         if field.word in words:
             values[field.attribute] = field.read(words[field.word], field.word)
-        elif field.default is REQUIRED:
+        elif field.required:
             raise InvalidValue(field.word, "be written in the plan", None)
         else:
             values[field.attribute] = field.default

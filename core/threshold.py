@@ -29,6 +29,7 @@ class ThresholdKind(Kind):
         }
         for end in ("low", "high"):
             columns[end] = np.array([getattr(plan.rule, end) for plan in plans], dtype=float)
+        columns["pass"] = np.array([plan.verdict == "pass" for plan in plans])
         return columns
 
     def reject(self, columns: Columns, *rates: Floats) -> Floats:
@@ -55,6 +56,13 @@ class ThresholdKind(Kind):
         below, above = (self.law.at_most(x, columns, *rates) for x in (low, high - step))
         right, beyond = (self.law.at_least(x, columns, *rates) for x in (low + step, high))
         return np.clip(np.where(above <= right, above - below, right - beyond), 0.0, 1.0)
+
+    def given_rule(self, rule: Reject) -> Reject:
+        """Return the rule itself; counts must be whole numbers."""
+        for end in (rule.low, rule.high):
+            if end is not None and self.law.step and not float(end).is_integer():
+                raise InvalidValue("reject", "name whole numbers", end)
+        return rule
 
     def verify(self, plan: Plan) -> None:
         """Refuse rules that can never or always reject, or that reject on the claim's own side."""

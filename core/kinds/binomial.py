@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
+from fractions import Fraction
 from typing import Any
 
 from steelyard.core import tails
 from steelyard.core.errors import InvalidValue
-from steelyard.core.kind import REQUIRED, Field, Grammar, register
-from steelyard.core.law import Law
+from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
+from steelyard.core.law import CountLaw, ExactLaw
 from steelyard.core.numbers import read_whole
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.threshold import ThresholdKind, threshold_fields
@@ -27,10 +29,10 @@ class Items:
             raise InvalidValue("n", f"be a whole number from 1 to {MOST_ITEMS}", self.n)
 
 
-class BinomialLaw(Law):
+class BinomialLaw(CountLaw):
     """Defectives among n independent items with defect rate p."""
 
-    statistic, step = "x", 1
+    statistic, amount = "x", "n"
 
     def at_most(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
         """Return P(X <= x)."""
@@ -40,9 +42,15 @@ class BinomialLaw(Law):
         """Return P(X >= x)."""
         return tails.binomial_at_least(x, columns["n"], rates[0])
 
-    def support(self, design: Items) -> tuple[float, float]:
-        """Return 0 and n."""
-        return 0, design.n
+    def exactly(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
+        """Return P(X = x)."""
+        return tails.binomial_pmf(x, columns["n"], rates[0])
+
+    def exact(self, row: Mapping[str, Any], rate: Fraction) -> ExactLaw:
+        """Return the binomial law in rationals."""
+        from steelyard.core import exact
+
+        return exact.BinomialExact(int(row["n"]), rate)
 
 
 class BinomialKind(ThresholdKind):
@@ -57,6 +65,17 @@ class BinomialKind(ThresholdKind):
         design=Items,
         fields=(Field("n", lambda text, name: read_whole(text, name, 1, MOST_ITEMS), default=REQUIRED),),
         order=("n", "claim", "alpha", "split", "reject", "verdict"),
+        wording=Wording(
+            title="defectives among items from a process",
+            sample="Inspect {n} items drawn at random and count the defectives.",
+            found="defectives",
+            assumptions=(
+                "Every item is drawn at random and has the same chance of being chosen.",
+                "Items are defective independently of each other, at one rate.",
+                "The lot is at least ten times the sample, or the claim is about the process.",
+                "Inspection finds every defective and condemns no good item.",
+            ),
+        ),
         **threshold_fields("x", whole=True),
     )
 

@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass
+from fractions import Fraction
 from typing import Any
 
 import numpy as np
 
 from steelyard.core import tails
 from steelyard.core.errors import InvalidValue
-from steelyard.core.kind import REQUIRED, Field, Grammar, register
-from steelyard.core.law import Law
+from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
+from steelyard.core.law import CountLaw, ExactLaw
 from steelyard.core.numbers import read_number, read_whole, typed
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.plan import Claim, split_claim
@@ -87,10 +89,10 @@ class Defectives(Parameter):
         return np.where(matching, counts, np.where(whole, values, np.nan))
 
 
-class HypergeometricLaw(Law):
+class HypergeometricLaw(CountLaw):
     """Defectives among n items drawn from a lot with D defectives."""
 
-    statistic, step = "x", 1
+    statistic, amount = "x", "n"
 
     def at_most(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
         """Return P(X <= x)."""
@@ -100,9 +102,15 @@ class HypergeometricLaw(Law):
         """Return P(X >= x)."""
         return tails.hypergeometric_at_least(x, columns["lot"], rates[0], columns["n"])
 
-    def support(self, design: LotSample) -> tuple[float, float]:
-        """Return 0 and n: what can be found over all D."""
-        return 0, design.n
+    def exactly(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
+        """Return P(X = x)."""
+        return tails.hypergeometric_pmf(x, columns["lot"], rates[0], columns["n"])
+
+    def exact(self, row: Mapping[str, Any], rate: Fraction) -> ExactLaw:
+        """Return the hypergeometric law in rationals."""
+        from steelyard.core import exact
+
+        return exact.HypergeometricExact(int(row["lot"]), int(rate), int(row["n"]))
 
 
 class HypergeometricKind(ThresholdKind):
@@ -123,6 +131,17 @@ class HypergeometricKind(ThresholdKind):
             Field("n", lambda text, name: read_whole(text, name, 1, MOST_ITEMS), default=REQUIRED),
         ),
         order=("lot", "n", "claim", "alpha", "split", "reject", "verdict"),
+        wording=Wording(
+            title="defectives in a finite lot",
+            sample="Draw {n} items at random from the lot of {lot}, without putting any back, and count the defectives.",
+            found="defectives",
+            assumptions=(
+                "Every item of the lot has the same chance of being drawn.",
+                "The lot has the stated number of items.",
+                "Inspection finds every defective and condemns no good item.",
+            ),
+        ),
+        extra="lot",
         **threshold_fields("x", whole=True),
     )
 

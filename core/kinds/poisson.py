@@ -3,14 +3,16 @@
 from __future__ import annotations
 
 import math
+from collections.abc import Mapping
 from dataclasses import dataclass
+from fractions import Fraction
 from typing import Any
 
 from steelyard.core import tails
 from steelyard.core.errors import InvalidValue
-from steelyard.core.kind import REQUIRED, Field, Grammar, register
-from steelyard.core.law import Law
-from steelyard.core.numbers import read_number
+from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
+from steelyard.core.law import ExactLaw, UnboundedCountLaw
+from steelyard.core.numbers import read_number, typed
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.threshold import ThresholdKind, threshold_fields
 
@@ -28,10 +30,10 @@ class Extent:
             raise InvalidValue("units", f"be greater than 0 and at most {MOST_UNITS:.0f}", self.units)
 
 
-class PoissonLaw(Law):
+class PoissonLaw(UnboundedCountLaw):
     """Defects found in `units` at a mean of `rate` defects per unit."""
 
-    statistic, step = "x", 1
+    statistic, amount = "x", "units"
 
     def at_most(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
         """Return P(X <= x)."""
@@ -41,9 +43,15 @@ class PoissonLaw(Law):
         """Return P(X >= x)."""
         return tails.poisson_at_least(x, columns["units"] * rates[0])
 
-    def support(self, design: Extent) -> tuple[float, float]:
-        """Return 0 and infinity."""
-        return 0, math.inf
+    def exactly(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
+        """Return P(X = x)."""
+        return tails.poisson_pmf(x, columns["units"] * rates[0])
+
+    def exact(self, row: Mapping[str, Any], rate: Fraction) -> ExactLaw:
+        """Return the Poisson law in enclosures."""
+        from steelyard.core import exact
+
+        return exact.PoissonExact(typed(row["units"]) * rate)
 
 
 class PoissonKind(ThresholdKind):
@@ -58,6 +66,17 @@ class PoissonKind(ThresholdKind):
         design=Extent,
         fields=(Field("units", read_number, default=REQUIRED),),
         order=("units", "claim", "alpha", "split", "reject", "verdict"),
+        wording=Wording(
+            title="defects per unit",
+            sample="Inspect {units} units chosen at random and count every defect.",
+            found="defects",
+            assumptions=(
+                "The units are chosen at random.",
+                "Defects occur independently of each other, at one rate per unit.",
+                "Inspection finds every defect and counts none that is not there.",
+            ),
+        ),
+        extent="units",
         **threshold_fields("x", whole=True),
     )
 

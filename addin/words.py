@@ -1,0 +1,90 @@
+"""The shared vocabulary of arguments: what the wizard says of each, and how its cell is read.
+
+The only place where a cell's content becomes a value.
+"""
+
+from __future__ import annotations
+
+from typing import Annotated, Any
+
+from steelyard.addin.catalogue import Word
+from steelyard.addin.plans import plan_of
+from steelyard.core.errors import InvalidValue
+from steelyard.core.numbers import read_choice, read_number, read_probability, read_whole
+from steelyard.core.plan import SIDES, SPLITS, VERDICTS, Plan
+
+ENDS = ("lower", "upper")
+ORDERS = ("first", "lasting")
+
+
+def as_typed(value: Any, name: str) -> Any:
+    """Hand a number or text on as it was typed; a logical value is neither."""
+    if isinstance(value, bool):
+        raise InvalidValue(name, "be a number or text", str(value).upper())
+    return value
+
+
+def text(value: Any, name: str) -> str:
+    """Return a text cell."""
+    if not isinstance(value, str):
+        raise InvalidValue(name, "be text", value)
+    return value.strip()
+
+
+def number(value: Any, name: str) -> float:
+    """Return a number; TRUE and FALSE are none."""
+    return read_number(as_typed(value, name), name)
+
+
+def one_of(allowed: tuple[str, ...]) -> Any:
+    """Return a reader of one of several words."""
+    return lambda value, name: read_choice(text(value, name), name, allowed)
+
+
+def plan_texts(value: Any, name: str) -> tuple[Plan, ...]:
+    """Return the plans of a whole range, blank cells left out."""
+    rows = value if isinstance(value, tuple) else ((value,),)
+    plans = tuple(plan_of(cell, name) for row in rows for cell in row if cell not in (None, ""))
+    if not plans:
+        raise InvalidValue(name, "hold at least one plan", None)
+    return plans
+
+
+Plans = Annotated[Plan, Word("Plan text, such as binomial | n 50 | claim p<=0.02 | reject x>=4, or a range.", plan_of)]
+PlanRange = Annotated[tuple[Plan, ...], Word("A range of plan texts.", plan_texts, whole=True)]
+Rates = Annotated[
+    Any,
+    Word("The true value: a defect rate (2% or 0.02), defects per unit, or defectives in the lot; or a range.", as_typed),
+]
+Second = Annotated[Any, Word("Second parameter, where the kind has one: the other sample's rate, or sigma.", as_typed)]
+Count = Annotated[int, Word("Items to inspect: a whole number.", lambda v, name: read_whole(as_typed(v, name), name, 1))]
+Units = Annotated[float, Word("Units to inspect: any number above 0, such as metres or hours.", number)]
+Lot = Annotated[int, Word("Items in the lot: a whole number.", lambda v, name: read_whole(as_typed(v, name), name, 2))]
+ClaimText = Annotated[Any, Word("What is claimed: a rate such as 2%, or p<=2%, p>=5%, p=50%.", as_typed)]
+Level = Annotated[
+    float, Word("Nominal significance level alpha, between 0 and 1.", lambda v, n: read_probability(as_typed(v, n), n))
+]
+Target = Annotated[
+    float, Word("Wanted power at the rate to catch, between 0 and 1.", lambda v, n: read_probability(as_typed(v, n), n))
+]
+Confidence = Annotated[
+    float, Word("Confidence level, between 0 and 1.", lambda v, n: read_probability(as_typed(v, n), n))
+]
+Side = Annotated[
+    str, Word("Where the true rate lies when the claim is false: above, below or either.", one_of(tuple(SIDES.values())))
+]
+Split = Annotated[str, Word("How a two-sided test shares alpha: half, nearest or rarest.", one_of(SPLITS))]
+Verdict = Annotated[str, Word("What rejecting the claim means for the lot: fail or pass.", one_of(VERDICTS))]
+End = Annotated[str, Word("Which end: lower or upper.", one_of(ENDS))]
+Order = Annotated[
+    str, Word("first: least size that reaches the power; lasting: size from which it never falls short.", one_of(ORDERS))
+]
+Observed = Annotated[Any, Word("What the sample showed: the count found, or a range.", as_typed)]
+KindName = Annotated[str, Word("Kind of plan: binomial, poisson, hypergeometric, …", text)]
+Number = Annotated[float, Word("A number.", number)]
+CellName = Annotated[str, Word("Address of the cell with the rate, as text such as B2.", text)]
+Size = Annotated[float, Word("How much is inspected: items, or units for defects per unit.", number)]
+Extra = Annotated[Any, Word("The lot's size, or the known sigma, where the kind needs one.", as_typed)]
+RejectFrom = Annotated[float, Word("Reject the claim from this count (or measure) upwards.", number)]
+RejectTo = Annotated[float, Word("Reject the claim up to this count (or measure).", number)]
+ToCatch = Annotated[Any, Word('The rate that must be caught, such as 5%; for either side also "1% and 5%".', as_typed)]

@@ -1,0 +1,167 @@
+"""Plans from what people ask for: a claim and alpha, a rule from outside, or two risks."""
+
+from __future__ import annotations
+
+from typing import Any
+
+from steelyard.core.claims import claim_from
+from steelyard.core.errors import InvalidValue
+from steelyard.core.kind import KINDS, Kind
+from steelyard.core.numbers import read_choice
+from steelyard.core.plan import Plan, Reject
+from steelyard.core.regions import make_plan
+from steelyard.core.smallest import smallest_plan
+
+
+def kind_named(name: str) -> Kind:
+    """Return a kind by its name.
+
+    Raises
+    ------
+    InvalidValue
+        With the list of kinds, and a suggestion where one comes close.
+    """
+    return KINDS[read_choice(name, "kind", tuple(KINDS))]
+
+
+def design_from(kind: Kind, values: dict[str, Any]) -> Any:
+    """Return a kind's design from named values, as cells give them.
+
+    Raises
+    ------
+    InvalidValue
+        When a value is missing, not needed, or refused.
+    """
+    fields = {field.attribute: field for field in kind.grammar.fields}
+    for name, value in values.items():
+        if name not in fields and value is not None:
+            raise InvalidValue(name, f"be left out for a plan of kind {kind.grammar.kind}", value)
+    read = {}
+    for name, field in fields.items():
+        value = values.get(name)
+        if value is not None:
+            read[name] = field.read(value, field.word)
+        elif field.required:
+            raise InvalidValue(field.word, f"be given for a plan of kind {kind.grammar.kind}", None)
+        else:
+            read[name] = field.default
+    return kind.grammar.design(**read)
+
+
+def extent_values(kind: Kind, extent: Any, extra: Any) -> dict[str, Any]:
+    """Return the design's values from a sample size and the one other number that a kind may need."""
+    grammar = kind.grammar
+    values = {grammar.extent: extent}
+    if grammar.extra:
+        values[grammar.extra] = extra
+    elif extra is not None:
+        raise InvalidValue("lot or sigma", f"be left out for a plan of kind {grammar.kind}", extra)
+    return values
+
+
+def plan_from_claim(
+    kind_name: str,
+    values: dict[str, Any],
+    claim: Any,
+    alpha: float,
+    side: str | None = None,
+    split: str = "half",
+    verdict: str = "fail",
+) -> Plan:
+    """Return the plan of a given size whose rule follows from its claim and alpha.
+
+    Parameters
+    ----------
+    kind_name : str
+    values : dict
+        The design's numbers by name, e.g. ``{"n": 50}``.
+    claim : float, int or str
+        A rate as typed, or a relation such as ``"p<=2%"``.
+    alpha : float
+        Nominal significance level.
+    side : {"above", "below", "either"}, optional
+        Taken from the claim's relation where it has one, ``"above"`` otherwise.
+    split, verdict : str
+        See `Plan`.
+
+    Examples
+    --------
+    >>> from steelyard.core.text import write_plan
+    >>> write_plan(plan_from_claim("binomial", {"n": 50}, "2%", 0.05))
+    'binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4'
+    """
+    kind = kind_named(kind_name)
+    design = design_from(kind, values)
+    return make_plan(kind.grammar.kind, design, claim_from(kind, claim, side, design), alpha, split, verdict)
+
+
+def plan_from_rule(
+    kind_name: str,
+    extent: Any,
+    reject_from: float | None,
+    reject_to: float | None,
+    claim: Any = None,
+    extra: Any = None,
+    alpha: float | None = None,
+    verdict: str = "fail",
+) -> Plan:
+    """Return a plan whose rule comes from outside; it is judged, never recomputed.
+
+    Examples
+    --------
+    >>> from steelyard.core.text import write_plan
+    >>> write_plan(plan_from_rule("binomial", 125, 4, None))
+    'binomial | n 125 | reject x>=4'
+    """
+    kind = kind_named(kind_name)
+    design = design_from(kind, extent_values(kind, extent, extra))
+    side = "either" if None not in (reject_from, reject_to) else "above" if reject_to is None else "below"
+    plan = Plan(
+        kind=kind.grammar.kind,
+        design=design,
+        rule=kind.given_rule(Reject(reject_to, reject_from)),
+        claim=None if claim is None else claim_from(kind, claim, _implied(claim, side), design),
+        alpha=alpha,
+        verdict=verdict,
+    )
+    kind.verify(plan)
+    return plan
+
+
+def _implied(claim: Any, side: str) -> str | None:
+    """Let a bare rate take the rule's side; a relation speaks for itself."""
+    return None if isinstance(claim, str) and any(sign in claim for sign in "<>=≤≥") else side
+
+
+def smallest_from(
+    kind_name: str,
+    claim: Any,
+    alpha: float,
+    catch: Any,
+    power: float,
+    side: str | None = None,
+    order: str = "first",
+    extra: Any = None,
+    split: str = "half",
+    verdict: str = "fail",
+) -> Plan:
+    """Return the smallest plan that keeps alpha at the claim and reaches a power at the rate to catch.
+
+    Parameters
+    ----------
+    catch : float, int or str
+        One rate, or for ``side="either"`` also two as ``"1% and 5%"``.
+    order : {"first", "lasting"}
+        The first size that reaches the power, or the size from which on it never falls short.
+
+    Examples
+    --------
+    >>> from steelyard.core.text import write_plan
+    >>> write_plan(smallest_from("binomial", "5%", 0.05, "20%", 0.8))
+    'binomial | n 27 | claim p<=0.05 | alpha 0.05 | reject x>=4'
+    """
+    kind = kind_named(kind_name)
+    return smallest_plan(
+        kind.grammar.kind, claim, alpha, catch, power,
+        side=side, lasting=order == "lasting", extra=extra, split=split, verdict=verdict,
+    )  # fmt: skip

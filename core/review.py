@@ -1,0 +1,124 @@
+"""What a reader must be told of a plan: whether its rule is the one that its alpha gives, and in words."""
+
+from __future__ import annotations
+
+import dataclasses
+
+from steelyard.core.errors import SteelyardError
+from steelyard.core.kind import kind_of
+from steelyard.core.parameter import show_rate
+from steelyard.core.plan import Plan, Reject
+from steelyard.core.questions import region, size
+from steelyard.core.rates import rate_for
+from steelyard.core.regions import critical_region
+
+_CLAIMED = {"<=": "at most", ">=": "at least", "=": "exactly"}
+NOT_PROOF = "Not rejecting a claim does not prove it; a sample proves no lot free of defects."
+
+
+def check(plan: Plan) -> str:
+    """Return ``"ok"``, or what is unusual about the plan: its size, or a rule that alpha would not give.
+
+    Examples
+    --------
+    >>> from steelyard.core.text import read_plan
+    >>> check(read_plan("binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4"))
+    'ok'
+    >>> check(read_plan("binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=5"))
+    'size 0.3213 %; alpha 5 % would give x ≥ 4'
+    """
+    if plan.claim is None or plan.alpha is None:
+        return "ok"
+    actual, given = size(plan), _given_by_alpha(plan)
+    notes = []
+    if given is not None and given != plan.rule:
+        other = region(dataclasses.replace(plan, rule=given))
+        notes.append(f"size {show_rate(actual)}; alpha {show_rate(plan.alpha)} would give {other}")
+    elif actual > plan.alpha * (1 + 1e-12):
+        notes.append(f"size {show_rate(actual)} exceeds alpha {show_rate(plan.alpha)}")
+    if plan.claim.side == "either" and isinstance(plan.rule, Reject) and None in (plan.rule.low, plan.rule.high):
+        notes.append("the other tail is empty: no count there can reject")
+    return "; ".join(notes) or "ok"
+
+
+def _given_by_alpha(plan: Plan) -> object | None:
+    try:
+        return critical_region(kind_of(plan), plan.design, plan.claim, plan.alpha, plan.split)
+    except SteelyardError:
+        return None
+
+
+def sentences(plan: Plan) -> list[str]:
+    """Return the plan as sentences for a report, each at most 255 characters.
+
+    Examples
+    --------
+    >>> from steelyard.core.text import read_plan
+    >>> print(sentences(read_plan("binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4"))[1])
+    Claim: the defect rate is at most 2 %.
+    """
+    told = [sample_sentence(plan)]
+    if plan.claim is not None:
+        told += [claim_sentence(plan), rule_sentence(plan), *_risks(plan)]
+        told += [text for text in (_reach(plan), _note(plan)) if text]
+    else:
+        told.append(rule_sentence(plan))
+    return [*told, NOT_PROOF]
+
+
+def sample_sentence(plan: Plan) -> str:
+    """Return the instruction at the bench."""
+    fields = {name: f"{getattr(plan.design, name):g}" for name in _numbers(plan)}
+    return kind_of(plan).grammar.wording.sample.format_map(fields)
+
+
+def _numbers(plan: Plan) -> list[str]:
+    names = (field.attribute for field in kind_of(plan).grammar.fields)
+    return [name for name in names if isinstance(getattr(plan.design, name), int | float)]
+
+
+def claim_sentence(plan: Plan) -> str:
+    """Return the claim in words."""
+    parameter, claim = kind_of(plan).parameters[0], plan.claim
+    if claim is None:
+        return "The plan carries no claim."
+    return f"Claim: the {parameter.name} is {_CLAIMED[claim.relation]} {parameter.show(claim.value, bare=True)}."
+
+
+def rule_sentence(plan: Plan) -> str:
+    """Return the decision rule as the inspector reads it."""
+    found = kind_of(plan).grammar.wording.found
+    fate, other = ("fails", "passes") if plan.verdict == "fail" else ("passes", "fails")
+    rule = plan.rule
+    if isinstance(rule, Reject):
+        ends = []
+        if rule.low is not None:
+            ends.append(f"{rule.low:g} {found} or fewer" if rule.low > 0 else f"no {found}")
+        if rule.high is not None:
+            ends.append(f"{rule.high:g} {found} or more")
+        when = ", or ".join(ends)
+    else:
+        when = region(plan)
+    return f"Rule: the claim is rejected, and the lot {fate}, on {when}; otherwise the lot {other}."
+
+
+def _risks(plan: Plan) -> list[str]:
+    actual = show_rate(size(plan))
+    nominal = "" if plan.alpha is None else f" (nominal alpha {show_rate(plan.alpha)})"
+    return [f"Type I error: while the claim is true it is rejected with probability {actual} at most{nominal}."]
+
+
+def _reach(plan: Plan) -> str:
+    """Return the rates at which the power is 50, 90 and 95 %, for plans that reject at one end."""
+    parameter = kind_of(plan).parameters[0]
+    try:
+        found = [(goal, parameter.show(rate_for(plan, goal, None), bare=True)) for goal in (0.5, 0.9, 0.95)]
+    except SteelyardError:
+        return ""
+    told = ", ".join(f"{show_rate(goal)} at {rate}" for goal, rate in found)
+    return f"Power reaches {told}: the {parameter.name} that the plan detects so often."
+
+
+def _note(plan: Plan) -> str:
+    found = check(plan)
+    return "" if found == "ok" else f"Note: {found}."
