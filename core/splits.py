@@ -72,20 +72,22 @@ def weigh(law: CountLaw, columns: Columns, rate: Floats, tails: list[Tail]) -> F
     return np.minimum(total, 1.0)
 
 
-def within(law: CountLaw, columns: Columns, rate: Floats, tails: list[Tail], alpha: float) -> Truth:
+def within(law: CountLaw, columns: Columns, rate: Floats, tails: list[Tail], alpha: Any) -> Truth:
     """Tell where a weighted sum of tails is at most alpha; a tie, decided exactly, counts as within."""
-    total = weigh(law, columns, rate, tails)
-    ends = [end for _, end, _ in tails]
+    return compare(law, columns, rate, tails, alpha) <= 0
 
-    def settle(exact: ExactLaw, *numbers: Any) -> bool:
+
+def compare(law: CountLaw, columns: Columns, rate: Floats, tails: list[Tail], bound: Any) -> NDArray[Any]:
+    """Return the sign of a weighted sum of tails minus a bound (a number or an array), ties decided exactly."""
+    total, ends = weigh(law, columns, rate, tails), [end for _, end, _ in tails]
+
+    def settle(exact: ExactLaw, bound: Any, *numbers: Any) -> int:
         weights, counts = numbers[: len(ends)], numbers[len(ends) :]
-        return (
-            exact.compare(list(zip(map(int, weights), ends, map(int, counts), strict=True)), typed(alpha))
-            <= 0
-        )
+        return exact.compare(list(zip(map(int, weights), ends, map(int, counts), strict=True)), typed(bound))
 
-    numbers = [weight for weight, _, _ in tails] + [x for _, _, x in tails]
-    return _settle(law, columns, rate, total <= alpha, np.abs(total - alpha) <= NEAR * alpha, settle, numbers)
+    numbers = [bound, *(weight for weight, _, _ in tails), *(x for _, _, x in tails)]
+    close = np.abs(total - bound) <= NEAR * bound
+    return _settle(law, columns, rate, np.sign(total - bound), close, settle, numbers)
 
 
 def first_whole(predicate: Callable[[Floats], Truth], start: Floats, step: float = 1.0) -> Floats:
@@ -131,11 +133,11 @@ def _settle(
     law: CountLaw,
     columns: Columns,
     rate: Floats,
-    answer: Truth,
+    answer: NDArray[Any],
     close: Truth,
-    question: Callable[..., bool],
+    question: Callable[..., Any],
     numbers: list[Any],
-) -> Truth:
+) -> NDArray[Any]:
     """Replace the answers that floats cannot give by those of the exact law."""
     if not close.any():
         return answer
