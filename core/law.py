@@ -8,7 +8,11 @@ from collections.abc import Iterable, Mapping
 from fractions import Fraction
 from typing import Any, Protocol
 
+import numpy as np
+
 from steelyard.core.parameter import Columns, Floats
+
+_TINY = 1e-300
 
 
 class Law(ABC):
@@ -76,6 +80,24 @@ class CountLaw(Law):
     def exact(self, row: Mapping[str, Any], rate: Fraction) -> ExactLaw:
         """Return the law of one design, its fields given by name, at a decimal rate."""
 
+    @abstractmethod
+    def largest(self, columns: Columns) -> Any:
+        """Return the greatest amount that a plan may inspect."""
+
+    def share(self, columns: Columns, rate: Floats) -> Floats:
+        """Return the expected count per unit of the amount."""
+        del columns
+        return rate
+
+    def divergence(self, share: Floats, expected: Floats) -> Floats:
+        """Return how fast the chance falls of a count per unit that lies away from the expected one.
+
+        Over an amount n that chance is at most ``exp(-n divergence)``: Chernoff's bound, here for counts of
+        at most 1 per unit (W. Hoeffding, J. Amer. Statist. Assoc. 58, 1963, from memory; it holds for
+        draws without replacement too).
+        """
+        return _relative(share, expected) + _relative(1.0 - share, 1.0 - expected)
+
     def most(self, columns: Columns) -> Any:
         """Return the greatest possible count."""
         return columns[self.amount]
@@ -92,3 +114,12 @@ class UnboundedCountLaw(CountLaw):
         """Return infinity."""
         del columns
         return math.inf
+
+    def divergence(self, share: Floats, expected: Floats) -> Floats:
+        """Return Chernoff's exponent for a Poisson count."""
+        return _relative(share, expected) - share + expected
+
+
+def _relative(share: Floats, expected: Floats) -> Floats:
+    """Return ``share log(share / expected)``; 0 where there is no share, very large where none is expected."""
+    return share * np.log(np.maximum(share, _TINY) / np.maximum(expected, _TINY))

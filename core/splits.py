@@ -78,7 +78,7 @@ def within(law: CountLaw, columns: Columns, rate: Floats, tails: list[Tail], alp
 
 
 def compare(law: CountLaw, columns: Columns, rate: Floats, tails: list[Tail], bound: Any) -> NDArray[Any]:
-    """Return the sign of a weighted sum of tails minus a bound (a number or an array), ties decided exactly."""
+    """Return the sign of a weighted sum of tails minus a bound, number or array; ties are decided exactly."""
     total, ends = weigh(law, columns, rate, tails), [end for _, end, _ in tails]
 
     def settle(exact: ExactLaw, bound: Any, *numbers: Any) -> int:

@@ -52,6 +52,11 @@ class BinomialLaw(CountLaw):
 
         return exact.BinomialExact(int(row["n"]), rate)
 
+    def largest(self, columns: Columns) -> Any:
+        """Return the most items of one plan."""
+        del columns
+        return MOST_ITEMS
+
 
 class BinomialKind(ThresholdKind):
     """Single plans for the rate of defectives."""

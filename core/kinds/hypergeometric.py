@@ -112,6 +112,14 @@ class HypergeometricLaw(CountLaw):
 
         return exact.HypergeometricExact(int(row["lot"]), int(rate), int(row["n"]))
 
+    def largest(self, columns: Columns) -> Any:
+        """Return the lot."""
+        return columns["lot"]
+
+    def share(self, columns: Columns, rate: Floats) -> Floats:
+        """Return the proportion of defectives in the lot."""
+        return rate / columns["lot"]
+
 
 class HypergeometricKind(ThresholdKind):
     """Single plans for a finite lot."""

@@ -53,6 +53,11 @@ class PoissonLaw(UnboundedCountLaw):
 
         return exact.PoissonExact(typed(row["units"]) * rate)
 
+    def largest(self, columns: Columns) -> Any:
+        """Return the most units of one plan."""
+        del columns
+        return MOST_UNITS
+
 
 class PoissonKind(ThresholdKind):
     """Single plans for defects per unit."""
