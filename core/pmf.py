@@ -22,8 +22,6 @@ from scipy import special  # noqa: TID251 - rel_entr is x log(x/y) that keeps qu
 Floats = NDArray[np.float64]
 
 _TINY = 1e-300
-_SERIES_FROM = 16
-_SMALL = np.array([math.log(math.factorial(k) * math.exp(k) / k**k) for k in range(_SERIES_FROM)])
 _HALF_LOG_TWO_PI = 0.5 * math.log(2 * math.pi)
 
 
@@ -42,7 +40,7 @@ def binomial_pmf(x: ArrayLike, n: ArrayLike, p: ArrayLike) -> Floats:
     excess = (k - n * high) - n * (p - high)
     coefficient = stirling(n) - stirling(k) - stirling(n - k)
     exponent = coefficient - deviance(k, n * p, excess) - deviance(n - k, n * (1.0 - p), -excess)
-    return np.where(k == x, np.exp(exponent), 0.0)
+    return np.where(k == x, np.exp(np.minimum(exponent, 0.0)), 0.0)
 
 
 def poisson_pmf(x: ArrayLike, mean: ArrayLike) -> Floats:
@@ -56,7 +54,8 @@ def poisson_pmf(x: ArrayLike, mean: ArrayLike) -> Floats:
     """
     x, mean = floats(x, mean)
     k = np.maximum(x, 0.0)
-    return np.where(k == x, np.exp(-stirling(k) - deviance(k, mean, k - mean)), 0.0)
+    exponent = -stirling(k) - deviance(k, mean, k - mean)
+    return np.where(k == x, np.exp(np.minimum(exponent, 0.0)), 0.0)
 
 
 def hypergeometric_pmf(x: ArrayLike, lot: ArrayLike, defectives: ArrayLike, n: ArrayLike) -> Floats:
@@ -68,19 +67,17 @@ def hypergeometric_pmf(x: ArrayLike, lot: ArrayLike, defectives: ArrayLike, n: A
     >>> round(float(hypergeometric_pmf(1, 60, 1, 3)), 12)
     0.05
     """
-    x, lot, defectives, n = floats(x, lot, defectives, n)
+    x, lot, defectives, n = np.broadcast_arrays(*floats(x, lot, defectives, n))
     good, rest, size = lot - defectives, lot - n, np.maximum(lot, 1.0)
     k = np.clip(x, np.maximum(0.0, n - good), np.minimum(n, defectives))
     excess = (k * lot - n * defectives) / size
-    exponent = stirling(n) + stirling(rest) - stirling(lot) + stirling(defectives) + stirling(good)
-    for row, column, sign, count in (
-        (n, defectives, 1.0, k),
-        (n, good, -1.0, n - k),
-        (rest, defectives, -1.0, defectives - k),
-        (rest, good, 1.0, good - n + k),
-    ):
-        exponent = exponent - stirling(count) - deviance(count, row * column / size, sign * excess)
-    return np.where(k == x, np.exp(exponent), 0.0)
+    share = defectives / size
+    counts = np.array((k, n - k, defectives - k, good - n + k))
+    means = np.array((n * share, n * (good / size), rest * share, rest * (good / size)))
+    deviances = deviance(counts, means, np.array((excess, -excess, -excess, excess)))
+    margins = stirling(np.array((defectives, good, n, rest))).sum(axis=0) - stirling(lot)
+    exponent = margins - (stirling(counts) + deviances).sum(axis=0)
+    return np.where(k == x, np.exp(np.minimum(exponent, 0.0)), 0.0)
 
 
 def floats(*values: ArrayLike) -> tuple[Floats, ...]:
@@ -90,12 +87,23 @@ def floats(*values: ArrayLike) -> tuple[Floats, ...]:
 
 def stirling(count: Floats) -> Floats:
     """Return ``log(count!) - count log(count) + count``, which is 0 at zero and grows like its logarithm."""
-    large = np.maximum(count, _SERIES_FROM)
-    inverse = 1.0 / large
-    w = inverse * inverse
-    series = inverse * (1 / 12 - w * (1 / 360 - w * (1 / 1260 - w * (1 / 1680 - w / 1188))))
-    small = _SMALL[np.minimum(count, _SERIES_FROM - 1).astype(np.intp)]
-    return np.where(count < _SERIES_FROM, small, series + 0.5 * np.log(large) + _HALF_LOG_TWO_PI)
+    value = _TABLE[np.minimum(count, _TABLE.size - 1).astype(np.intp)]
+    large = count >= _TABLE.size
+    return np.where(large, _stirling_series(np.maximum(count, 1.0)), value) if large.any() else value
+
+
+def _stirling_series(count: Floats) -> Floats:
+    w = 1.0 / (count * count)
+    series = (1 / 12 - w * (1 / 360 - w * (1 / 1260 - w * (1 / 1680 - w / 1188)))) / count
+    return series + 0.5 * np.log(count) + _HALF_LOG_TWO_PI
+
+
+def _stirling_table(size: int, exact: int = 16) -> Floats:
+    small = [math.log(math.factorial(k) * math.exp(k) / k**k) for k in range(exact)]
+    return np.concatenate((small, _stirling_series(np.arange(exact, size, dtype=np.float64))))
+
+
+_TABLE = _stirling_table(4096)
 
 
 def deviance(count: Floats, mean: Floats, excess: Floats) -> Floats:
@@ -108,4 +116,7 @@ def deviance(count: Floats, mean: Floats, excess: Floats) -> Floats:
     w = v * v
     tail = 1 / 9 + w * (1 / 11 + w * (1 / 13 + w * (1 / 15 + w / 17)))
     near = excess * v + 2.0 * count * v * w * (1 / 3 + w * (1 / 5 + w * (1 / 7 + w * tail)))
-    return np.where(np.abs(v) < 0.15, near, special.rel_entr(count, mean) - excess)
+    far = w > 0.02
+    if not far.any():
+        return near
+    return np.where(far, special.rel_entr(count, mean, where=far, out=np.zeros(far.shape)) - excess, near)

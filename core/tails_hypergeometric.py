@@ -11,9 +11,8 @@ from numpy.typing import ArrayLike
 
 from steelyard.core.pmf import Floats, floats, hypergeometric_pmf
 
-_CHUNK = 2048  # elements at a time: a block of ratios stays in the processor's cache
-_BLOCK = 32768  # ratios at a time
-_DIGITS = 1e-17
+_CHUNK = 1024  # elements at a time, so that the working arrays stay in the processor's cache
+_NEGLIGIBLE = 1e-17
 
 
 def hypergeometric_at_most(x: ArrayLike, lot: ArrayLike, defectives: ArrayLike, n: ArrayLike) -> Floats:
@@ -25,16 +24,7 @@ def hypergeometric_at_most(x: ArrayLike, lot: ArrayLike, defectives: ArrayLike, 
     >>> round(float(hypergeometric_at_most(0, 60, 3, 32)), 12)
     0.095733489188
     """
-    x, lot, defectives, n = floats(x, lot, defectives, n)
-    # Count from the nearer end: beyond the mean, the good items of the sample instead of the defectives.
-    # What is then taken from 1 is a tail beyond the mean, so the difference is never small.
-    beyond = x > n * defectives / np.maximum(lot, 1.0)
-    count = np.where(beyond, n - x - 1.0, x)
-    marked = np.where(beyond, lot - defectives, defectives)
-    lowest = np.maximum(0.0, n + marked - lot)
-    ratio_sum = _ratio_sum(*np.broadcast_arrays(np.maximum(count, lowest), lot, marked, n))
-    tail = np.minimum(hypergeometric_pmf(count, lot, marked, n) * ratio_sum, 1.0)
-    return np.where(beyond, 1.0 - tail, tail)
+    return _by_chunks(x, lot, defectives, n, upper=False)
 
 
 def hypergeometric_at_least(x: ArrayLike, lot: ArrayLike, defectives: ArrayLike, n: ArrayLike) -> Floats:
@@ -46,31 +36,49 @@ def hypergeometric_at_least(x: ArrayLike, lot: ArrayLike, defectives: ArrayLike,
     >>> round(float(hypergeometric_at_least(1, 60, 1, 3)), 12)
     0.05
     """
-    x, lot, defectives, n = floats(x, lot, defectives, n)
-    return hypergeometric_at_most(n - x, lot, lot - defectives, n)
+    return _by_chunks(x, lot, defectives, n, upper=True)
 
 
-def _ratio_sum(x: Floats, lot: Floats, defectives: Floats, n: Floats) -> Floats:
-    """Return P(X <= x) / P(X = x) for `x` below the mean."""
-    total = np.empty(x.size)
-    columns = [np.ravel(part) for part in (x, lot - n - defectives + x, defectives - x, n - x)]
+def _by_chunks(x: ArrayLike, lot: ArrayLike, defectives: ArrayLike, n: ArrayLike, *, upper: bool) -> Floats:
+    columns = np.broadcast_arrays(*floats(x, lot, defectives, n))
+    shape = columns[0].shape
+    x, lot, defectives, n = (column.ravel() for column in columns)
+    if upper:  # as many good items at most
+        x, defectives = n - x, lot - defectives
+    value = np.empty(x.size)
     for start in range(0, x.size, _CHUNK):
         chunk = slice(start, start + _CHUNK)
-        total[chunk] = _chunk_sum(*(column[chunk] for column in columns))
-    return total.reshape(x.shape)
+        value[chunk] = _at_most(x[chunk], lot[chunk], defectives[chunk], n[chunk], -1.0 if upper else 1.0)
+    return value.reshape(shape)[()]
 
 
-def _chunk_sum(bad: Floats, good: Floats, bad_left: Floats, good_left: Floats) -> Floats:
-    """Add up the falling products of ``bad good / ((bad_left+1)(good_left+1))``, a block at a time."""
-    total, last = np.ones(bad.size), np.ones(bad.size)
-    steps = np.minimum(bad, good).max() if bad.size else 0.0
-    size = max(8, _BLOCK // max(1, bad.size))
-    start = 0
-    while start < steps and (last > _DIGITS * total).any():
-        step = np.arange(start, min(start + size, steps))[:, np.newaxis]
-        ratios = (bad - step) * (good - step) / ((bad_left + step + 1.0) * (good_left + step + 1.0))
-        terms = last * np.cumprod(ratios, axis=0)
-        total += terms.sum(axis=0)
-        last = terms[-1]
-        start += size
+def _at_most(x: Floats, lot: Floats, marked: Floats, n: Floats, slack: float) -> Floats:
+    """
+    Return P(X <= x) for the marked items, or 1 - P(X > x) where `x` lies beyond the mean by `slack`.
+
+    The slack, in standard deviations, prefers to sum over few defectives rather than many good items. At
+    -1 the difference from 1 is still above 0.1, so no digits are lost.
+    """
+    size = np.maximum(lot, 1.0)
+    mean = n * marked / size
+    variance = mean * (1.0 - marked / size) * (lot - n) / np.maximum(lot - 1.0, 1.0)
+    beyond = x > mean + slack * np.sqrt(variance)
+    # P(X > x) is the chance of at most n - x - 1 of the other items
+    count = np.where(beyond, n - x - 1.0, x)
+    marked = np.where(beyond, lot - marked, marked)
+    tail = hypergeometric_pmf(count, lot, marked, n) * _ratio_sum(count, lot, marked, n)
+    tail = np.minimum(tail, 1.0)
+    return np.where(beyond, 1.0 - tail, tail)
+
+
+def _ratio_sum(x: Floats, lot: Floats, marked: Floats, n: Floats) -> Floats:
+    """Return P(X <= x) / P(X = x), the sum of the falling products of the term ratios."""
+    x = np.clip(x, np.maximum(0.0, n + marked - lot), np.minimum(n, marked))
+    good, marked_left, good_left = lot - marked - n + x, marked - x + 1.0, n - x + 1.0
+    total = term = np.ones(x.size)
+    for step in range(int(np.minimum(x, good).max())):
+        term = term * ((x - step) * (good - step) / ((marked_left + step) * (good_left + step)))
+        total = total + term
+        if step % 8 == 7 and not (term > _NEGLIGIBLE * total).any():
+            break
     return total
