@@ -145,6 +145,10 @@ class Sheet:
         self.raw.add_chart(chart, anchor)
         self.descriptions.append(description)
 
+    def check(self, area: str, check: Check) -> None:
+        """Let a whole area take only what a check allows."""
+        self._validation(check).add(area)
+
     def freeze(self, cell: str) -> None:
         """Keep the rows above and the columns left of a cell in sight."""
         self.raw.freeze_panes = cell

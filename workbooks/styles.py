@@ -60,7 +60,7 @@ LOOKS = {
     "label": Look(bold=True, across="left"),
     "text": Look(wrap=True, across="left"),
     "unit": Look(SLATE, across="left"),
-    "input": Look(fill=WHEAT, border="box", edge=SLATE, locked=False),
+    "input": Look(fill=WHEAT, border="box", locked=False),
     "writing": Look(border="bottom", edge=SLATE, wrap=True, across="left", locked=False),
     "result": Look(border="hair"),
     "strong": Look(bold=True, border="box"),
@@ -82,6 +82,7 @@ DIGITS = {
     "tiny": Digits("[=0]0;[<0.001]0.00E+00;0.0000", 9),
     "exact": Digits("0.0000000000", 13),
     "date": Digits("yyyy-mm-dd", 11),
+    "words": Digits("@", 12),  # what is typed here stays text, even if it looks like a formula
 }
 
 
