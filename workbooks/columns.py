@@ -38,7 +38,7 @@ class Column:
     read : callable
         Turns a cell that is not blank, and the heading, into a value; raises `InvalidValue`.
     examples : tuple
-        The cells of the template's two example rows.
+        What is typed into the template's two example rows.
     choices : tuple of str
         Offered as a drop-down.
     required : bool
@@ -143,17 +143,16 @@ COLUMNS = (
         "p<=2% or D<=8 says it in full.",
         "a rate such as 2%, 0.02 or 50 ppm, or a claim such as p<=0.02 or D<=8",
         read_rate,
-        (0.02, 0.5),
+        ("2%", 0.5),
         required=True,
         numeric=True,
-        style="rate",
     ),
     Column(
         "alpha",
         "The accepted risk of rejecting although the claim holds.",
         _CHANCE,
         read_probability,
-        (0.05, 0.05),
+        ("5%", "5%"),
         numeric=True,
         style="rate",
         limits=(0.0, 1.0),
@@ -163,16 +162,15 @@ COLUMNS = (
         "The value that must be caught. Two values, such as 0.5% and 6%, where the side is either.",
         "a rate such as 8%, 0.08 or 200 ppm",
         read_rate,
-        (0.08, 1.5),
+        ("8%", 1.5),
         numeric=True,
-        style="rate",
     ),
     Column(
         "power",
         "The wanted chance of rejecting when the catch value is true.",
         "a probability between 0 and 1, such as 90% or 0.9",
         read_probability,
-        (0.9, 0.9),
+        ("90%", "90%"),
         numeric=True,
         style="rate",
         limits=(0.0, 1.0),

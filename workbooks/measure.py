@@ -9,7 +9,7 @@ from typing import Any
 from openpyxl.utils import column_index_from_string, get_column_letter
 
 from steelyard.workbooks.pieces import Value
-from steelyard.workbooks.styles import SIZE, read_style
+from steelyard.workbooks.styles import SIZE, Look, read_style
 
 # Advance widths of Arial in thousandths of the font size; letters not listed count as wide capitals.
 _WIDTHS = {
@@ -42,7 +42,7 @@ _WIDTH_OF = {letter: width for width, letters in _WIDTHS.items() for letter in l
 _OTHER = 722
 _PIXELS_PER_POINT = 96 / 72
 _DIGIT, _PADDING = 7, 5  # pixels: a digit of the normal font (the unit of columns), and a cell's padding
-_LINE = 1.32  # height of a line in font sizes
+_LINE = 1.26  # height of a line in font sizes
 
 NARROWEST, WIDEST = 6.0, 52.0
 
@@ -71,7 +71,7 @@ def text_width(text: str, size: float = SIZE, bold: bool = False) -> float:
     8.3
     """
     units = sum([_WIDTH_OF.get(letter, _OTHER) for letter in text])
-    pixels = units / 1000 * size * _PIXELS_PER_POINT * (1.08 if bold else 1.02)
+    pixels = units / 1000 * round(size * _PIXELS_PER_POINT) * (1.08 if bold else 1.0)
     return (pixels + _PADDING) / _DIGIT
 
 
@@ -83,6 +83,8 @@ def line_count(text: str, width: float, size: float = SIZE, bold: bool = False) 
     >>> line_count("reject the lot", 10.0)
     2
     """
+    if "\n" not in text and text_width(text, size, bold) <= width:
+        return 1
     lines = 0
     for paragraph in text.split("\n"):
         line = ""
@@ -108,16 +110,17 @@ class Fit:
     def __init__(self, fixed: Mapping[str, float]) -> None:
         self._fixed = {column_index_from_string(letters): width for letters, width in fixed.items()}
         self._widest: dict[int, float] = {}
-        self._merged: list[tuple[int, int, int, str, str]] = []
+        self._wrapped: list[tuple[int, int, int, str, Look]] = []
+        self._heights: dict[int, float] = {}
 
     def see(self, row: int, column: int, value: Value, style: str, span: int) -> None:
         """Take a cell into account."""
         look, digits, _ = read_style(style)
-        if span > 1:
-            if look.wrap and isinstance(value, str):
-                self._merged.append((row, column, span, value, style))
-            return
-        if look.spill or column in self._fixed:
+        if look.wrap and isinstance(value, str):
+            self._wrapped.append((row, column, span, value, look))
+        elif look.size > SIZE:
+            self._heights[row] = look.size * 1.6
+        if span > 1 or look.spill or column in self._fixed:
             return
         if isinstance(value, str):
             width = text_width(value, look.size, look.bold)
@@ -135,13 +138,15 @@ class Fit:
         self._widest[column] = self._widest.get(column, NARROWEST) + by
 
     def settle(self, worksheet: Any) -> None:
-        """Set the widths, and the heights of merged texts, which no program fits by itself."""
+        """Set the widths, and the heights that wrapped texts need: not every program fits them on opening."""
         widths = {column: min(width, WIDEST) for column, width in self._widest.items()} | self._fixed
         for column, width in widths.items():
             worksheet.column_dimensions[get_column_letter(column)].width = round(width, 2)
-        for row, column, span, text, style in self._merged:
-            look, _, _ = read_style(style)
+        for row, column, span, text, look in self._wrapped:
             width = sum(widths.get(covered, NARROWEST) for covered in range(column, column + span))
-            height = line_count(text, width, look.size, look.bold) * look.size * _LINE + 3
-            dimension = worksheet.row_dimensions[row]
-            dimension.height = max(round(height, 1), dimension.height or 0)
+            lines = line_count(text, width, look.size, look.bold)
+            if lines > 1:
+                self._heights[row] = max(self._heights.get(row, 0.0), lines * look.size * _LINE + 3)
+        for row, height in self._heights.items():
+            if worksheet.row_dimensions[row].height is None:
+                worksheet.row_dimensions[row].height = round(height, 1)

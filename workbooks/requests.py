@@ -19,7 +19,7 @@ from steelyard.core.errors import InvalidValue, SteelyardError, shown
 from steelyard.workbooks.columns import COLUMNS, Cell, Column
 from steelyard.workbooks.tabular import Raw, Row, Unusable, read_rows
 
-__all__ = ["COLUMNS", "Column", "Problem", "Request", "RequestList", "read_requests"]
+__all__ = ["COLUMNS", "Column", "Problem", "Request", "read_requests"]
 
 
 @dataclass(frozen=True, slots=True)
@@ -76,15 +76,7 @@ class Problem:
         return f"row {self.row}: {self.column} must be {self.allowed}, but got {shown(self.value)}{tail}"
 
 
-@dataclass(frozen=True, slots=True)
-class RequestList:
-    """The good rows of a request list, and what is wrong with the others."""
-
-    requests: tuple[Request, ...]
-    problems: tuple[Problem, ...]
-
-
-def read_requests(path: Path) -> RequestList:
+def read_requests(path: Path) -> tuple[list[Request], list[Problem]]:
     """Read a request list.
 
     Parameters
@@ -92,6 +84,11 @@ def read_requests(path: Path) -> RequestList:
     path : Path
         An .xlsx workbook (sheet *Requests*, else its first) or a .csv file in UTF-8, separated by commas,
         semicolons or tabs; decimal commas are understood where semicolons separate.
+
+    Returns
+    -------
+    tuple of (list of Request, list of Problem)
+        The good rows, and what is wrong with the others.
 
     Raises
     ------
@@ -113,7 +110,7 @@ def read_requests(path: Path) -> RequestList:
         problems += wrong
         if not wrong:
             requests.append(Request(row[0], **values))
-    return RequestList(tuple(requests), tuple(problems))
+    return requests, problems
 
 
 def _headings() -> str:

@@ -59,6 +59,7 @@ LOOKS = {
     "heading": Look(bold=True, fill=MIST, border="bottom", edge=RIVER, wrap=True, across="center"),
     "label": Look(bold=True, across="left"),
     "text": Look(wrap=True, across="left"),
+    "cell": Look(border="hair", wrap=True, across="left"),
     "unit": Look(SLATE, across="left"),
     "input": Look(fill=WHEAT, border="box", locked=False),
     "writing": Look(border="bottom", edge=SLATE, wrap=True, across="left", locked=False),
@@ -133,7 +134,9 @@ def named_style(words: str) -> NamedStyle:
         font=Font(name=FONT, size=look.size, bold=look.bold, italic=look.italic, color=look.colour),
         border=_border(look.border, look.edge),
         alignment=Alignment(
-            horizontal=look.across, vertical="top" if look.wrap else "center", wrap_text=look.wrap
+            horizontal=look.across,
+            vertical="center" if look.across == "center" else "top",
+            wrap_text=look.wrap,
         ),
         protection=Protection(locked=look.locked),
     )

@@ -6,14 +6,15 @@ from pathlib import Path
 
 from openpyxl.utils import get_column_letter
 
-from steelyard.workbooks.columns import COLUMNS, LONGEST, Cell, Column
+from steelyard.core.numbers import read_number
+from steelyard.workbooks.columns import COLUMNS, LONGEST, Column
 from steelyard.workbooks.house import Book, Check, Put
 
-FILLED_ROWS = 60  # rows that look like inputs
+FILLED_ROWS = 40  # rows that look like inputs
 CHECKED_ROWS = 2_000  # rows that have drop-downs and input messages
 
-_LIST_WIDTHS = {"characteristic": 26.0, "kind": 16.0, "claim": 12.0, "catch": 12.0}
-_HELP_WIDTHS = {"A": 16.0, "B": 9.0, "C": 46.0, "D": 44.0, "E": 20.0}
+_LIST_WIDTHS = {"characteristic": 24.0, "kind": 15.0, "reference": 22.0, "note": 24.0, "unit": 18.0}
+_HELP_WIDTHS = {"A": 16.0, "B": 9.0, "C": 54.0, "D": 46.0, "E": 22.0}
 
 
 def write_template(path: Path) -> None:
@@ -37,24 +38,25 @@ def write_template(path: Path) -> None:
 
 def _list(book: Book) -> None:
     letters = [get_column_letter(number) for number in range(1, len(COLUMNS) + 1)]
-    widths = {letter: _width(column) for letter, column in zip(letters, COLUMNS, strict=True)}
+    widths = {
+        letter: _LIST_WIDTHS.get(column.name, 10.5) for letter, column in zip(letters, COLUMNS, strict=True)
+    }
     sheet = book.sheet("Requests", widths)
     sheet.add(*(Put(column.name, "heading") for column in COLUMNS))
-    styles = [f"input {column.style}" for column in COLUMNS]
-    blank = (None,) * len(COLUMNS)
-    examples = list(zip(*(column.examples for column in COLUMNS), strict=True))
-    for row in [*examples, *[blank] * (FILLED_ROWS - len(examples))]:
-        sheet.add(*(Put(cell, style) for cell, style in zip(row, styles, strict=True)))
+    for number in range(FILLED_ROWS):
+        sheet.add(*(_input(column, number) for column in COLUMNS))
     for letter, column in zip(letters, COLUMNS, strict=True):
         sheet.check(f"{letter}2:{letter}{CHECKED_ROWS + 1}", _check(column))
     sheet.freeze("B2")
     sheet.print_setup(landscape=True, repeat="1:1")
 
 
-def _width(column: Column) -> float:
-    if column.name in _LIST_WIDTHS:
-        return _LIST_WIDTHS[column.name]
-    return 24.0 if column.style == "words" else 10.0
+def _input(column: Column, number: int) -> Put:
+    """Return a cell to fill in; the first rows hold the examples, percent as a spreadsheet stores it."""
+    example = column.examples[number] if number < len(column.examples) else None
+    if isinstance(example, str) and example.endswith("%"):
+        return Put(read_number(example, column.name), "input rate")
+    return Put(example, f"input {column.style}")
 
 
 def _check(column: Column) -> Check:
@@ -88,16 +90,11 @@ def _help(book: Book) -> None:
     )
     for column in COLUMNS:
         sheet.add(
-            Put(column.name, "label"),
-            Put("yes" if column.required else "", "text"),
-            Put(column.help, "text"),
-            Put(column.allowed, "text"),
-            Put(_shown(column.examples[0], column), "text"),
+            Put(column.name, "cell"),
+            Put("yes" if column.required else "", "cell"),
+            Put(column.help, "cell"),
+            Put(column.allowed, "cell"),
+            Put(column.examples[0], "cell"),
         )
     sheet.freeze(f"A{top + 1}")
-    sheet.print_setup(landscape=True, repeat=f"{top}:{top}")
-
-
-def _shown(example: Cell | None, column: Column) -> Cell | None:
-    """Return an example as the cell of the list shows it."""
-    return f"{example:.0%}" if column.style == "rate" and isinstance(example, float) else example
+    sheet.print_setup(landscape=True, one_page=True)
