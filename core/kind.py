@@ -165,8 +165,17 @@ class Kind(ABC):
 
     def given_rule(self, rule: Reject) -> Any:
         """Return a rule of this kind from critical values given from outside."""
-        message = f"a rule for a plan of kind {self.grammar.kind} is no pair of critical values: type its plan text"
+        message = (
+            f"a rule for a plan of kind {self.grammar.kind} is no pair of critical values: type its plan text"
+        )
         raise NoAnswer(message)
+
+    def check_claim(self, claim: Claim, design: Any) -> None:
+        """Raise when the claim is true whatever the parameter, such as ``p<=1``."""
+        least, most = self.parameters[0].reach(design)
+        always = claim.value >= most if claim.relation == "<=" else claim.value <= least
+        if always and claim.relation != "=":
+            raise InvalidValue("claim", f"be false for some {claim.symbol}", str(claim))
 
     def verify(self, plan: Plan) -> None:
         """Raise when design, claim and rule do not go together."""

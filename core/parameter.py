@@ -88,6 +88,11 @@ class Parameter:
             return show_rate(value)
         return f"{value:.6g}" if bare else f"{value:.6g} {self.name}"
 
+    def reach(self, design: Any) -> tuple[float, float]:
+        """Return the least and the greatest value for one design."""
+        del design
+        return self.lower, self.upper
+
     def rule(self) -> str:
         """Return what a value must do, for messages."""
         if math.isfinite(self.lower) and math.isfinite(self.upper):

@@ -18,20 +18,94 @@ decimals as typed.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
 from numpy.typing import NDArray
 
-from steelyard.core.law import CountLaw, ExactLaw
 from steelyard.core.numbers import typed
 from steelyard.core.parameter import Columns, Floats
+
+if TYPE_CHECKING:
+    from steelyard.core.law import CountLaw, ExactLaw
 
 Tail = tuple[Any, str, Floats]
 Truth = NDArray[np.bool_]
 
 NEAR = 1e-8  # relative; wider than a tail's error, because a rate near 1 leaves few digits of 1 - rate
 ONE_SIDED = "one-sided"
+ENDS = {"above": ("high",), "below": ("low",), "either": ("low", "high")}
+
+
+def critical_high(law: CountLaw, columns: Columns, rate: Any, alpha: float, split: str = ONE_SIDED) -> Floats:
+    """Return the least count that rejects at the high end, for many designs at once.
+
+    Parameters
+    ----------
+    law : CountLaw
+    columns : dict of ndarray
+        The designs' fields, e.g. ``{"n": np.array([50.0, 125.0])}``; they broadcast with `rate`.
+    rate : float or ndarray
+        The claim's boundary.
+    alpha : float
+        Nominal significance level.
+    split : {"one-sided", "half", "nearest", "rarest"}
+        How a two-sided test shares alpha; ``"one-sided"`` gives this end all of it.
+
+    Returns
+    -------
+    ndarray of float
+        Whole numbers; NaN where no possible count is rejected.
+
+    Examples
+    --------
+    >>> from steelyard.core.kinds.binomial import BINOMIAL
+    >>> critical_high(BINOMIAL.law, {"n": np.array([1.0, 50.0, 125.0])}, 0.02, 0.05).tolist()
+    [1.0, 4.0, 6.0]
+    """
+    rate = np.asarray(rate, dtype=float)
+
+    def rejects(x: Floats) -> Truth:
+        return within(law, columns, rate, tails_of(law, columns, rate, x, "high", split), alpha)
+
+    high = first_whole(rejects, np.zeros(()))
+    return np.where(high <= law.most(columns), high, np.nan)
+
+
+def critical_low(law: CountLaw, columns: Columns, rate: Any, alpha: float, split: str = ONE_SIDED) -> Floats:
+    """Return the greatest count that rejects at the low end, for many designs at once.
+
+    Parameters and shape are those of `critical_high`.
+
+    Examples
+    --------
+    >>> from steelyard.core.kinds.binomial import BINOMIAL
+    >>> critical_low(BINOMIAL.law, {"n": np.array([58.0, 59.0])}, 0.05, 0.05).tolist()
+    [nan, 0.0]
+    """
+    rate = np.asarray(rate, dtype=float)
+
+    def accepts(x: Floats) -> Truth:
+        return ~within(law, columns, rate, tails_of(law, columns, rate, x, "low", split), alpha)
+
+    low = first_whole(accepts, np.zeros(())) - 1
+    return np.where(low >= 0, low, np.nan)
+
+
+def p_value(law: CountLaw, columns: Columns, rate: Floats, x: Floats, side: str, split: str) -> Floats:
+    """Return the p-values of counts: the smallest evidence of the ends that the side looks at.
+
+    Parameters
+    ----------
+    law, columns, rate, x : see `tails_of`
+    side : {"above", "below", "either"}
+        Where the true rate lies when the claim is false.
+    split : {"half", "nearest", "rarest"}
+        How the two ends share alpha; without meaning for one end.
+    """
+    split = split if side == "either" else ONE_SIDED
+    found = [weigh(law, columns, rate, tails_of(law, columns, rate, x, end, split)) for end in ENDS[side]]
+    return np.minimum.reduce(found)
 
 
 def tails_of(law: CountLaw, columns: Columns, rate: Floats, x: Floats, end: str, split: str) -> list[Tail]:
@@ -61,7 +135,7 @@ def tails_of(law: CountLaw, columns: Columns, rate: Floats, x: Floats, end: str,
     if split == "rarest":
         chance = law.exactly(x, columns, rate)
         # An impossible count has no part of the other tail.
-        return [(1, end, x), (np.sign(chance), other, _opposite(law, columns, rate, x, -outwards))]
+        return [(1, end, x), (np.sign(chance), other, opposite(law, columns, rate, x, -outwards))]
     return [(1, end, x)]
 
 
@@ -114,8 +188,11 @@ def first_whole(predicate: Callable[[Floats], Truth], start: Floats, step: float
     return ahead
 
 
-def _opposite(law: CountLaw, columns: Columns, rate: Floats, x: Floats, step: float) -> Floats:
-    """Return the first count beyond `x`, across the mode, that is not more probable than `x`."""
+def opposite(law: CountLaw, columns: Columns, rate: Floats, x: Floats, step: float) -> Floats:
+    """Return the first count beyond `x`, across the mode, that is not more probable than `x`.
+
+    Equal probabilities are found equal exactly. Impossible counts, such as -1, are less probable.
+    """
     chance = law.exactly(x, columns, rate)
 
     def settle(exact: ExactLaw, y: Any, x: Any) -> bool:

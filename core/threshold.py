@@ -4,16 +4,19 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from typing import Any
+from typing import Any, NoReturn
 
 import numpy as np
 
 from steelyard.core.errors import InvalidValue
-from steelyard.core.kind import Kind
-from steelyard.core.law import Law
-from steelyard.core.numbers import read_number
+from steelyard.core.kind import Kind, claim_of
+from steelyard.core.law import CountLaw, Law
+from steelyard.core.numbers import read_number, write_number
+from steelyard.core.observed import read_count
 from steelyard.core.parameter import Columns, Floats
-from steelyard.core.plan import Plan, Reject
+from steelyard.core.plan import Claim, Plan, Reject
+from steelyard.core.regions import least_amount
+from steelyard.core.splits import ENDS, ONE_SIDED
 
 
 class ThresholdKind(Kind):
@@ -69,19 +72,103 @@ class ThresholdKind(Kind):
         rule, (least, most) = plan.rule, self.law.support(plan.design)
         text = rule.text(self.law.statistic)
         if not self._possible(rule.low, least, most) or not self._possible(rule.high, least, most):
-            reach = f"a value from {least:g} to {most:g}" if math.isfinite(most) else f"a value from {least:g}"
+            reach = (
+                f"a value from {least:g} to {most:g}" if math.isfinite(most) else f"a value from {least:g}"
+            )
             raise InvalidValue("reject", f"name {reach}", text)
-        if rule.low is not None and rule.low >= most or rule.high is not None and rule.high <= least:
+        if (rule.low is not None and rule.low >= most) or (rule.high is not None and rule.high <= least):
             raise InvalidValue("reject", "leave some outcome that does not reject", text)
         if rule.low is not None and rule.high is not None and rule.high - rule.low <= self.law.step:
             raise InvalidValue("reject", "leave some outcome that does not reject", text)
+        if plan.claim is not None:
+            self.check_claim(plan.claim, plan.design)
         side = plan.claim.side if plan.claim else "either"
-        if side == "above" and rule.low is not None or side == "below" and rule.high is not None:
+        if (side == "above" and rule.low is not None) or (side == "below" and rule.high is not None):
             raise InvalidValue("reject", f"not lie on the side where the claim {plan.claim} is true", text)
+
+    def row(self, design: Any) -> Columns:
+        """Return the fields of one design by name, as the law takes them."""
+        return {
+            field.attribute: np.asarray(getattr(design, field.attribute)) for field in self.grammar.fields
+        }
+
+    def critical_rule(self, design: Any, claim: Claim, alpha: float, split: str) -> Reject:
+        """Return the largest region that keeps alpha.
+
+        Raises
+        ------
+        InvalidValue
+            When nothing, or everything, would be rejected.
+        """
+        low, high = self._critical_ends(design, claim, alpha, split)
+        if low is None and high is None:
+            self.refuse_empty(design, claim, alpha, split)
+        if low is not None and high is not None and high - low <= self.law.step:
+            raise InvalidValue("alpha", "leave some outcome that does not reject", alpha)
+        return Reject(low, high)
+
+    def _critical_ends(
+        self, design: Any, claim: Claim, alpha: float, split: str
+    ) -> tuple[float | None, float | None]:
+        row, rate = self.row(design), np.asarray(claim.value)
+        split = split if claim.side == "either" else ONE_SIDED
+        found = {end: float(self.law.critical(row, rate, alpha, end, split)) for end in ENDS[claim.side]}
+        low, high = found.get("low", math.nan), found.get("high", math.nan)
+        return None if math.isnan(low) else low, None if math.isnan(high) else high
+
+    def refuse_empty(self, design: Any, claim: Claim, alpha: float, split: str) -> NoReturn:
+        """Raise because nothing can reject the claim."""
+        del design, split
+        raise InvalidValue("alpha", f"leave something that rejects the claim {claim}", alpha)
+
+    def outcome(self, plan: Plan, observed: Any) -> bool:
+        """Tell whether the statistic rejects the claim."""
+        low, high = plan.rule.low, plan.rule.high
+        return bool((low is not None and observed <= low) or (high is not None and observed >= high))
+
+    def follows_split(self, plan: Plan) -> bool:
+        """Tell whether the rule is the region of the plan's alpha, or without alpha that of some level."""
+        claim, rule = claim_of(plan), plan.rule
+        if plan.alpha is None:
+            return self.law.nested(
+                self.row(plan.design), np.asarray(claim.value), rule.low, rule.high, plan.split
+            )
+        ends = self._critical_ends(plan.design, claim, plan.alpha, plan.split)
+        pairs = zip(ends, (rule.low, rule.high), strict=True)
+        return all(a == b or (None not in (a, b) and math.isclose(a, b, rel_tol=1e-12)) for a, b in pairs)
+
+    def p_value(self, plan: Plan, observed: Any) -> float:
+        """Return the p-value of the statistic."""
+        claim = claim_of(plan)
+        rate, x = np.asarray(claim.value), np.asarray(observed)
+        return float(self.law.p_value(self.row(plan.design), rate, x, claim.side, plan.split))
 
     @staticmethod
     def _possible(end: float | None, least: float, most: float) -> bool:
         return end is None or least <= end <= most
+
+
+class CountKind(ThresholdKind):
+    """A threshold kind whose statistic is a count."""
+
+    law: CountLaw
+
+    def read_observed(self, value: Any, plan: Plan) -> Any:
+        """Return an observed count."""
+        return read_count(value, self.law.support(plan.design)[1])
+
+    def limit(self, plan: Plan, observed: Any, end: str, miss: float) -> float:
+        """Return an exact confidence limit of the rate."""
+        split = plan.split if claim_of(plan).side == "either" else ONE_SIDED
+        return self.law.limit(self.row(plan.design), observed, end, miss, split)
+
+    def refuse_empty(self, design: Any, claim: Claim, alpha: float, split: str) -> NoReturn:
+        """Raise, naming the smallest amount at which some count can reject."""
+        law, row, ends = self.law, self.row(design), ENDS[claim.side]
+        split = split if claim.side == "either" else ONE_SIDED
+        least = min(least_amount(law, row, claim.value, alpha, end, split) for end in ends)
+        rule = f"be at least {least:.0f} so that some count can reject {claim} at alpha {write_number(alpha)}"
+        raise InvalidValue(law.amount, rule, float(row[law.amount]))
 
 
 def read_reject(texts: dict[str, str], statistic: str, whole: bool) -> Reject:

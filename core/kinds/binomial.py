@@ -7,13 +7,15 @@ from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
 
-from steelyard.core import tails
+import numpy as np
+
+from steelyard.core import inverses, tails
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
-from steelyard.core.law import CountLaw, ExactLaw
+from steelyard.core.law import ExactLaw, RateLaw, running_means
 from steelyard.core.numbers import read_whole
 from steelyard.core.parameter import Columns, Floats, Parameter
-from steelyard.core.threshold import ThresholdKind, threshold_fields
+from steelyard.core.threshold import CountKind, threshold_fields
 
 MOST_ITEMS = 10_000_000
 
@@ -29,10 +31,10 @@ class Items:
             raise InvalidValue("n", f"be a whole number from 1 to {MOST_ITEMS}", self.n)
 
 
-class BinomialLaw(CountLaw):
+class BinomialLaw(RateLaw):
     """Defectives among n independent items with defect rate p."""
 
-    statistic, amount = "x", "n"
+    statistic, amount, greatest_rate = "x", "n", 1.0
 
     def at_most(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
         """Return P(X <= x)."""
@@ -52,13 +54,27 @@ class BinomialLaw(CountLaw):
 
         return exact.BinomialExact(int(row["n"]), rate)
 
+    def tail_rate(self, x: float, columns: Columns, end: str, prob: float) -> float:
+        """Return about the p at which a tail has a probability."""
+        return inverses.binomial_rate(x, float(columns["n"]), end, prob)
+
+    def even_rate(self, x: float, others: Floats, columns: Columns) -> Floats:
+        """Return p with equal chances: its odds are the geometric mean of k/(n - k + 1) between the two."""
+        n = columns["n"]
+        return 1.0 / (1.0 + np.exp(-running_means(x, others, lambda k: np.log(k / (n - k + 1)))))
+
+    def variance(self, columns: Columns, rate: float) -> float:
+        """Return the greatest variance over all p."""
+        del rate
+        return float(columns["n"]) / 4
+
     def largest(self, columns: Columns) -> Any:
         """Return the most items of one plan."""
         del columns
         return MOST_ITEMS
 
 
-class BinomialKind(ThresholdKind):
+class BinomialKind(CountKind):
     """Single plans for the rate of defectives."""
 
     law = BinomialLaw()

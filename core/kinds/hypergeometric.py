@@ -10,14 +10,14 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core import tails
+from steelyard.core import limits, tails
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
 from steelyard.core.law import CountLaw, ExactLaw
 from steelyard.core.numbers import read_number, read_whole, typed
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.plan import Claim, split_claim
-from steelyard.core.threshold import ThresholdKind, threshold_fields
+from steelyard.core.threshold import CountKind, threshold_fields
 
 MOST_ITEMS = 1_000_000
 
@@ -77,6 +77,10 @@ class Defectives(Parameter):
         exact = typed(number) * design.lot
         return self.read(float(math.floor(exact) if relation == "<=" else math.ceil(exact)), design)
 
+    def reach(self, design: Any) -> tuple[float, float]:
+        """Return 0 and the lot."""
+        return 0.0, float(design.lot)
+
     def convert(self, values: Floats, columns: Columns) -> Floats:
         """Return D for queried values, NaN where a value is no whole number of items of the lot."""
         lot = columns["lot"]
@@ -112,6 +116,10 @@ class HypergeometricLaw(CountLaw):
 
         return exact.HypergeometricExact(int(row["lot"]), int(rate), int(row["n"]))
 
+    def limit(self, row: Mapping[str, Any], x: float, end: str, miss: float, split: str) -> float:
+        """Return a limit for D, a whole number."""
+        return limits.lot_limit(self, row, x, end, miss, split)
+
     def largest(self, columns: Columns) -> Any:
         """Return the lot."""
         return columns["lot"]
@@ -121,14 +129,12 @@ class HypergeometricLaw(CountLaw):
         return rate / columns["lot"]
 
 
-class HypergeometricKind(ThresholdKind):
+class HypergeometricKind(CountKind):
     """Single plans for a finite lot."""
 
     law = HypergeometricLaw()
 
-    parameters = (
-        Defectives("D", "defectives in the lot", "items per lot", 0.0, math.inf, aliases=("p",)),
-    )
+    parameters = (Defectives("D", "defectives in the lot", "items per lot", 0.0, math.inf, aliases=("p",)),)
     grammar = Grammar(
         kind="hypergeometric",
         head="hypergeometric",

@@ -8,13 +8,15 @@ from dataclasses import dataclass
 from fractions import Fraction
 from typing import Any
 
-from steelyard.core import tails
+import numpy as np
+
+from steelyard.core import inverses, tails
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
-from steelyard.core.law import ExactLaw, UnboundedCountLaw
+from steelyard.core.law import ExactLaw, UnboundedCountLaw, running_means
 from steelyard.core.numbers import read_number, typed
 from steelyard.core.parameter import Columns, Floats, Parameter
-from steelyard.core.threshold import ThresholdKind, threshold_fields
+from steelyard.core.threshold import CountKind, threshold_fields
 
 MOST_UNITS = 1e9
 
@@ -53,13 +55,25 @@ class PoissonLaw(UnboundedCountLaw):
 
         return exact.PoissonExact(typed(row["units"]) * rate)
 
+    def tail_rate(self, x: float, columns: Columns, end: str, prob: float) -> float:
+        """Return about the rate at which a tail has a probability."""
+        return inverses.poisson_mean(x, end, prob) / float(columns["units"])
+
+    def even_rate(self, x: float, others: Floats, columns: Columns) -> Floats:
+        """Return the rates with equal chances: the mean is the geometric mean of k between the two."""
+        return np.exp(running_means(x, others, np.log)) / columns["units"]
+
+    def variance(self, columns: Columns, rate: float) -> float:
+        """Return the mean."""
+        return float(columns["units"]) * rate
+
     def largest(self, columns: Columns) -> Any:
         """Return the most units of one plan."""
         del columns
         return MOST_UNITS
 
 
-class PoissonKind(ThresholdKind):
+class PoissonKind(CountKind):
     """Single plans for defects per unit."""
 
     law = PoissonLaw()

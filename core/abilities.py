@@ -1,0 +1,58 @@
+"""What only some kinds of plan can do, as small protocols; a question asks for the ability it needs."""
+
+from __future__ import annotations
+
+from typing import Any, Protocol, TypeVar, runtime_checkable
+
+from steelyard.core.errors import NoAnswer
+from steelyard.core.kind import Kind
+from steelyard.core.plan import Claim, Plan
+
+Ability = TypeVar("Ability")
+
+
+@runtime_checkable
+class RuleMaking(Protocol):
+    """A kind whose rule follows from a claim and alpha."""
+
+    def critical_rule(self, design: Any, claim: Claim, alpha: float, split: str) -> Any:
+        """Return the rule of the largest region that keeps alpha."""
+
+
+@runtime_checkable
+class Deciding(Protocol):
+    """A kind that decides on an observed result."""
+
+    def read_observed(self, value: Any, plan: Plan) -> Any:
+        """Return what was observed, from a cell's number or text."""
+
+    def outcome(self, plan: Plan, observed: Any) -> bool | str:
+        """Tell whether the claim is rejected, or say what to do next."""
+
+
+@runtime_checkable
+class Judging(Deciding, Protocol):
+    """A kind that weighs an observed result: p-values and confidence limits."""
+
+    def follows_split(self, plan: Plan) -> bool:
+        """Tell whether the rule is a region of the plan's own p-value, unlike some rules from outside."""
+
+    def p_value(self, plan: Plan, observed: Any) -> float:
+        """Return the p-value of what was observed."""
+
+    def limit(self, plan: Plan, observed: Any, end: str, miss: float) -> float:
+        """Return the confidence limit ``"lower"`` or ``"upper"`` at confidence 1 - miss."""
+
+
+def able(kind: Kind, ability: type[Ability], what: str) -> Ability:
+    """Return the kind as one that has an ability.
+
+    Raises
+    ------
+    NoAnswer
+        Naming `what` it lacks, e.g. ``"p-value"``.
+    """
+    if isinstance(kind, ability):
+        return kind
+    message = f"a plan of kind {kind.grammar.kind} has no {what}"
+    raise NoAnswer(message)

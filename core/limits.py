@@ -1,0 +1,192 @@
+"""Exact confidence limits: the tests of all rates, inverted.
+
+A limit is the least or the greatest rate in ``{rate: p-value(x) > 1 - confidence}``, with the p-value of
+`steelyard.core.splits`. One-sided and with split ``half`` these are the limits of Clopper and Pearson (for
+Poisson counts Garwood's), with ``nearest`` the mid-P limits. With ``rarest`` the set may have holes: it
+jumps at the rates where two counts are equally probable, so these are scanned from far outside inwards.
+
+`miss` stands for 1 - confidence throughout.
+
+References
+----------
+C. J. Clopper and E. S. Pearson, Biometrika 26 (1934), 404-413; F. Garwood, Biometrika 28 (1936), 437-442
+(both from memory).
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from typing import TYPE_CHECKING, Any
+
+import numpy as np
+
+from steelyard.core.parameter import Floats
+from steelyard.core.splits import ONE_SIDED, Tail, Truth, first_whole, opposite, tails_of, weigh, within
+
+if TYPE_CHECKING:
+    from steelyard.core.law import CountLaw, RateLaw
+
+Row = Mapping[str, Any]
+
+_OWN = {"lower": ("high", "low", 1.0), "upper": ("low", "high", -1.0)}
+_CLOSE = 1e-10  # relative step after which Newton's next one is below rounding
+_TIE = 1e-12
+_TINY = 1e-300
+
+
+def rate_limit(law: RateLaw, row: Row, x: float, end: str, miss: float, split: str) -> float:
+    """Return a limit for a rate that may take any value.
+
+    Parameters
+    ----------
+    law : RateLaw
+    row : mapping
+        The fields of one design.
+    x : float
+        The count found.
+    end : {"lower", "upper"}
+    miss : float
+        1 - confidence, strictly between 0 and 1.
+    split : {"one-sided", "half", "nearest", "rarest"}
+
+    Examples
+    --------
+    >>> from steelyard.core.kinds.binomial import BINOMIAL
+    >>> round(rate_limit(BINOMIAL.law, {"n": 20}, 4, "upper", 0.1, "half"), 5)
+    0.40103
+    """
+    columns = dict(row)
+    own, _, _ = _OWN[end]
+    if end == "lower" and x == 0:
+        return 0.0
+    if end == "upper" and x == law.most(columns):
+        return law.greatest_rate
+    if split == "rarest":
+        return _rarest(law, columns, x, end, miss)
+    if split == "nearest":
+        start = law.tail_rate(x, columns, own, miss)
+        tails = tails_of(law, columns, np.asarray(start), np.asarray(x), own, split)
+        return _solve(law, columns, tails, miss, start, 0.0, law.greatest_rate)
+    return _one_sided(law, columns, x, own, miss if split == ONE_SIDED else miss / 2)
+
+
+def lot_limit(law: CountLaw, row: Row, x: float, end: str, miss: float, split: str) -> float:
+    """Return a limit for the number of defectives in a lot, a whole number; ties are decided exactly.
+
+    Parameters are those of `rate_limit`; the row has the fields ``lot`` and ``n``.
+
+    Examples
+    --------
+    >>> from steelyard.core.kinds.hypergeometric import HYPERGEOMETRIC
+    >>> lot_limit(HYPERGEOMETRIC.law, {"lot": 60, "n": 32}, 0, "upper", 0.05, "one-sided")
+    3.0
+    """
+    columns, (own, _, inwards) = dict(row), _OWN[end]
+    least, most = x, float(row["lot"] - row["n"] + x)
+    start, stop = (least, most) if end == "lower" else (most, least)
+
+    def possible(count: Floats, bound: float, split: str) -> Truth:
+        inside = np.clip(count, least, most)
+        tails = tails_of(law, columns, inside, np.asarray(x), own, split)
+        return ~within(law, columns, inside, tails, bound) | ((count - stop) * inwards >= 0)
+
+    if split != "rarest":
+        return float(first_whole(lambda count: possible(count, miss, split), np.asarray(start), inwards))
+    outside = miss / _most_times(row["n"] / 4)
+    place = float(first_whole(lambda count: possible(count, outside, ONE_SIDED), np.asarray(start), inwards))
+    for length in (64 * 2**k for k in range(64)):  # longer and longer stretches, so that it ends soon
+        stretch = place + inwards * np.arange(length)
+        found = possible(stretch, miss, split)
+        if found.any():
+            return float(stretch[found.argmax()])
+        place += inwards * length
+    raise AssertionError("unreachable: the far end is possible")
+
+
+def _one_sided(law: RateLaw, columns: dict[str, Any], x: float, own: str, miss: float) -> float:
+    """Return the rate where the own tail is `miss`, by whichever tail is the smaller."""
+    start = law.tail_rate(x, columns, own, miss)
+    if miss <= 0.5:
+        return _solve(law, columns, [(1, own, np.asarray(x))], miss, start, 0.0, law.greatest_rate)
+    rest, beside = ("low", x - 1) if own == "high" else ("high", x + 1)
+    return _solve(law, columns, [(1, rest, np.asarray(beside))], 1.0 - miss, start, 0.0, law.greatest_rate)
+
+
+def _solve(
+    law: RateLaw,
+    columns: dict[str, Any],
+    tails: list[Tail],
+    target: float,
+    start: float,
+    low: float,
+    high: float,
+) -> float:
+    """Return the rate between `low` and `high` where a weighted sum of tails crosses the target.
+
+    Newton's method on the logarithm of the sum, held inside a bracket.
+    """
+    rate, rising = max(start, _TINY), tails[0][1] == "high"
+    for _ in range(200):
+        value, slope = float(weigh(law, columns, np.asarray(rate), tails)), _slope(law, columns, rate, tails)
+        if (value > target) == rising:
+            high = rate
+        else:
+            low = rate
+        new = rate - value * math.log(value / target) / slope if value > 0 and slope != 0 else math.nan
+        if abs(new - rate) <= _CLOSE * rate:
+            return new
+        if not low < new < high:
+            new = (low + high) / 2 if math.isfinite(high) else 2 * rate
+        rate = new
+    return rate
+
+
+def _slope(law: RateLaw, columns: dict[str, Any], rate: float, tails: list[Tail]) -> float:
+    """Return the derivative by the rate: that of P(X >= x) is ``x P(X = x) / rate`` for every rate law."""
+    total = 0.0
+    for weight, end, x in tails:
+        first, sign = (x, 1) if end == "high" else (x + 1, -1)
+        total += float(sign * weight * first * law.exactly(first, columns, np.asarray(rate)) / rate)
+    return total
+
+
+def _rarest(law: RateLaw, columns: dict[str, Any], x: float, end: str, miss: float) -> float:
+    """Scan the rates where `x` and a count of the other tail are equally probable, from outside inwards.
+
+    Between two of them the evidence has no inner maximum: it falls, then rises, or does one of both.
+    """
+    own, other, inwards = _OWN[end]
+    near, far = law.tail_rate(x, columns, own, miss), _outside(law, columns, x, own, miss)
+    count, bounds = np.asarray(x), np.array([far, near])
+    first, last = opposite(law, columns, bounds, count, -inwards)
+    last = min(last + 1, x - 1) if end == "lower" else max(last - 1, x + 1)
+    others = np.arange(first + inwards, last + inwards, inwards)
+    rates = law.even_rate(x, others, columns)
+    before = weigh(law, columns, rates, [(1, own, count), (1, other, others - inwards)])
+    after = weigh(law, columns, rates, [(1, own, count), (1, other, others)])
+    beyond = miss * (1 + _TIE)
+    place = int((after > beyond).argmax())
+    if before[place] <= beyond:
+        return float(rates[place])
+    outer, inner = float(rates[place - 1]) if place else far, float(rates[place])
+    tails: list[Tail] = [(1, own, count), (1, other, others[place] - inwards)]
+    return _solve(law, columns, tails, miss, (outer + inner) / 2, *sorted((outer, inner)))
+
+
+def _outside(law: RateLaw, columns: dict[str, Any], x: float, own: str, miss: float) -> float:
+    """Return a rate beyond which the two tails together stay below `miss`."""
+    times, rate = 1.0, law.tail_rate(x, columns, own, miss)
+    while (needed := _most_times(law.variance(columns, rate))) > times:
+        times = 2 * needed
+        rate = law.tail_rate(x, columns, own, miss / times)
+    return rate
+
+
+def _most_times(variance: float) -> float:
+    """Return how many times the own tail both tails can be together under split ``rarest``.
+
+    The other tail is at most its nearest count's probability divided by that of the mode, because the
+    laws are log-concave; the mode of a whole number has at least the probability 1/sqrt(1 + 12 variance).
+    """
+    return 1.0 + math.sqrt(1.0 + 12.0 * variance)
