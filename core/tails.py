@@ -19,8 +19,8 @@ from __future__ import annotations
 from collections.abc import Callable
 
 import numpy as np
-from numpy.typing import ArrayLike
-from scipy import special
+from numpy.typing import ArrayLike, NDArray
+from scipy import special  # noqa: TID251 - this module and pmf.py wrap it for the count laws
 
 from steelyard.core.pmf import Floats, binomial_pmf, floats, hypergeometric_pmf, poisson_pmf
 from steelyard.core.tails_hypergeometric import hypergeometric_at_least, hypergeometric_at_most
@@ -40,6 +40,7 @@ __all__ = [
 _FAR_BINOMIAL = 1e-200  # below: betainc loses digits and can return 0
 _FAR_POISSON = 1e-16  # below: gammainc and gammaincc pass 1e-12 at large means
 _LEVELS = 16  # of the continued fraction; full precision from eight standard deviations outwards
+_CHUNK = 4096  # elements of the far tail at a time, so that they stay in the cache
 _TINY = 1e-300
 
 Kernel = Callable[..., Floats]
@@ -102,10 +103,15 @@ def _inside(
 ) -> Floats:
     """Apply the kernel where ``low <= x <= high``; `ends` are the values below and above."""
     below, above = x < low, x > high
-    if not (below | above).any():
+    if not _any(below | above):
         return kernel(x, *rest)
     value = kernel(np.clip(x, low, np.maximum(high, low)), *rest)
     return np.where(below, ends[0], np.where(above, ends[1], value))
+
+
+def _any(mask: NDArray[np.bool_]) -> bool:
+    """Return whether one is true; a scalar is its own answer, which spares it the reduction."""
+    return bool(mask.any() if mask.ndim else mask)
 
 
 def _binomial_upper(x: Floats, n: Floats, p: Floats) -> Floats:
@@ -117,7 +123,7 @@ def _binomial_lower(x: Floats, n: Floats, p: Floats) -> Floats:
     q = 1.0 - p
     value = special.betainc(n - x, x + 1.0, q)
     rounding = (1.0 - q) - p  # exactly what q lacks; it matters once n is in the thousands
-    if n.max() * np.abs(rounding).max() > 1e-13:
+    if _any(np.abs(rounding) > 1e-13 / np.maximum(n, 1.0)):
         log_p, log_q = np.log(np.maximum(p, _TINY)), np.log(np.maximum(q, _TINY))
         density = np.exp(x * log_p + (n - x - 1.0) * log_q - special.betaln(n - x, x + 1.0))
         value = np.minimum(value + rounding * density, 1.0)
@@ -134,12 +140,17 @@ def _poisson_lower(x: Floats, mean: Floats) -> Floats:
 
 def _mend(value: Floats, limit: float, far: Kernel, *arguments: Floats) -> Floats:
     """Replace the values below the limit by the far-tail form of the same tail."""
-    if value.size == 0 or value.min() >= limit:
+    low = value < limit
+    if not _any(low):
         return value
-    where = np.asarray(value < limit)
-    value = np.array(value)
-    value[where] = far(*(np.broadcast_to(argument, value.shape)[where] for argument in arguments))
-    return value
+    value, low = np.array(value), np.asarray(low)
+    columns = [np.broadcast_to(argument, value.shape)[low] for argument in arguments]
+    mended = np.empty(columns[0].size)
+    for start in range(0, mended.size, _CHUNK):
+        chunk = slice(start, start + _CHUNK)
+        mended[chunk] = far(*(column[chunk] for column in columns))
+    value[low] = mended
+    return value[()]
 
 
 def _binomial_far(x: Floats, n: Floats, p: Floats) -> Floats:

@@ -12,6 +12,7 @@ from numpy.typing import ArrayLike
 from steelyard.core.pmf import Floats, floats, hypergeometric_pmf
 
 _CHUNK = 1024  # elements at a time, so that the working arrays stay in the processor's cache
+_BLOCK = 1024  # term ratios at a time
 _NEGLIGIBLE = 1e-17
 
 
@@ -74,11 +75,18 @@ def _at_most(x: Floats, lot: Floats, marked: Floats, n: Floats, slack: float) ->
 def _ratio_sum(x: Floats, lot: Floats, marked: Floats, n: Floats) -> Floats:
     """Return P(X <= x) / P(X = x), the sum of the falling products of the term ratios."""
     x = np.clip(x, np.maximum(0.0, n + marked - lot), np.minimum(n, marked))
-    good, marked_left, good_left = lot - marked - n + x, marked - x + 1.0, n - x + 1.0
-    total = term = np.ones(x.size)
-    for step in range(int(np.minimum(x, good).max())):
-        term = term * ((x - step) * (good - step) / ((marked_left + step) * (good_left + step)))
-        total = total + term
-        if step % 8 == 7 and not (term > _NEGLIGIBLE * total).any():
-            break
+    up = (x, lot - marked - n + x)
+    down = (marked - x + 1.0, n - x + 1.0)
+    total, term, live, start = np.ones(x.size), np.ones(x.size), np.arange(x.size), 0
+    while live.size:
+        step = np.arange(start, start + max(8, _BLOCK // live.size))[:, np.newaxis]
+        ratios = (up[0] - step) * (up[1] - step) / ((down[0] + step) * (down[1] + step))
+        ratios[0] *= term
+        terms = np.cumprod(ratios, axis=0)
+        total[live] += terms.sum(axis=0)
+        term = terms[-1]
+        keep = np.flatnonzero(term > _NEGLIGIBLE * total[live])
+        live, term = live[keep], term[keep]
+        up, down = (up[0][keep], up[1][keep]), (down[0][keep], down[1][keep])
+        start += step.size
     return total
