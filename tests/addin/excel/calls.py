@@ -1,0 +1,68 @@
+"""Calls of every cell function as Excel makes them, and what must come back; used on two systems."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Iterator
+from typing import Any
+
+from steelyard.addin import CATALOGUE, call
+from steelyard.addin.catalogue import Cells, Entry
+
+MISSING = {"missing": True}
+NOT_AVAILABLE = {"error": -2146826246}  # how #N/A travels; the number of Excel's object model is 2042
+PLANS = (
+    "binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4",
+    "binomial | n 80 | claim p<=0.02 | alpha 0.05 | reject x>=5",
+)
+CELLS = {"A2": PLANS[0], "A3": PLANS[1], "A2:A5": [[PLANS[0]], [None], [PLANS[1]], [None]]}
+PART = re.compile(r'"[^"]*"|[^,]+')
+
+
+def plain_arguments(entry: Entry) -> list[Any]:
+    """Return the arguments of an entry's example formula, its cells filled with plans."""
+    inside = entry.example.removesuffix(")").partition("(")[2]
+    return [_value(part.strip()) for part in PART.findall(inside)]
+
+
+def _value(part: str) -> Any:
+    if part.startswith('"'):
+        return part.strip('"')
+    if part in CELLS:
+        return CELLS[part]
+    return float(part.removesuffix("%")) / 100 if part.endswith("%") else float(part)
+
+
+def calls() -> Iterator[tuple[str, list[Any]]]:
+    """Yield the name and the arguments of each call."""
+    for entry in CATALOGUE.values():
+        plain = plain_arguments(entry)
+        blanks = len(entry.arguments) - len(plain)
+        yield entry.name, [*plain, *[MISSING] * blanks]
+        for place, value in enumerate(plain):
+            before, after = plain[:place], [*plain[place + 1 :], *[None] * blanks]
+            yield entry.name, [*before, None, *after]
+            yield entry.name, [*before, NOT_AVAILABLE, *after]
+            if not isinstance(value, list):
+                yield entry.name, [*before, [[value], [None], [value]], *after]
+                yield entry.name, [*before, [[value, "nonsense"]], *after]
+
+
+def expected(name: str, arguments: list[Any]) -> Cells:
+    """Return what Excel must get: the catalogue's own answer, without None and without a frame of one row."""
+    given = [None if value == MISSING else "#N/A" if value == NOT_AVAILABLE else value for value in arguments]
+    answer = call(name, given)
+    rows = answer if isinstance(answer, list) else [[answer]]
+    shown = [["" if value is None else value for value in row] for row in rows]
+    if len(shown) > 1:
+        return shown
+    return shown[0][0] if len(shown[0]) == 1 else shown[0]
+
+
+def differs(found: Any, wanted: Any) -> bool:
+    """Tell whether two answers differ by more than the last digits of another build of scipy."""
+    if isinstance(wanted, list):
+        return len(found) != len(wanted) or any(map(differs, found, wanted))
+    if isinstance(wanted, str):
+        return bool(found != wanted)
+    return not abs(found - wanted) <= 1e-9 * abs(wanted)

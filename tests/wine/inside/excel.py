@@ -1,0 +1,93 @@
+"""Play Excel: start Python through xlwings' own library and call functions as the VBA wrappers do.
+
+Reads a job (a JSON file), prints the answers as JSON. Runs in the Windows Python.
+"""
+
+import ctypes
+import json
+import sys
+import time
+
+import pythoncom
+import win32com.client
+from pywintypes import com_error
+
+EMPTY_ARGUMENT = win32com.client.VARIANT(pythoncom.VT_ERROR, -2147352572)
+VT_DISPATCH, VT_BSTR = 9, 8
+ACTIVATE, KILL = 1, -1
+
+
+class Variant(ctypes.Structure):
+    _fields_ = [("kind", ctypes.c_ushort), ("padding", ctypes.c_ushort * 3), ("value", ctypes.c_void_p * 2)]
+
+
+class Library:
+    """xlwings' library, called as the loader declares it: ByRef Variant, ByVal String, Long."""
+
+    def __init__(self, path: str) -> None:
+        self.function = ctypes.WinDLL(path).XLPyDLLActivateAuto
+        self.function.argtypes = [ctypes.POINTER(Variant), ctypes.c_void_p, ctypes.c_long]
+        self.function.restype = ctypes.c_long
+        self.strings = ctypes.WinDLL("oleaut32").SysAllocStringByteLen
+        self.strings.argtypes = [ctypes.c_char_p, ctypes.c_uint]
+        self.strings.restype = ctypes.c_void_p
+
+    def call(self, command: str, mode: int = ACTIVATE):
+        result, text = Variant(), command.encode("mbcs")
+        code = self.function(ctypes.byref(result), self.strings(text, len(text)), mode)
+        if result.kind == VT_BSTR:
+            raise RuntimeError(ctypes.wstring_at(result.value[0]))
+        if code or result.kind != VT_DISPATCH:
+            return None
+        pointer = pythoncom.ObjectFromAddress(result.value[0], pythoncom.IID_IDispatch)
+        return win32com.client.Dispatch(pointer)
+
+
+def argument(value):
+    """Return a value of the job as VBA hands it over."""
+    if isinstance(value, dict):
+        return EMPTY_ARGUMENT if "missing" in value else win32com.client.VARIANT(pythoncom.VT_ERROR, value["error"])
+    return tuple(map(tuple, value)) if isinstance(value, list) else value
+
+
+def process_of(server) -> str:
+    return server.Str(server.Eval("__import__('os').getpid()"))
+
+
+def end(server) -> None:
+    """Let the Python behind a connection die, as a crash would."""
+    try:
+        server.Exec("import os; os._exit(1)")
+    except com_error:
+        return
+
+
+def main(job) -> None:
+    pythoncom.CoInitialize()
+    library = Library(job["library"])
+    begun = time.perf_counter()
+    server = library.call(job["command"])
+    first = server.CallUDF(*job["first"])
+    answers = {"first": first, "first_seconds": round(time.perf_counter() - begun, 2)}
+    begun = time.perf_counter()
+    answers["calls"] = [
+        server.CallUDF(job["module"], call["function"], tuple(map(argument, call["arguments"])))
+        for call in job["calls"]
+    ]
+    answers["seconds_per_call"] = round((time.perf_counter() - begun) / max(len(job["calls"]), 1), 5)
+    answers["search_path"] = server.Str(server.Eval("__import__('sys').path"))
+    process = process_of(server)
+    answers["same_process"] = process_of(library.call(job["command"])) == process
+    end(server)
+    begun = time.perf_counter()
+    server = library.call(job["command"])
+    answers["after_death"] = server.CallUDF(*job["first"])
+    answers["new_process"] = process_of(server) != process
+    answers["recovery_seconds"] = round(time.perf_counter() - begun, 2)
+    del server
+    library.call(job["command"], KILL)
+    print(json.dumps(answers))
+
+
+with open(sys.argv[1], encoding="utf-8") as file:
+    main(json.load(file))
