@@ -149,9 +149,7 @@ def _argument_faults(declared: str, procedures: list[str]) -> Iterator[str]:
     if twice := _doubled(names):
         yield f"two arguments have the same name: {', '.join(twice)}"
     hidden = {procedure.lower() for procedure in [*procedures, "XLPy", "failed"]}
-    yield from (
-        f"argument {name} hides another name of the module" for name in names if name.lower() in hidden
-    )
+    yield from (f"argument {name} hides a name of the module" for name in names if name.lower() in hidden)
     optional = [part.startswith("Optional ") for part in parts]
     if optional != sorted(optional):
         yield "a required argument follows an optional one"

@@ -80,7 +80,9 @@ def windows_path(path: Path) -> str:
 def build(windows: Windows) -> None:
     """Download, unpack and start everything; about half a minute, and nothing at all the second time."""
     stamp = windows.root / "complete"
-    wanted = hashlib.sha256(b"".join(path.read_bytes() for path in (*REQUIREMENTS, Path(__file__)))).hexdigest()
+    wanted = hashlib.sha256(
+        b"".join(path.read_bytes() for path in (*REQUIREMENTS, Path(__file__)))
+    ).hexdigest()
     if stamp.exists() and stamp.read_text() == wanted:
         return
     shutil.rmtree(windows.root, ignore_errors=True)

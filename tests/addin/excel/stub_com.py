@@ -57,6 +57,7 @@ def pretend_windows() -> None:
 def main() -> None:
     pretend_windows()
     import xlwings.udfs
+
     from steelyard.addin.excel import udfs
 
     assert xlwings.func is xlwings.udfs.xlfunc, "xlwings is still a stub"
@@ -68,7 +69,11 @@ def main() -> None:
         answers.append(xlwings.udfs.call_udf(udfs.__name__, name, tuple(arguments)))
     functions = {name: getattr(udfs, name).__xlfunc__ for name in steelyard.addin.CATALOGUE}
     described = {
-        name: [function["category"], function["ret"]["doc"], [[a["name"], a["doc"]] for a in function["args"]]]
+        name: [
+            function["category"],
+            function["ret"]["doc"],
+            [[a["name"], a["doc"]] for a in function["args"]],
+        ]
         for name, function in functions.items()
     }
     print(json.dumps({"answers": answers, "vba": text.getvalue(), "described": described}))

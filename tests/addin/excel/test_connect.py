@@ -54,7 +54,9 @@ def test_connecting_writes_one_file_and_says_what_will_be_seen(computer, tmp_pat
     settings = xlam.read_settings(computer.startup / "steelyard.xlam")
     assert settings["Interpreter_Win"] == str(computer.interpreter)
     assert "Copied files" not in settings
-    assert f"Type =SY_VERSION() into a cell: it shows {VERSION}. The first answer takes a few seconds." in lines
+    assert (
+        f"Type =SY_VERSION() into a cell: it shows {VERSION}. The first answer takes a few seconds." in lines
+    )
 
 
 def test_disconnecting_leaves_no_trace(computer, tmp_path):
@@ -65,7 +67,9 @@ def test_disconnecting_leaves_no_trace(computer, tmp_path):
 
 
 def test_disconnecting_what_is_not_connected(computer):
-    assert disconnect_excel(computer) == [f"Excel was not connected: there is no {computer.startup / 'steelyard.xlam'}."]
+    assert disconnect_excel(computer) == [
+        f"Excel was not connected: there is no {computer.startup / 'steelyard.xlam'}."
+    ]
 
 
 def test_libraries_are_copied_where_the_loader_looks_and_removed_again(scattered, tmp_path):
@@ -125,8 +129,14 @@ def test_other_systems_hear_what_to_do_instead(computer, tmp_path, system):
         ({"dlls": ()}, "without its library for Excel: run python -m pip install --force-reinstall xlwings"),
         ({"base": Path("C:/Program Files/WindowsApps/Python")}, "Python of the Microsoft Store"),
         ({"interpreter": Path("/users/jürgen/python.exe")}, "letters outside ASCII"),
-        ({"interpreter": Path("/100%/python.exe")}, "make a virtual environment in a folder with a plain name"),
-        ({"import_fault": lambda _: "ImportError: DLL load failed"}, r"\(ImportError: DLL load failed\): run python"),
+        (
+            {"interpreter": Path("/100%/python.exe")},
+            "make a virtual environment in a folder with a plain name",
+        ),
+        (
+            {"import_fault": lambda _: "ImportError: DLL load failed"},
+            r"\(ImportError: DLL load failed\): run python",
+        ),
     ],
 )
 def test_what_is_missing_is_one_sentence_and_nothing_is_left(computer, tmp_path, change, message):

@@ -14,7 +14,9 @@ from steelyard.addin.excel.cfb import read_compound, write_compound
 from steelyard.addin.excel.xlam import VBA_PROJECT, _xlwings_file
 from steelyard.core.errors import SteelyardError
 
-TEXTS = st.lists(st.sampled_from([b"Function ", b"\r\n", b"x", b"    ", b"SY_POWER = ", b"End "]), max_size=2000)
+TEXTS = st.lists(
+    st.sampled_from([b"Function ", b"\r\n", b"x", b"    ", b"SY_POWER = ", b"End "]), max_size=2000
+)
 
 
 @pytest.fixture(scope="module")
@@ -66,7 +68,10 @@ def test_an_unknown_compression_is_refused():
 
 def test_modules_are_replaced_added_and_dropped(template):
     before = ovba.sources(template)
-    new = {"xlwings": 'Attribute VB_Name = "xlwings"\n', "extra": 'Attribute VB_Name = "extra"\nSub A()\nEnd Sub\n'}
+    new = {
+        "xlwings": 'Attribute VB_Name = "xlwings"\n',
+        "extra": 'Attribute VB_Name = "extra"\nSub A()\nEnd Sub\n',
+    }
     after = ovba.sources(ovba.rebuild(template, "Other", new, drop=("Module1",)))
     assert list(before) == ["ThisWorkbook", "Dictionary", "xlwings", "Sheet2", "Module1"]
     assert list(after) == ["ThisWorkbook", "Dictionary", "xlwings", "Sheet2", "extra"]
@@ -102,7 +107,9 @@ def test_the_project_text_names_every_module(template):
 
 def test_another_reader_finds_the_same_modules(template):
     project = ovba.rebuild(template, "Other", {"extra": "Sub A()\nEnd Sub\n"}, drop=("Module1",))
-    found = {name.rpartition(".")[0]: code for _, _, name, code in VBA_Parser("x", data=project).extract_macros()}
+    found = {
+        name.rpartition(".")[0]: code for _, _, name, code in VBA_Parser("x", data=project).extract_macros()
+    }
     assert found == ovba.sources(project)
 
 

@@ -33,7 +33,9 @@ def session() -> dict[str, Any]:
     """What xlwings' Windows side makes of the module: answers, VBA text, what it knows of each function."""
     lines = [json.dumps([name, list(map(as_com, arguments))]) for name, arguments in CALLS["calls"]()]
     command = [sys.executable, "-W", "error", HERE / "stub_com.py"]
-    result = subprocess.run(command, input="\n".join(lines), capture_output=True, text=True, timeout=120, check=False)
+    result = subprocess.run(
+        command, input="\n".join(lines), capture_output=True, text=True, timeout=120, check=False
+    )
     assert result.returncode == 0, result.stderr
     return json.loads(result.stdout)
 
@@ -51,9 +53,7 @@ def test_every_call_gives_the_catalogues_answer(session):
 
 
 def test_every_example_gives_an_answer():
-    refused = {
-        entry.name: entry.function(*CALLS["plain_arguments"](entry)) for entry in CATALOGUE.values()
-    }
+    refused = {entry.name: entry.function(*CALLS["plain_arguments"](entry)) for entry in CATALOGUE.values()}
     assert {name: answer for name, answer in refused.items() if str(answer).startswith("SY: ")} == {}
 
 
@@ -104,7 +104,13 @@ def test_cells_of_excel(cells, value):
 
 @pytest.mark.parametrize(
     ("answer", "cells"),
-    [(7, 7.0), (2**40, float(2**40)), ("ok", "ok"), (None, None), ([[1, None], ["a", 0.5]], [[1.0, None], ["a", 0.5]])],
+    [
+        (7, 7.0),
+        (2**40, float(2**40)),
+        ("ok", "ok"),
+        (None, None),
+        ([[1, None], ["a", 0.5]], [[1.0, None], ["a", 0.5]]),
+    ],
 )
 def test_answers_for_excel(answer, cells):
     found = udfs.to_excel(answer)

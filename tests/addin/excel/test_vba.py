@@ -33,9 +33,9 @@ def head(name: str, arguments: str) -> str:
         (head("SY_A", "failed"), "SY_A: argument failed hides a name of the module"),
         (head("SY_A", "plan") + head("SY_B", "sy_a"), "SY_B: argument sy_a hides a name of the module"),
         (head("SY_A", "plan") + head("sy_a", "rate"), "two procedures have the same name: SY_A, sy_a"),
-        (head("A1", "plan"), "A1: A1 is also the name of a cell"),
-        (head("AQL10", "plan"), "AQL10: AQL10 is also the name of a cell"),
-        (head("R1C1", "plan"), "R1C1: R1C1 is also the name of a cell"),
+        (head("A1", "plan"), "A1 is also the name of a cell"),
+        (head("AQL10", "plan"), "AQL10 is also the name of a cell"),
+        (head("R1C1", "plan"), "R1C1 is also the name of a cell"),
         (head("Loop", "plan"), "Loop: Loop is a reserved word of VBA"),
         ("Function SY_A(plan)\n", "a procedure has no end"),
         (head("SY_A", "plan") + f"'{'x' * 1023}\n", "line 3 has 1024 characters, the most is 1023"),
@@ -47,7 +47,14 @@ def test_lint_finds(source, fault):
 
 def test_lint_lets_good_names_pass():
     arguments = "plan, rate, Optional second, Optional end_, Optional n1"
-    assert list(lint(head("SY_POWER", arguments) + head("SY_RATE_FOR", "") + head("Given", "Optional x As Variant"))) == []
+    assert (
+        list(
+            lint(
+                head("SY_POWER", arguments) + head("SY_RATE_FOR", "") + head("Given", "Optional x As Variant")
+            )
+        )
+        == []
+    )
 
 
 def entry(help: str, argument_help: str) -> Entry:
@@ -80,7 +87,9 @@ def test_a_wrapper_has_the_entrys_arguments_and_hands_all_of_them_on(each):
     names = [vba_name(argument.name) for argument in each.arguments]
     declared = LINES[start].partition("(")[2].rstrip(")").split(", ")
     assert [part.removeprefix("Optional ") for part in declared if part] == names
-    assert [part.startswith("Optional ") for part in declared if part] == [not a.required for a in each.arguments]
+    assert [part.startswith("Optional ") for part in declared if part] == [
+        not a.required for a in each.arguments
+    ]
     given = ", ".join(f"SYCells({name})" for name in names)
     assert LINES[start + 4] == (
         f'    {each.name} = XLPy.CallUDF("steelyard.addin.excel.udfs", "{each.name}", Array({given}))'

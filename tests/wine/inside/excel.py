@@ -7,6 +7,7 @@ import ctypes
 import json
 import sys
 import time
+from pathlib import Path
 
 import pythoncom
 import win32com.client
@@ -46,7 +47,11 @@ class Library:
 def argument(value):
     """Return a value of the job as VBA hands it over."""
     if isinstance(value, dict):
-        return EMPTY_ARGUMENT if "missing" in value else win32com.client.VARIANT(pythoncom.VT_ERROR, value["error"])
+        return (
+            EMPTY_ARGUMENT
+            if "missing" in value
+            else win32com.client.VARIANT(pythoncom.VT_ERROR, value["error"])
+        )
     return tuple(map(tuple, value)) if isinstance(value, list) else value
 
 
@@ -89,5 +94,4 @@ def main(job) -> None:
     print(json.dumps(answers))
 
 
-with open(sys.argv[1], encoding="utf-8") as file:
-    main(json.load(file))
+main(json.loads(Path(sys.argv[1]).read_text(encoding="utf-8")))

@@ -4,8 +4,9 @@ import io
 import json
 import types
 
-from steelyard.addin.excel import udfs
 from xlwings.udfs import generate_vba_wrapper
+
+from steelyard.addin.excel import udfs
 
 out = io.StringIO()
 generate_vba_wrapper(udfs.__name__, udfs, out, types.SimpleNamespace(Name="steelyard.xlam"))
