@@ -42,6 +42,7 @@ _FAR_POISSON = 1e-16  # below: gammainc and gammaincc pass 1e-12 at large means
 _LEVELS = 16  # of the continued fraction; full precision from eight standard deviations outwards
 _CHUNK = 4096  # elements of the far tail at a time, so that they stay in the cache
 _TINY = 1e-300
+_ENDLESS = np.array(np.inf)
 
 Kernel = Callable[..., Floats]
 
@@ -82,7 +83,7 @@ def poisson_at_most(x: ArrayLike, mean: ArrayLike) -> Floats:
     0.061968804417
     """
     x, mean = floats(x, mean)
-    return _inside(_poisson_lower, x, 0.0, np.inf, (0.0, 1.0), mean)
+    return _inside(_poisson_lower, x, 0.0, _ENDLESS, (0.0, 1.0), mean)
 
 
 def poisson_at_least(x: ArrayLike, mean: ArrayLike) -> Floats:
@@ -95,11 +96,11 @@ def poisson_at_least(x: ArrayLike, mean: ArrayLike) -> Floats:
     0.042620923583
     """
     x, mean = floats(x, mean)
-    return _inside(_poisson_upper, x, 1.0, np.inf, (1.0, 0.0), mean)
+    return _inside(_poisson_upper, x, 1.0, _ENDLESS, (1.0, 0.0), mean)
 
 
 def _inside(
-    kernel: Kernel, x: Floats, low: float, high: ArrayLike, ends: tuple[float, float], *rest: Floats
+    kernel: Kernel, x: Floats, low: float, high: Floats, ends: tuple[float, float], *rest: Floats
 ) -> Floats:
     """Apply the kernel where ``low <= x <= high``; `ends` are the values below and above."""
     below, above = x < low, x > high

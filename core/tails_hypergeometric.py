@@ -43,13 +43,14 @@ def hypergeometric_at_least(x: ArrayLike, lot: ArrayLike, defectives: ArrayLike,
 def _by_chunks(x: ArrayLike, lot: ArrayLike, defectives: ArrayLike, n: ArrayLike, *, upper: bool) -> Floats:
     columns = np.broadcast_arrays(*floats(x, lot, defectives, n))
     shape = columns[0].shape
-    x, lot, defectives, n = (column.ravel() for column in columns)
-    if upper:  # as many good items at most
-        x, defectives = n - x, lot - defectives
-    value = np.empty(x.size)
-    for start in range(0, x.size, _CHUNK):
+    count, size, marked, sample = (column.ravel() for column in columns)
+    if upper:  # at least x defectives are at most n - x good items
+        count, marked = sample - count, size - marked
+    slack = -1.0 if upper else 1.0
+    value = np.empty(count.size)
+    for start in range(0, count.size, _CHUNK):
         chunk = slice(start, start + _CHUNK)
-        value[chunk] = _at_most(x[chunk], lot[chunk], defectives[chunk], n[chunk], -1.0 if upper else 1.0)
+        value[chunk] = _at_most(count[chunk], size[chunk], marked[chunk], sample[chunk], slack)
     return value.reshape(shape)[()]
 
 
