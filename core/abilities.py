@@ -2,13 +2,11 @@
 
 from __future__ import annotations
 
-from typing import Any, Protocol, TypeVar, runtime_checkable
+from typing import Any, Protocol, runtime_checkable
 
 from steelyard.core.errors import NoAnswer
 from steelyard.core.kind import Kind
 from steelyard.core.plan import Claim, Plan
-
-Ability = TypeVar("Ability")
 
 
 @runtime_checkable
@@ -44,15 +42,26 @@ class Judging(Deciding, Protocol):
         """Return the confidence limit ``"lower"`` or ``"upper"`` at confidence 1 - miss."""
 
 
-def able(kind: Kind, ability: type[Ability], what: str) -> Ability:
-    """Return the kind as one that has an ability.
-
-    Raises
-    ------
-    NoAnswer
-        Naming `what` it lacks, e.g. ``"p-value"``.
-    """
-    if isinstance(kind, ability):
+def rule_making(kind: Kind) -> RuleMaking:
+    """Return the kind as one whose rules follow from a claim and alpha; raise `NoAnswer` if they do not."""
+    if isinstance(kind, RuleMaking):
         return kind
-    message = f"a plan of kind {kind.grammar.kind} has no {what}"
-    raise NoAnswer(message)
+    raise _lacking(kind, "rule that follows from alpha alone")
+
+
+def deciding(kind: Kind) -> Deciding:
+    """Return the kind as one that decides on a result; raise `NoAnswer` if it does not."""
+    if isinstance(kind, Deciding):
+        return kind
+    raise _lacking(kind, "decision on an observed result")
+
+
+def judging(kind: Kind, what: str) -> Judging:
+    """Return the kind as one that weighs results; raise `NoAnswer`, naming `what` it lacks, if it does not."""
+    if isinstance(kind, Judging):
+        return kind
+    raise _lacking(kind, what)
+
+
+def _lacking(kind: Kind, what: str) -> NoAnswer:
+    return NoAnswer(f"a plan of kind {kind.grammar.kind} has no {what}")

@@ -11,7 +11,7 @@ import math
 from functools import lru_cache
 from typing import Any
 
-from steelyard.core.abilities import Deciding, Judging, able
+from steelyard.core.abilities import Judging, deciding, judging
 from steelyard.core.errors import InvalidValue, NoAnswer
 from steelyard.core.kind import claim_of, kind_of
 from steelyard.core.numbers import read_choice, read_probability, typed
@@ -59,7 +59,7 @@ def decide(plan: Plan, observed: Any) -> str:
     >>> decide(plan, 3), decide(plan, 4)
     ('not rejected: pass', 'claim rejected: fail')
     """
-    kind = able(kind_of(plan), Deciding, "decision on an observed result")
+    kind = deciding(kind_of(plan))
     outcome = kind.outcome(plan, kind.read_observed(observed, plan))
     if isinstance(outcome, str):
         return outcome
@@ -112,7 +112,7 @@ def limit(plan: Plan, observed: Any, end: Any, confidence: Any = None) -> float:
 
 def _judging(plan: Plan, what: str) -> Judging:
     """Return the plan's kind if it can weigh results, and the plan's rule is one that evidence can be for."""
-    kind = able(kind_of(plan), Judging, what)
+    kind = judging(kind_of(plan), what)
     if claim_of(plan).side == "either" and not _follows_split(plan):
         message = f"no {what}: the rule is not the region that split {plan.split} gives; see SY_CHECK"
         raise NoAnswer(message)
@@ -121,7 +121,7 @@ def _judging(plan: Plan, what: str) -> Judging:
 
 @lru_cache(maxsize=1024)
 def _follows_split(plan: Plan) -> bool:
-    return able(kind_of(plan), Judging, "p-value").follows_split(plan)
+    return judging(kind_of(plan), "p-value").follows_split(plan)
 
 
 def _agreeing(p: float, alpha: float | None, rejected: bool) -> float:

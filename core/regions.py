@@ -13,7 +13,7 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core.abilities import RuleMaking, able
+from steelyard.core.abilities import rule_making
 from steelyard.core.kind import KINDS, Kind, kind_of
 from steelyard.core.law import CountLaw
 from steelyard.core.numbers import read_choice, read_probability
@@ -116,9 +116,7 @@ def critical_region(kind: Kind, design: Any, claim: Claim, alpha: float, split: 
         When rules of this kind do not follow from alpha.
     """
     kind.check_claim(claim, design)
-    return able(kind, RuleMaking, "rule that follows from alpha alone").critical_rule(
-        design, claim, alpha, split
-    )
+    return rule_making(kind).critical_rule(design, claim, alpha, split)
 
 
 def empty_tails(plan: Plan) -> list[EmptyTail]:
@@ -135,7 +133,7 @@ def empty_tails(plan: Plan) -> list[EmptyTail]:
     law = getattr(kind, "law", None)
     if not isinstance(law, CountLaw) or claim is None or plan.alpha is None or claim.side != "either":
         return []
-    row = kind.row(plan.design)
+    row = design_row(kind, plan.design)
     missing = [end for end in ENDS["either"] if getattr(rule, end) is None]
     found = [(end, least_amount(law, row, claim.value, plan.alpha, end, plan.split)) for end in missing]
     return [
@@ -143,6 +141,11 @@ def empty_tails(plan: Plan) -> list[EmptyTail]:
         for end, least in found
         if math.isfinite(least) and least > row[law.amount]
     ]
+
+
+def design_row(kind: Kind, design: Any) -> Columns:
+    """Return the fields of one design by name, as a law takes them."""
+    return {field.attribute: np.asarray(getattr(design, field.attribute)) for field in kind.grammar.fields}
 
 
 def least_amount(law: CountLaw, row: Columns, rate: float, alpha: float, end: str, split: str) -> float:

@@ -68,8 +68,11 @@ def critical_high(law: CountLaw, columns: Columns, rate: Any, alpha: float, spli
     def rejects(x: Floats) -> Truth:
         return within(law, columns, rate, tails_of(law, columns, rate, x, "high", split), alpha)
 
-    high = first_whole(rejects, np.zeros(()))
-    return np.where(high <= law.most(columns), high, np.nan)
+    most = law.most(columns)
+    # A share of alpha rejects no more than all of it, so the search starts where that ends.
+    start = np.zeros(()) if split == ONE_SIDED else critical_high(law, columns, rate, alpha)
+    high = first_whole(rejects, np.where(np.isnan(start), most + 1, start))
+    return np.where(high <= most, high, np.nan)
 
 
 def critical_low(law: CountLaw, columns: Columns, rate: Any, alpha: float, split: str = ONE_SIDED) -> Floats:
@@ -85,10 +88,13 @@ def critical_low(law: CountLaw, columns: Columns, rate: Any, alpha: float, split
     """
     rate = np.asarray(rate, dtype=float)
 
-    def accepts(x: Floats) -> Truth:
-        return ~within(law, columns, rate, tails_of(law, columns, rate, x, "low", split), alpha)
+    def rejects(x: Floats) -> Truth:
+        return within(law, columns, rate, tails_of(law, columns, rate, x, "low", split), alpha)
 
-    low = first_whole(accepts, np.zeros(())) - 1
+    if split == ONE_SIDED:
+        low = first_whole(lambda x: ~rejects(x), np.zeros(())) - 1
+    else:
+        low = first_whole(rejects, np.nan_to_num(critical_low(law, columns, rate, alpha), nan=-1.0), -1.0)
     return np.where(low >= 0, low, np.nan)
 
 
@@ -176,11 +182,13 @@ def first_whole(predicate: Callable[[Floats], Truth], start: Floats, step: float
     step : {1.0, -1.0}
         The direction.
     """
-    ahead = np.array(np.broadcast_to(start, predicate(start).shape), dtype=float)
+    found = predicate(start)
+    ahead = np.array(np.broadcast_to(start, found.shape), dtype=float)
     behind, stride = ahead - step, step
-    while not (found := predicate(ahead)).all():
+    while not found.all():
         behind, stride = np.where(found, behind, ahead), 2 * stride
         ahead = np.where(found, ahead, ahead + stride)
+        found = predicate(ahead)
     while (np.abs(ahead - behind) > 1).any():
         middle = np.trunc((ahead + behind) / 2)
         true = predicate(middle)

@@ -15,7 +15,7 @@ from steelyard.core.numbers import read_number, write_number
 from steelyard.core.observed import read_count
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.plan import Claim, Plan, Reject
-from steelyard.core.regions import least_amount
+from steelyard.core.regions import design_row, least_amount
 from steelyard.core.splits import ENDS, ONE_SIDED
 
 
@@ -86,12 +86,6 @@ class ThresholdKind(Kind):
         if (side == "above" and rule.low is not None) or (side == "below" and rule.high is not None):
             raise InvalidValue("reject", f"not lie on the side where the claim {plan.claim} is true", text)
 
-    def row(self, design: Any) -> Columns:
-        """Return the fields of one design by name, as the law takes them."""
-        return {
-            field.attribute: np.asarray(getattr(design, field.attribute)) for field in self.grammar.fields
-        }
-
     def critical_rule(self, design: Any, claim: Claim, alpha: float, split: str) -> Reject:
         """Return the largest region that keeps alpha.
 
@@ -110,7 +104,7 @@ class ThresholdKind(Kind):
     def _critical_ends(
         self, design: Any, claim: Claim, alpha: float, split: str
     ) -> tuple[float | None, float | None]:
-        row, rate = self.row(design), np.asarray(claim.value)
+        row, rate = design_row(self, design), np.asarray(claim.value)
         split = split if claim.side == "either" else ONE_SIDED
         found = {end: float(self.law.critical(row, rate, alpha, end, split)) for end in ENDS[claim.side]}
         low, high = found.get("low", math.nan), found.get("high", math.nan)
@@ -131,17 +125,16 @@ class ThresholdKind(Kind):
         claim, rule = claim_of(plan), plan.rule
         if plan.alpha is None:
             return self.law.nested(
-                self.row(plan.design), np.asarray(claim.value), rule.low, rule.high, plan.split
+                design_row(self, plan.design), np.asarray(claim.value), rule.low, rule.high, plan.split
             )
         ends = self._critical_ends(plan.design, claim, plan.alpha, plan.split)
-        pairs = zip(ends, (rule.low, rule.high), strict=True)
-        return all(a == b or (None not in (a, b) and math.isclose(a, b, rel_tol=1e-12)) for a, b in pairs)
+        return all(_same(a, b) for a, b in zip(ends, (rule.low, rule.high), strict=True))
 
     def p_value(self, plan: Plan, observed: Any) -> float:
         """Return the p-value of the statistic."""
         claim = claim_of(plan)
         rate, x = np.asarray(claim.value), np.asarray(observed)
-        return float(self.law.p_value(self.row(plan.design), rate, x, claim.side, plan.split))
+        return float(self.law.p_value(design_row(self, plan.design), rate, x, claim.side, plan.split))
 
     @staticmethod
     def _possible(end: float | None, least: float, most: float) -> bool:
@@ -160,15 +153,22 @@ class CountKind(ThresholdKind):
     def limit(self, plan: Plan, observed: Any, end: str, miss: float) -> float:
         """Return an exact confidence limit of the rate."""
         split = plan.split if claim_of(plan).side == "either" else ONE_SIDED
-        return self.law.limit(self.row(plan.design), observed, end, miss, split)
+        return self.law.limit(design_row(self, plan.design), observed, end, miss, split)
 
     def refuse_empty(self, design: Any, claim: Claim, alpha: float, split: str) -> NoReturn:
         """Raise, naming the smallest amount at which some count can reject."""
-        law, row, ends = self.law, self.row(design), ENDS[claim.side]
+        law, row, ends = self.law, design_row(self, design), ENDS[claim.side]
         split = split if claim.side == "either" else ONE_SIDED
         least = min(least_amount(law, row, claim.value, alpha, end, split) for end in ends)
         rule = f"be at least {least:.0f} so that some count can reject {claim} at alpha {write_number(alpha)}"
         raise InvalidValue(law.amount, rule, float(row[law.amount]))
+
+
+def _same(one: float | None, other: float | None) -> bool:
+    """Compare two ends; the last digits of a measured one may differ between machines."""
+    if one is None or other is None:
+        return one is other
+    return math.isclose(one, other, rel_tol=1e-12)
 
 
 def read_reject(texts: dict[str, str], statistic: str, whole: bool) -> Reject:

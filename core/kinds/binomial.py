@@ -9,7 +9,7 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core import inverses, tails
+from steelyard.core import exact, inverses, tails
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
 from steelyard.core.law import ExactLaw, RateLaw, running_means
@@ -50,8 +50,6 @@ class BinomialLaw(RateLaw):
 
     def exact(self, row: Mapping[str, Any], rate: Fraction) -> ExactLaw:
         """Return the binomial law in rationals."""
-        from steelyard.core import exact
-
         return exact.BinomialExact(int(row["n"]), rate)
 
     def tail_rate(self, x: float, columns: Columns, end: str, prob: float) -> float:

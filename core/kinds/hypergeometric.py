@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core import limits, tails
+from steelyard.core import exact, limits, tails
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
 from steelyard.core.law import CountLaw, ExactLaw
@@ -112,8 +112,6 @@ class HypergeometricLaw(CountLaw):
 
     def exact(self, row: Mapping[str, Any], rate: Fraction) -> ExactLaw:
         """Return the hypergeometric law in rationals."""
-        from steelyard.core import exact
-
         return exact.HypergeometricExact(int(row["lot"]), int(rate), int(row["n"]))
 
     def limit(self, row: Mapping[str, Any], x: float, end: str, miss: float, split: str) -> float:

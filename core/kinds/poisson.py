@@ -10,7 +10,7 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core import inverses, tails
+from steelyard.core import exact, inverses, tails
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
 from steelyard.core.law import ExactLaw, UnboundedCountLaw, running_means
@@ -51,8 +51,6 @@ class PoissonLaw(UnboundedCountLaw):
 
     def exact(self, row: Mapping[str, Any], rate: Fraction) -> ExactLaw:
         """Return the Poisson law in enclosures."""
-        from steelyard.core import exact
-
         return exact.PoissonExact(typed(row["units"]) * rate)
 
     def tail_rate(self, x: float, columns: Columns, end: str, prob: float) -> float:
