@@ -38,6 +38,7 @@ Role = Literal["curve", "claim", "catch", "target", "points"]
 
 _DASHES = ("solid", "dash", "sysDot", "dashDot", "lgDash", "lgDashDotDot")
 _POINT = 12700  # EMU per point
+_LEGEND_ROW = 0.5  # cm for about two names
 _CELL = re.compile(r"(?:'(?:[^']|'')+'|\w+)!\$[A-Z]{1,3}\$\d+")
 
 
@@ -92,7 +93,7 @@ class Axis:
 
 
 def curve_chart(
-    title: str, x: Axis, y: Axis, curves: Sequence[Curve], width: float = 17.5, height: float = 9.5
+    title: str, x: Axis, y: Axis, curves: Sequence[Curve], width: float = 17.5, height: float = 8.5
 ) -> ScatterChart:
     """Return a chart of 1 to 12 curves and any number of marking lines.
 
@@ -105,11 +106,11 @@ def curve_chart(
     curves : sequence of Curve
         In the order of the legend.
     width, height : float
-        In centimetres; a portrait A4 page takes 18.
+        In centimetres, without what the legend adds to the height; a portrait A4 page takes 18.
     """
     chart = ScatterChart()
     chart.scatterStyle, chart.style, chart.roundedCorners = "lineMarker", None, False
-    chart.width, chart.height = width, height
+    chart.width, chart.height = width, height + _LEGEND_ROW * math.ceil(len(curves) / 2)
     chart.title = _title(title, 11, bold=True)
     chart.legend.position, chart.legend.overlay = "b", False
     chart.legend.txPr = _text(9)
@@ -215,7 +216,7 @@ def _letters(size: float, bold: bool = False) -> CharacterProperties:
 
 def _text(size: float) -> RichText:
     properties = ParagraphProperties(defRPr=_letters(size))
-    return RichText(p=[Paragraph(pPr=properties, endParaRPr=_letters(size))])
+    return RichText(p=[Paragraph(pPr=properties, r=[], endParaRPr=_letters(size))])
 
 
 def _title(text: str, size: float, bold: bool = False) -> Title:

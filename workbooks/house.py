@@ -25,8 +25,9 @@ from openpyxl.workbook.defined_name import DefinedName
 from steelyard.core.errors import InvalidValue
 from steelyard.workbooks import parts, styles
 from steelyard.workbooks.charts import Axis, Curve, curve_chart, fill_caches
+from steelyard.workbooks.checks import Check, between, choice
 from steelyard.workbooks.formulas import Host, check_name
-from steelyard.workbooks.pieces import Check, Live, LiveArray, Piece, Put, Value, between, choice
+from steelyard.workbooks.pieces import Live, LiveArray, Piece, Put, Value
 from steelyard.workbooks.sheet import Sheet
 
 __all__ = [

@@ -18,12 +18,14 @@ from pathlib import Path
 from typing import IO, Any
 
 from openpyxl import Workbook
+from openpyxl.drawing.spreadsheet_drawing import SpreadsheetDrawing
 from openpyxl.workbook.properties import CalcProperties
+from openpyxl.worksheet._writer import WorksheetWriter
 from openpyxl.writer.excel import ExcelWriter
 
 from steelyard.core.errors import SteelyardError
 from steelyard.workbooks.pieces import Value
-from steelyard.workbooks.sheetxml import describe, store_values
+from steelyard.workbooks.sheetxml import describe, fill_rows, rows_xml
 
 _OLDEST = datetime(1980, 1, 1)  # the first date that a zip can hold
 _ENGINE = 191029  # an older calculation engine makes Excel recalculate on opening
@@ -76,17 +78,49 @@ def save(
     """
     workbook.calculation = CalcProperties(calcId=_ENGINE, fullCalcOnLoad=recalculate)
     workbook.properties.created = workbook.properties.modified = build_date()
-    edits: dict[str, Callable[[bytes], bytes]] = {}
-    drawings = 0
-    for number, sheet in enumerate(workbook.worksheets, 1):
-        values = stored.get(sheet.title, {})
-        edits[f"xl/worksheets/sheet{number}.xml"] = partial(store_values, values=values)
-        if sheet._charts or sheet._images:
-            drawings += 1
-            texts = (descriptions or {}).get(sheet.title, ())
-            edits[f"xl/drawings/drawing{drawings}.xml"] = partial(describe, texts=texts)
-    with replacing(path) as file, _Archive(file, edits) as archive:
-        ExcelWriter(workbook, archive).write_data()
+    with replacing(path) as file, _Archive(file) as archive:
+        _BookWriter(workbook, archive, stored, descriptions or {}).write_data()
+
+
+class _BookWriter(ExcelWriter):  # type: ignore[misc]
+    """openpyxl's writer, but for the rows of sheets, which get their values, and the texts of charts."""
+
+    def __init__(
+        self,
+        workbook: Workbook,
+        archive: _Archive,
+        stored: Mapping[str, Mapping[str, Value]],
+        descriptions: Mapping[str, Sequence[str]],
+    ) -> None:
+        super().__init__(workbook, archive)
+        self._stored, self._descriptions = stored, descriptions
+
+    def write_worksheet(self, ws: Any) -> None:
+        ws._drawing = SpreadsheetDrawing()
+        ws._drawing.charts, ws._drawing.images = ws._charts, ws._images
+        writer = _SheetWriter(ws)
+        writer.stored = self._stored.get(ws.title, {})
+        writer.write()
+        ws._rels = writer._rels
+        frame = Path(writer.out).read_bytes()
+        writer.cleanup()
+        self._archive.writestr(ws.path[1:], fill_rows(frame, writer.rows_xml))
+        self.manifest.append(ws)
+        self._archive.edits[f"xl/drawings/drawing{len(self._drawings) + 1}.xml"] = partial(
+            describe, texts=self._descriptions.get(ws.title, ())
+        )
+
+
+class _SheetWriter(WorksheetWriter):  # type: ignore[misc]
+    """openpyxl's writer of all that surrounds the rows of a sheet."""
+
+    stored: Mapping[str, Value]
+    rows_xml = b""
+
+    def write_rows(self) -> None:
+        with self.xf.send(True).element("sheetData"):
+            self.rows_xml = rows_xml(self.ws, self.rows(), self.stored)
+        self.xf.send(None)
 
 
 @contextmanager
@@ -103,11 +137,9 @@ def replacing(path: Path) -> Iterator[IO[bytes]]:
         with temporary.open("wb") as file:
             yield file
         temporary.replace(path)
-    except PermissionError:
-        message = f"{path} can't be written (close it in the spreadsheet program, or choose another place)"
-        raise SteelyardError(message) from None
-    except FileNotFoundError:
-        message = f"{path} can't be written: there is no folder {path.parent}"
+    except OSError as error:
+        hint = " (is it open in a spreadsheet program?)" if isinstance(error, PermissionError) else ""
+        message = f"{path} can't be written: {error.strerror}{hint}"
         raise SteelyardError(message) from None
     finally:
         temporary.unlink(missing_ok=True)
@@ -115,7 +147,7 @@ def replacing(path: Path) -> Iterator[IO[bytes]]:
 
 def write_parts(path: Path, parts: Mapping[str, bytes]) -> None:
     """Write parts as a zip, in the mapping's order, with fixed dates and attributes."""
-    with replacing(path) as file, _Archive(file, {}) as archive:
+    with replacing(path) as file, _Archive(file) as archive:
         for name, data in parts.items():
             archive.writestr(name, data)
 
@@ -123,18 +155,15 @@ def write_parts(path: Path, parts: Mapping[str, bytes]) -> None:
 class _Archive(zipfile.ZipFile):
     """A zip with fixed dates and attributes that edits parts while they are written."""
 
-    def __init__(self, file: IO[bytes], edits: Mapping[str, Callable[[bytes], bytes]]) -> None:
+    def __init__(self, file: IO[bytes]) -> None:
         super().__init__(file, "w", zipfile.ZIP_DEFLATED)
-        self._edits = edits
+        self.edits: dict[str, Callable[[bytes], bytes]] = {}
 
     def writestr(self, zinfo_or_arcname: Any, data: Any, *_: Any, **__: Any) -> None:
         entry = zipfile.ZipInfo(zinfo_or_arcname, _OLDEST.timetuple()[:6])
         entry.compress_type, entry.create_system, entry.external_attr = zipfile.ZIP_DEFLATED, 3, 0o644 << 16
         content = data.encode() if isinstance(data, str) else data
-        super().writestr(entry, self._edits.get(entry.filename, bytes)(content))
-
-    def write(self, filename: Any, arcname: Any = None, *_: Any, **__: Any) -> None:
-        self.writestr(arcname, Path(filename).read_bytes())
+        super().writestr(entry, self.edits.get(entry.filename, bytes)(content))
 
 
 # Reading

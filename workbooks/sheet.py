@@ -11,16 +11,16 @@ from openpyxl.formatting.rule import ColorScaleRule, FormulaRule
 from openpyxl.styles import Font, PatternFill
 from openpyxl.utils import column_index_from_string, get_column_letter, quote_sheetname
 from openpyxl.utils.cell import coordinate_from_string
-from openpyxl.worksheet.datavalidation import DataValidation
 from openpyxl.worksheet.formula import ArrayFormula
 from openpyxl.worksheet.hyperlink import Hyperlink
 from openpyxl.worksheet.table import Table
 
 from steelyard.core.errors import InvalidValue
 from steelyard.workbooks import styles
+from steelyard.workbooks.checks import Check, joined, validation
 from steelyard.workbooks.formulas import check_name, spell
 from steelyard.workbooks.measure import Fit
-from steelyard.workbooks.pieces import Check, Live, LiveArray, Piece, Put, Value
+from steelyard.workbooks.pieces import Live, LiveArray, Piece, Put, Value
 
 if TYPE_CHECKING:
     from openpyxl.chart._chart import ChartBase
@@ -53,7 +53,8 @@ class Sheet:
         self.stored: dict[str, Value] = {}
         self.descriptions: list[str] = []
         self._fit = Fit(widths)
-        self._checks: dict[Check, DataValidation] = {}
+        self._checks: dict[Check, list[str]] = {}
+        self._checked: dict[Check, list[tuple[int, int]]] = {}
 
     def add(self, *pieces: Piece, column: str = "A", height: float | None = None) -> int:
         """Write the next row, and return its number.
@@ -147,7 +148,7 @@ class Sheet:
 
     def check(self, area: str, check: Check) -> None:
         """Let a whole area take only what a check allows."""
-        self._validation(check).add(area)
+        self._checks.setdefault(check, []).append(area)
 
     def freeze(self, cell: str) -> None:
         """Keep the rows above and the columns left of a cell in sight."""
@@ -208,13 +209,18 @@ class Sheet:
             part.text, part.font, part.size = text, f"{styles.FONT},Regular", 8
 
     def finish(self) -> None:
-        """Settle widths and heights; called by `Book.save`."""
+        """Settle widths, heights and checks; called by `Book.save`."""
         self._fit.settle(self.raw)
+        for check, cells in self._checked.items():
+            self._checks.setdefault(check, []).extend(joined(cells))
+        for check, areas in self._checks.items():
+            self.raw.add_data_validation(validation(check, areas))
+        self._checks, self._checked = {}, {}
 
     def _put(self, row: int, column: int, piece: Put) -> int:
         cell = self._cell(row, column, piece.value, piece.style, piece.span)
         if piece.check is not None:
-            self._validation(piece.check).add(cell.coordinate)
+            self._checked.setdefault(piece.check, []).append((column, row))
         if piece.link:
             cell.hyperlink = Hyperlink(ref=cell.coordinate, location=piece.link)
         return column + piece.span
@@ -242,40 +248,16 @@ class Sheet:
         cell._style = copy(self.book.style_array(style))
         if isinstance(value, str):
             cell.data_type = "s"  # a text that looks like a formula or an error stays a text
-        elif isinstance(value, float):
-            self._keep(cell.coordinate, value)
+        elif isinstance(value, bool) or (isinstance(value, float) and not math.isfinite(value)):
+            place = f"{self.title}!{cell.coordinate}"
+            raise InvalidValue(place, "be a text or a finite number", value)
         self._fit.see(row, column, value, style, span)
         if span > 1:
             self._merge(row, column, span)
         return cell
-
-    def _keep(self, ref: str, value: float) -> None:
-        if not math.isfinite(value):
-            place = f"{self.title}!{ref}"
-            raise InvalidValue(place, "be a finite number", value)
-        if float(f"{value:.16g}") != value:  # openpyxl writes 16 digits
-            self.stored[ref] = value
 
     def _merge(self, row: int, column: int, span: int) -> None:
         last = column + span - 1
         for covered in range(column + 1, last + 1):
             self.raw.cell(row, covered)._style = copy(self.raw.cell(row, column)._style)
         self.raw.merge_cells(start_row=row, end_row=row, start_column=column, end_column=last)
-
-    def _validation(self, check: Check) -> DataValidation:
-        if check not in self._checks:
-            self._checks[check] = validation = DataValidation(
-                type=check.kind,
-                operator=None if check.kind == "list" else "between",
-                formula1=check.first,
-                formula2=check.second or None,
-                allow_blank=check.blank,
-                showErrorMessage=True,
-                errorTitle="Not possible here",
-                error=check.message,
-                showInputMessage=bool(check.prompt),
-                promptTitle=check.title or None,
-                prompt=check.prompt or None,
-            )
-            self.raw.add_data_validation(validation)
-        return self._checks[check]
