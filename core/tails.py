@@ -38,6 +38,7 @@ __all__ = [
 ]
 
 _FAR_BINOMIAL = 1e-200  # below: betainc loses digits and can return 0
+_LARGE_SAMPLE = 10_000  # above: betainc loses up to 4e-12 at ppm rates where it gives 0.5 to 0.95
 _FAR_POISSON = 1e-16  # below: gammainc and gammaincc pass 1e-12 at large means
 _LEVELS = 16  # of the continued fraction; full precision from eight standard deviations outwards
 _CHUNK = 4096  # elements of the far tail at a time, so that they stay in the cache
@@ -117,7 +118,11 @@ def _any(mask: NDArray[np.bool_]) -> bool:
 
 def _binomial_upper(x: Floats, n: Floats, p: Floats) -> Floats:
     value = special.betainc(x, n - x + 1.0, p)
-    return _mend(value, _FAR_BINOMIAL, _binomial_far, x, n, p)
+    large = n > _LARGE_SAMPLE
+    if _any(large):
+        body = large & (value > 0.5) & (value < 0.999)
+        value = _mend(value, body, lambda x, n, p: 1.0 - _binomial_lower(x - 1.0, n, p), x, n, p)
+    return _mend(value, value < _FAR_BINOMIAL, _binomial_far, x, n, p)
 
 
 def _binomial_lower(x: Floats, n: Floats, p: Floats) -> Floats:
@@ -128,38 +133,54 @@ def _binomial_lower(x: Floats, n: Floats, p: Floats) -> Floats:
         log_p, log_q = np.log(np.maximum(p, _TINY)), np.log(np.maximum(q, _TINY))
         density = np.exp(x * log_p + (n - x - 1.0) * log_q - special.betaln(n - x, x + 1.0))
         value = np.minimum(value + rounding * density, 1.0)
-    return _mend(value, _FAR_BINOMIAL, _binomial_far_lower, x, n, p)
+    return _mend(value, value < _FAR_BINOMIAL, _binomial_far_lower, x, n, p)
 
 
 def _poisson_upper(x: Floats, mean: Floats) -> Floats:
-    return _mend(special.gammainc(x, mean), _FAR_POISSON, _poisson_far, x, mean)
+    value = special.gammainc(x, mean)
+    return _mend(value, value < _FAR_POISSON, _poisson_far, x, mean)
 
 
 def _poisson_lower(x: Floats, mean: Floats) -> Floats:
-    return _mend(special.gammaincc(x + 1.0, mean), _FAR_POISSON, _poisson_far_lower, x, mean)
+    value = special.gammaincc(x + 1.0, mean)
+    return _mend(value, value < _FAR_POISSON, _poisson_far_lower, x, mean)
 
 
-def _mend(value: Floats, limit: float, far: Kernel, *arguments: Floats) -> Floats:
-    """Replace the values below the limit by the far-tail form of the same tail."""
-    low = value < limit
-    if not _any(low):
+def _mend(value: Floats, wrong: NDArray[np.bool_], form: Kernel, *arguments: Floats) -> Floats:
+    """Replace the values that may be wrong by another form of the same tail."""
+    if not _any(wrong):
         return value
-    value, low = np.array(value), np.asarray(low)
-    columns = [np.broadcast_to(argument, value.shape)[low] for argument in arguments]
+    value, wrong = np.array(value), np.asarray(wrong)
+    columns = [np.broadcast_to(argument, value.shape)[wrong] for argument in arguments]
     mended = np.empty(columns[0].size)
     for start in range(0, mended.size, _CHUNK):
         chunk = slice(start, start + _CHUNK)
-        mended[chunk] = far(*(column[chunk] for column in columns))
-    value[low] = mended
+        mended[chunk] = form(*(column[chunk] for column in columns))
+    value[wrong] = mended
     return value[()]
 
 
 def _binomial_far(x: Floats, n: Floats, p: Floats) -> Floats:
-    return binomial_pmf(x, n, p) * _binomial_ratio_sum(x, n, p / (1.0 - p))
+    return _extend(binomial_pmf(x, n, p), _binomial_ratio_sum, x, n, p / (1.0 - p))
 
 
 def _binomial_far_lower(x: Floats, n: Floats, p: Floats) -> Floats:
-    return binomial_pmf(x, n, p) * _binomial_ratio_sum(n - x, n, (1.0 - p) / p)
+    return _extend(binomial_pmf(x, n, p), _binomial_ratio_sum, n - x, n, (1.0 - p) / p)
+
+
+def _poisson_far(x: Floats, mean: Floats) -> Floats:
+    return _extend(poisson_pmf(x, mean), _poisson_ratio_sum, x, mean)
+
+
+def _poisson_far_lower(x: Floats, mean: Floats) -> Floats:
+    return _extend(poisson_pmf(x, mean), _poisson_ratio_sum_lower, x, mean)
+
+
+def _extend(point: Floats, ratio_sum: Kernel, *arguments: Floats) -> Floats:
+    """Return P(X = x) times the tail's sum of term ratios, computed only where that product is not zero."""
+    seen = point > 0.0
+    point[seen] *= ratio_sum(*(argument[seen] for argument in arguments))
+    return point
 
 
 def _binomial_ratio_sum(x: Floats, n: Floats, odds: Floats) -> Floats:
@@ -169,15 +190,15 @@ def _binomial_ratio_sum(x: Floats, n: Floats, odds: Floats) -> Floats:
     )
 
 
-def _poisson_far(x: Floats, mean: Floats) -> Floats:
-    return poisson_pmf(x, mean) * _fraction(
+def _poisson_ratio_sum(x: Floats, mean: Floats) -> Floats:
+    return _fraction(
         lambda m: mean * (x + m) / ((x + 2 * m) * (x + 2 * m + 1)),
         lambda m: mean * m / ((x + 2 * m - 1) * (x + 2 * m)),
     )
 
 
-def _poisson_far_lower(x: Floats, mean: Floats) -> Floats:
-    return poisson_pmf(x, mean) * _fraction(lambda m: (x - m) / mean, lambda m: m / mean)
+def _poisson_ratio_sum_lower(x: Floats, mean: Floats) -> Floats:
+    return _fraction(lambda m: (x - m) / mean, lambda m: m / mean)
 
 
 def _fraction(odd: Callable[[int], Floats], even: Callable[[int], Floats]) -> Floats:

@@ -80,7 +80,7 @@ def _ratio_sum(x: Floats, lot: Floats, marked: Floats, n: Floats) -> Floats:
     down = (marked - x + 1.0, n - x + 1.0)
     total, term, live, start = np.ones(x.size), np.ones(x.size), np.arange(x.size), 0
     while live.size:
-        step = np.arange(start, start + max(8, _BLOCK // live.size))[:, np.newaxis]
+        step = np.arange(start, start + max(4, _BLOCK // live.size))[:, np.newaxis]
         ratios = (up[0] - step) * (up[1] - step) / ((down[0] + step) * (down[1] + step))
         ratios[0] *= term
         terms = np.cumprod(ratios, axis=0)
