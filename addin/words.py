@@ -50,34 +50,60 @@ def plan_texts(value: Any, name: str) -> tuple[Plan, ...]:
     return plans
 
 
-Plans = Annotated[Plan, Word("Plan text, such as binomial | n 50 | claim p<=0.02 | reject x>=4, or a range.", plan_of)]
+Plans = Annotated[
+    Plan, Word("Plan text, such as binomial | n 50 | claim p<=0.02 | reject x>=4, or a range.", plan_of)
+]
 PlanRange = Annotated[tuple[Plan, ...], Word("A range of plan texts.", plan_texts, whole=True)]
 Rates = Annotated[
     Any,
-    Word("The true value: a defect rate (2% or 0.02), defects per unit, or defectives in the lot; or a range.", as_typed),
+    Word(
+        "The true value: a defect rate (2% or 0.02), defects per unit, or defectives in the lot; or a range.",
+        as_typed,
+    ),
 ]
-Second = Annotated[Any, Word("Second parameter, where the kind has one: the other sample's rate, or sigma.", as_typed)]
-Count = Annotated[int, Word("Items to inspect: a whole number.", lambda v, name: read_whole(as_typed(v, name), name, 1))]
+Second = Annotated[
+    Any, Word("Second parameter, where the kind has one: the other sample's rate, or sigma.", as_typed)
+]
+Count = Annotated[
+    int, Word("Items to inspect: a whole number.", lambda v, name: read_whole(as_typed(v, name), name, 1))
+]
 Units = Annotated[float, Word("Units to inspect: any number above 0, such as metres or hours.", number)]
-Lot = Annotated[int, Word("Items in the lot: a whole number.", lambda v, name: read_whole(as_typed(v, name), name, 2))]
+Lot = Annotated[
+    int, Word("Items in the lot: a whole number.", lambda v, name: read_whole(as_typed(v, name), name, 2))
+]
 ClaimText = Annotated[Any, Word("What is claimed: a rate such as 2%, or p<=2%, p>=5%, p=50%.", as_typed)]
 Level = Annotated[
-    float, Word("Nominal significance level alpha, between 0 and 1.", lambda v, n: read_probability(as_typed(v, n), n))
+    float,
+    Word(
+        "Nominal significance level alpha, between 0 and 1.", lambda v, n: read_probability(as_typed(v, n), n)
+    ),
 ]
 Target = Annotated[
-    float, Word("Wanted power at the rate to catch, between 0 and 1.", lambda v, n: read_probability(as_typed(v, n), n))
+    float,
+    Word(
+        "Wanted power at the rate to catch, between 0 and 1.",
+        lambda v, n: read_probability(as_typed(v, n), n),
+    ),
 ]
 Confidence = Annotated[
     float, Word("Confidence level, between 0 and 1.", lambda v, n: read_probability(as_typed(v, n), n))
 ]
 Side = Annotated[
-    str, Word("Where the true rate lies when the claim is false: above, below or either.", one_of(tuple(SIDES.values())))
+    str,
+    Word(
+        "Where the true rate lies when the claim is false: above, below or either.",
+        one_of(tuple(SIDES.values())),
+    ),
 ]
 Split = Annotated[str, Word("How a two-sided test shares alpha: half, nearest or rarest.", one_of(SPLITS))]
 Verdict = Annotated[str, Word("What rejecting the claim means for the lot: fail or pass.", one_of(VERDICTS))]
 End = Annotated[str, Word("Which end: lower or upper.", one_of(ENDS))]
 Order = Annotated[
-    str, Word("first: least size that reaches the power; lasting: size from which it never falls short.", one_of(ORDERS))
+    str,
+    Word(
+        "first: least size that reaches the power; lasting: size from which it never falls short.",
+        one_of(ORDERS),
+    ),
 ]
 Observed = Annotated[Any, Word("What the sample showed: the count found, or a range.", as_typed)]
 KindName = Annotated[str, Word("Kind of plan: binomial, poisson, hypergeometric, …", text)]
@@ -87,4 +113,7 @@ Size = Annotated[float, Word("How much is inspected: items, or units for defects
 Extra = Annotated[Any, Word("The lot's size, or the known sigma, where the kind needs one.", as_typed)]
 RejectFrom = Annotated[float, Word("Reject the claim from this count (or measure) upwards.", number)]
 RejectTo = Annotated[float, Word("Reject the claim up to this count (or measure).", number)]
-ToCatch = Annotated[Any, Word('The rate that must be caught, such as 5%; for either side also "1% and 5%".', as_typed)]
+ToCatch = Annotated[
+    Any, Word('The rate that must be caught, such as 5%; for either side also "1% and 5%".', as_typed)
+]
+FieldName = Annotated[str, Word("Word that starts the field, such as n, units, lot, claim or alpha.", text)]

@@ -39,6 +39,7 @@ class Look:
     edge: str = LINE
     wrap: bool = False
     across: str = "general"
+    upright: str = "top"
     locked: bool = True
     spill: bool = False
 
@@ -56,14 +57,18 @@ LOOKS = {
     "title": Look(RIVER, 16, bold=True, spill=True),
     "subtitle": Look(SLATE, 11, spill=True),
     "section": Look(RIVER, 12, bold=True, spill=True),
-    "heading": Look(bold=True, fill=MIST, border="bottom", edge=RIVER, wrap=True, across="center"),
+    "heading": Look(
+        bold=True, fill=MIST, border="bottom", edge=RIVER, wrap=True, across="center", upright="center"
+    ),
     "label": Look(bold=True, across="left"),
     "text": Look(wrap=True, across="left"),
     "cell": Look(border="hair", wrap=True, across="left"),
     "unit": Look(SLATE, across="left"),
     "input": Look(fill=WHEAT, border="box", locked=False),
+    "tick": Look(fill=WHEAT, border="box", across="center", upright="center", locked=False),
     "edit": Look(fill=WHEAT, border="box", wrap=True, across="left", locked=False),
-    "writing": Look(border="bottom", edge=SLATE, wrap=True, across="left", locked=False),
+    "entry": Look(border="hair", wrap=True, across="left", locked=False),
+    "writing": Look(border="bottom", edge=SLATE, wrap=True, across="left", upright="bottom", locked=False),
     "index": Look(SLATE, border="hair", across="center"),
     "result": Look(border="hair"),
     "verdict": Look(bold=True, border="hair", across="center"),
@@ -136,11 +141,7 @@ def named_style(words: str) -> NamedStyle:
         name=name,
         font=Font(name=FONT, size=look.size, bold=look.bold, italic=look.italic, color=look.colour),
         border=_border(look.border, look.edge),
-        alignment=Alignment(
-            horizontal=look.across,
-            vertical="center" if look.across == "center" else "top",
-            wrap_text=look.wrap,
-        ),
+        alignment=Alignment(horizontal=look.across, vertical=look.upright, wrap_text=look.wrap),
         protection=Protection(locked=look.locked),
     )
     if look.fill:

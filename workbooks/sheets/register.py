@@ -1,0 +1,321 @@
+"""The *Register*: a row for each characteristic, its request on the left, its plan and risks on the right."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from typing import Any
+
+from openpyxl.utils import get_column_letter
+
+from steelyard.core.plan import SIDES, SPLITS, VERDICTS
+from steelyard.workbooks import native
+from steelyard.workbooks.house import Book, Check, Piece, Put, Sheet, between, choice
+from steelyard.workbooks.plans import Planned
+from steelyard.workbooks.sheets import paper, rows
+from steelyard.workbooks.terms import Terms, ask, column, literal, literals
+
+TITLE = "Register"
+FIRST = 7
+"""The row of the first characteristic."""
+
+AGREES, DIFFERS, NONE = "agrees", "differs", "none"
+
+
+@dataclass(frozen=True, slots=True)
+class Head:
+    """A column: its key, heading and width, and what stands above the first heading of a group."""
+
+    key: str
+    text: str
+    width: float
+    group: str = ""
+
+
+HEADS = (
+    Head("number", "No.", 5, "Request"),
+    Head("name", "Characteristic", 27),
+    Head("kind", "Kind", 14.5),
+    Head("unit", "Unit", 20),
+    Head("claim", "Claim", 9),
+    Head("side", "Side", 7.5),
+    Head("alpha", "Alpha", 7.5),
+    Head("catch", "Catch", 9),
+    Head("second", "and catch", 9),
+    Head("wanted", "Power wanted", 8.5),
+    Head("extra", "Lot", 8),
+    Head("fixed", "Size, if fixed", 8.5),
+    Head("verdict", "Verdict on rejecting", 10),
+    Head("split", "Split", 8.5),
+    Head("reference", "Reference", 20),
+    Head("note", "Note", 32),
+    Head("plan", "Plan", 60, "Plan and risks"),
+    Head("size", "Sample size", 9),
+    Head("low", "Reject up to", 8.5),
+    Head("high", "Reject from", 8.5),
+    Head("actual", "Actual size", 9.5),
+    Head("power", "Power at catch", 9),
+    Head("short", "Shortfall of power", 9.5),
+    Head("p95", "95 %", 10, "True value that passes with"),
+    Head("p50", "50 %", 10),
+    Head("p10", "10 %", 10),
+    Head("native", "Power by native functions", 11, "Checks"),
+    Head("agrees", "Native check", 9),
+    Head("check", "Remark on the plan", 32),
+    Head("catch_own", "Catch", 10, "Working columns, in the plan's unit"),
+    Head("second_own", "and catch", 10),
+)
+PLACE = {head.key: get_column_letter(number) for number, head in enumerate(HEADS, 1)}
+REQUESTED = [head.key for head in HEADS].index("plan")  # columns of the request
+
+_CHANCE = between(1e-12, 1 - 1e-12, "Probability", "Between 0 and 1: type 5% or 0.05.", blank=True)
+_SIZE = between(
+    1e-9, 1e9, "Sample size", "Items or units to inspect. Empty: the smallest plan is sought.", blank=True
+)
+_PASSING = {"p95": 0.95, "p50": 0.5, "p10": 0.1, "p05": 0.05}
+
+
+class Register:
+    """The sheet and its columns, for the other sheets to refer to.
+
+    Parameters
+    ----------
+    book : Book
+        Gets the sheet.
+    planned : sequence of Planned
+        One for each row.
+    """
+
+    def __init__(self, book: Book, planned: Sequence[Planned]) -> None:
+        self.book, self.planned = book, planned
+        self._terms: dict[str, Terms] = {}
+        self._pieces: dict[str, Sequence[Piece]] = {}
+        self._write_request()
+        self._write_plan()
+        self._write_risks()
+        self._write_checks()
+        self.sheet = self._lay_out()
+
+    def term(self, key: str, place: int) -> Terms:
+        """Return the cell of one characteristic, counted from 0, as the other sheets refer to it."""
+        return column(f"${PLACE[key]}$", FIRST + place, [self.value(key, place)], TITLE)
+
+    def value(self, key: str, place: int) -> Any:
+        """Return what that cell shows."""
+        return self._terms[key].cells[place][0]
+
+    def values(self, key: str) -> list[Any]:
+        """Return what a column shows."""
+        return self._terms[key].values()
+
+    def passing(self, chance: str, place: int) -> Terms:
+        """Return the true value at which one plan passes with a chance, ``"p95"`` to ``"p05"``."""
+        terms = {key: self.term(key, place) for key in ("plan", "verdict", "side")}
+        return _passing(self.book.host, chance, terms)
+
+    def native(self, place: int, rate: str) -> str:
+        """Return the native formula of one plan's power at the rate in a cell of another sheet."""
+        at = {key: f"{TITLE}!${PLACE[key]}${FIRST + place}" for key in ("low", "high", "size", "extra")}
+        return rows.native_formula(self.planned[place], at, rate)
+
+    def _input(
+        self, key: str, values: Sequence[Any], styles: str | Sequence[str], check: Check | None = None
+    ) -> None:
+        each = [styles] * len(values) if isinstance(styles, str) else styles
+        self._terms[key] = column(PLACE[key], FIRST, values)
+        self._pieces[key] = [
+            Put(value, style, check=check) for value, style in zip(values, each, strict=True)
+        ]
+
+    def _live(self, key: str, terms: Terms, styles: str | Sequence[str] = "result") -> Terms:
+        self._pieces[key] = terms.lives(styles)
+        self._terms[key] = column(PLACE[key], FIRST, terms.values())
+        return self._terms[key]
+
+    def _each(self, value: Callable[[Planned], Any]) -> list[Any]:
+        return [value(planned) for planned in self.planned]
+
+    def _at(self, place: int) -> dict[str, str]:
+        return {key: f"{letters}{FIRST + place}" for key, letters in PLACE.items()}
+
+    def _write_request(self) -> None:
+        first, second = (self._each(lambda planned, i=i: (*planned.catches, None, None)[i]) for i in (0, 1))
+        self._input("number", self._each(lambda planned: planned.number), "index")
+        self._input("name", self._each(lambda planned: planned.request.characteristic), "entry words")
+        self._input("kind", self._each(lambda planned: planned.request.kind), "result")
+        self._input("unit", self._each(_unit), "entry words")
+        self._input(
+            "claim",
+            self._each(lambda planned: planned.claim),
+            self._rate_inputs(self._each(lambda p: p.claim)),
+        )
+        self._input("side", self._each(lambda planned: planned.side), "input", choice(tuple(SIDES.values())))
+        self._input("alpha", self._each(lambda planned: planned.alpha), "input rate", _CHANCE)
+        self._input("catch", first, self._rate_inputs(first))
+        pairs = self._each(lambda planned: len(planned.catches) > 1)
+        styles = self._rate_inputs(second)
+        self._input(
+            "second", second, [s if pair else "result" for s, pair in zip(styles, pairs, strict=True)]
+        )
+        self._input("wanted", self._each(lambda planned: planned.request.power), "input rate", _CHANCE)
+        self._input("extra", self._each(lambda planned: planned.extra), self._each(_extra_style))
+        self._input("fixed", self._each(lambda planned: planned.request.n), "input number", _SIZE)
+        self._input("verdict", self._each(lambda planned: planned.plan.verdict), "input", choice(VERDICTS))
+        self._input("split", self._each(lambda planned: planned.plan.split), "input", choice(SPLITS))
+        self._input("reference", self._each(lambda planned: planned.request.reference), "entry words")
+        self._input("note", self._each(lambda planned: planned.request.note), "entry words")
+
+    def _rate_inputs(self, values: Sequence[Any]) -> list[str]:
+        return [
+            f"input {rows.typed_style(planned, value)}"
+            for planned, value in zip(self.planned, values, strict=True)
+        ]
+
+    def _write_plan(self) -> None:
+        host, every = self.book.host, range(len(self.planned))
+        texts = tuple(rows.plan_formula(self.planned[place], self._at(place), host) for place in every)
+        plans = self._live("plan", Terms(texts, [[planned.text] for planned in self.planned]), "cell")
+        words = literals(self._each(lambda planned: planned.kind.grammar.extent))
+        self._live("size", ask(host, "FIELD", plans, words), "result number")
+        for key, end, missing in (("low", "lower", "above"), ("high", "upper", "below")):
+            self._live(
+                key, _critical(ask(host, "CRITICAL", plans, literal(end)), self._terms["side"], missing)
+            )
+
+    def _write_risks(self) -> None:
+        host, plans = self.book.host, self._terms["plan"]
+        styles = self._each(lambda planned: f"result {rows.rate_style(planned)}")
+        self._live("actual", ask(host, "SIZE", plans), "result risk")
+        for key, typed in (("catch_own", "catch"), ("second_own", "second")):
+            self._live(key, self._own_catches(typed), styles)
+        powers = [
+            ask(host, "POWER", plans, self._terms[f"{key}_own"], unless_blank=self._terms[key])
+            for key in ("catch", "second")
+        ]
+        self._live("power", self._least(*powers), "result power")
+        self._live("short", self._shortfall(), "result power")
+        for key in ("p95", "p50", "p10"):
+            self._live(key, _passing(host, key, self._terms), styles)
+
+    def _own_catches(self, key: str) -> Terms:
+        texts, cells = [], []
+        for place, planned in enumerate(self.planned):
+            at, upper = self._at(place), key == "second"
+            texts.append(rows.own_catch_formula(planned, at[key], at, upper))
+            cells.append([rows.own_catch(planned, self.value(key, place), upper)])
+        return Terms(tuple(texts), cells)
+
+    def _least(self, first: Terms, second: Terms) -> Terms:
+        """Return the power at the rate to catch; with two of them, the lesser power."""
+        pairs = self._each(lambda planned: len(planned.catches) > 1)
+        texts = tuple(
+            f"MIN({a},{b})" if pair else a
+            for a, b, pair in zip(first.texts, second.texts, pairs, strict=True)
+        )
+        both = zip(first.values(), second.values(), pairs, strict=True)
+        return Terms(texts, [[min(a, b) if pair else a] for a, b, pair in both])
+
+    def _shortfall(self) -> Terms:
+        texts, cells = [], []
+        for place in range(len(self.planned)):
+            power, wanted, fixed = (self.value(key, place) for key in ("power", "wanted", "fixed"))
+            known = isinstance(power, float) and None not in (wanted, fixed)
+            at = self._at(place)
+            texts.append(
+                f'IF(OR({at["fixed"]}="",{at["wanted"]}="",{at["power"]}=""),"",MAX(0,{at["wanted"]}-{at["power"]}))'
+            )
+            cells.append([max(0.0, wanted - power) if known else None])
+        return Terms(tuple(texts), cells)
+
+    def _write_checks(self) -> None:
+        texts, cells = [], []
+        for place, planned in enumerate(self.planned):
+            at = self._at(place)
+            keys = ("catch_own", "second_own")[: max(1, len(planned.catches))]
+            formulas = [rows.native_formula(planned, at, at[key]) for key in keys]
+            least = formulas[0] if len(formulas) == 1 else f"MIN({','.join(formulas)})"
+            texts.append(f'IF({at["catch_own"]}="","",{least})')
+            rates = [self.value(key, place) for key in keys if planned.catches]
+            cells.append([min(native.power_values(planned.plan, rates), default=None)])
+        natively = self._live("native", Terms(tuple(texts), cells), "native power")
+        self._live("agrees", agreement(self._terms["power"], natively), "verdict")
+        self._live("check", ask(self.book.host, "CHECK", self._terms["plan"]), "cell")
+
+    def _lay_out(self) -> Sheet:
+        sheet = self.book.sheet(TITLE, {PLACE[head.key]: head.width for head in HEADS})
+        sheet.add(Put("Register", "title"))
+        sheet.add(
+            Put(
+                "A row for each characteristic: what was asked for, the plan, and what the plan does.",
+                "subtitle",
+            )
+        )
+        sheet.add(Put("Yellow cells may be edited; what stands right of them follows.", "note", REQUESTED))
+        sheet.skip()
+        sheet.add(*(Put(head.group, "section") if head.group else None for head in HEADS))
+        sheet.add(*(Put(head.text, "heading") for head in HEADS))
+        sheet.rows([self._pieces[head.key][place] for head in HEADS] for place in range(len(self.planned)))
+        last, check = sheet.next_row - 1, PLACE["check"]
+        sheet.freeze(f"{PLACE['kind']}{FIRST}")
+        sheet.flag(
+            f"{PLACE['agrees']}{FIRST}:{PLACE['agrees']}{last}", f'={PLACE["agrees"]}{FIRST}="{DIFFERS}"'
+        )
+        sheet.flag(f"{PLACE['short']}{FIRST}:{PLACE['short']}{last}", f"=N({PLACE['short']}{FIRST})>0")
+        sheet.raw.auto_filter.ref = f"A{FIRST - 1}:{check}{last}"
+        sheet.protect()
+        sheet.print_setup(landscape=True, repeat=f"{FIRST - 2}:{FIRST - 1}", area=f"A1:{check}{last}")
+        paper.fixed_scale(sheet, 58)
+        paper.break_after_column(sheet, REQUESTED, "A:B")
+        return sheet
+
+
+def _unit(planned: Planned) -> str:
+    return planned.request.unit or planned.kind.parameters[0].name
+
+
+def _extra_style(planned: Planned) -> str:
+    return "input count" if planned.kind.grammar.extra else "result"
+
+
+def _critical(terms: Terms, sides: Terms, missing: str) -> Terms:
+    """Return critical counts: nothing where the side has no such end, a word where that end is empty."""
+    texts, cells = [], []
+    for text, (value,), side, (named,) in zip(
+        terms.texts, terms.cells, sides.texts, sides.cells, strict=True
+    ):
+        texts.append(f'IF({side}="{missing}","",IF(ISTEXT({text}),"{NONE}",{text}))')
+        cells.append([None if named == missing else NONE if isinstance(value, str) else value])
+    return Terms(tuple(texts), cells)
+
+
+def _passing(host: str, chance: str, terms: dict[str, Terms]) -> Terms:
+    """Return the true values at which plans pass with a chance; rejecting means passing in a demonstration."""
+    probability = _PASSING[chance]
+    power = _either(terms["verdict"], "pass", probability, round(1 - probability, 2))
+    end = _either(terms["side"], "below", "lower", "upper")
+    return ask(host, "RATE_FOR", terms["plan"], power, end)
+
+
+def _either(given: Terms, word: str, yes: Any, no: Any) -> Terms:
+    """Return one of two constants in each row, as a cell says."""
+    written = [literal(value).texts[0] for value in (yes, no)]
+    texts = tuple(f'IF({text}="{word}",{written[0]},{written[1]})' for text in given.texts)
+    return Terms(texts, [[yes if row[0] == word else no] for row in given.cells])
+
+
+def agreement(ours: Terms, theirs: Terms, allowed: float = 1e-9) -> Terms:
+    """Return whether two numbers agree to a relative difference, in each row."""
+    bound = f"{allowed!r}".upper()
+    texts = tuple(
+        f'IF(ISNUMBER({a}),IF(ABS({a}-{b})<={bound}*MAX(ABS({a}),1E-290),"{AGREES}","{DIFFERS}"),"")'
+        for a, b in zip(ours.texts, theirs.texts, strict=True)
+    )
+    return Terms(
+        texts, [[_agree(a, b, allowed)] for a, b in zip(ours.values(), theirs.values(), strict=True)]
+    )
+
+
+def _agree(ours: Any, theirs: Any, allowed: float) -> str | None:
+    if not isinstance(ours, float):
+        return None
+    return AGREES if abs(ours - theirs) <= allowed * max(abs(ours), 1e-290) else DIFFERS
