@@ -21,7 +21,7 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
-from steelyard.core.parameter import Floats
+from steelyard.core.parameter import Columns, Floats
 from steelyard.core.splits import ONE_SIDED, Tail, Truth, first_whole, opposite, tails_of, weigh, within
 
 if TYPE_CHECKING:
@@ -30,7 +30,7 @@ if TYPE_CHECKING:
 Row = Mapping[str, Any]
 
 _OWN = {"lower": ("high", "low", 1.0), "upper": ("low", "high", -1.0)}
-_CLOSE = 1e-10  # relative step after which Newton's next one is below rounding
+_CLOSE = 1e-8  # relative step from which on Newton's method must get better with every step
 _TIE = 1e-12
 _TINY = 1e-300
 
@@ -104,7 +104,7 @@ def lot_limit(law: CountLaw, row: Row, x: float, end: str, miss: float, split: s
     raise AssertionError("unreachable: the far end is possible")
 
 
-def _one_sided(law: RateLaw, columns: dict[str, Any], x: float, own: str, miss: float) -> float:
+def _one_sided(law: RateLaw, columns: Columns, x: float, own: str, miss: float) -> float:
     """Return the rate where the own tail is `miss`, by whichever tail is the smaller."""
     start = law.tail_rate(x, columns, own, miss)
     if miss <= 0.5:
@@ -115,7 +115,7 @@ def _one_sided(law: RateLaw, columns: dict[str, Any], x: float, own: str, miss: 
 
 def _solve(
     law: RateLaw,
-    columns: dict[str, Any],
+    columns: Columns,
     tails: list[Tail],
     target: float,
     start: float,
@@ -126,32 +126,33 @@ def _solve(
 
     Newton's method on the logarithm of the sum, held inside a bracket.
     """
-    rate, rising = max(start, _TINY), tails[0][1] == "high"
+    rate, rising, last = max(start, _TINY), tails[0][1] == "high", math.inf
     for _ in range(200):
-        value, slope = float(weigh(law, columns, np.asarray(rate), tails)), _slope(law, columns, rate, tails)
+        value, slope = (float(part(law, columns, np.asarray(rate), tails)) for part in (weigh, _slope))
         if (value > target) == rising:
             high = rate
         else:
             low = rate
         new = rate - value * math.log(value / target) / slope if value > 0 and slope != 0 else math.nan
-        if abs(new - rate) <= _CLOSE * rate:
+        step = abs(new - rate)
+        if step == 0 or (step <= _CLOSE * rate and step > 0.9 * last):  # no longer better: rounding
             return new
         if not low < new < high:
             new = (low + high) / 2 if math.isfinite(high) else 2 * rate
-        rate = new
+        rate, last = new, step
     return rate
 
 
-def _slope(law: RateLaw, columns: dict[str, Any], rate: float, tails: list[Tail]) -> float:
+def _slope(law: RateLaw, columns: Columns, rate: Floats, tails: list[Tail]) -> Floats:
     """Return the derivative by the rate: that of P(X >= x) is ``x P(X = x) / rate`` for every rate law."""
-    total = 0.0
+    total = np.zeros(())
     for weight, end, x in tails:
         first, sign = (x, 1) if end == "high" else (x + 1, -1)
-        total += float(sign * weight * first * law.exactly(first, columns, np.asarray(rate)) / rate)
+        total = total + sign * weight * first * law.exactly(first, columns, rate) / rate
     return total
 
 
-def _rarest(law: RateLaw, columns: dict[str, Any], x: float, end: str, miss: float) -> float:
+def _rarest(law: RateLaw, columns: Columns, x: float, end: str, miss: float) -> float:
     """Scan the rates where `x` and a count of the other tail are equally probable, from outside inwards.
 
     Between two of them the evidence has no inner maximum: it falls, then rises, or does one of both.
@@ -164,17 +165,18 @@ def _rarest(law: RateLaw, columns: dict[str, Any], x: float, end: str, miss: flo
     others = np.arange(first + inwards, last + inwards, inwards)
     rates = law.even_rate(x, others, columns)
     before = weigh(law, columns, rates, [(1, own, count), (1, other, others - inwards)])
-    after = weigh(law, columns, rates, [(1, own, count), (1, other, others)])
-    beyond = miss * (1 + _TIE)
-    place = int((after > beyond).argmax())
-    if before[place] <= beyond:
+    after = weigh(law, columns, rates, tails := [(1, own, count), (1, other, others)])
+    rises = inwards * _slope(law, columns, rates, tails) > -_TIE * _slope(law, columns, rates, tails[:1])
+    tied = np.abs(after - miss) <= _TIE * miss  # then the rate itself is outside, and what follows decides
+    place = int((tied & rises | (after > miss) & ~tied).argmax())
+    if before[place] <= miss * (1 + _TIE):
         return float(rates[place])
     outer, inner = float(rates[place - 1]) if place else far, float(rates[place])
-    tails: list[Tail] = [(1, own, count), (1, other, others[place] - inwards)]
+    tails = [(1, own, count), (1, other, others[place] - inwards)]
     return _solve(law, columns, tails, miss, (outer + inner) / 2, *sorted((outer, inner)))
 
 
-def _outside(law: RateLaw, columns: dict[str, Any], x: float, own: str, miss: float) -> float:
+def _outside(law: RateLaw, columns: Columns, x: float, own: str, miss: float) -> float:
     """Return a rate beyond which the two tails together stay below `miss`."""
     times, rate = 1.0, law.tail_rate(x, columns, own, miss)
     while (needed := _most_times(law.variance(columns, rate))) > times:

@@ -37,7 +37,7 @@ ONE_SIDED = "one-sided"
 ENDS = {"above": ("high",), "below": ("low",), "either": ("low", "high")}
 
 
-def critical_high(law: CountLaw, columns: Columns, rate: Any, alpha: float, split: str = ONE_SIDED) -> Floats:
+def critical_high(law: CountLaw, columns: Columns, rate: Any, alpha: Any, split: str = ONE_SIDED) -> Floats:
     """Return the least count that rejects at the high end, for many designs at once.
 
     Parameters
@@ -47,7 +47,7 @@ def critical_high(law: CountLaw, columns: Columns, rate: Any, alpha: float, spli
         The designs' fields, e.g. ``{"n": np.array([50.0, 125.0])}``; they broadcast with `rate`.
     rate : float or ndarray
         The claim's boundary.
-    alpha : float
+    alpha : float or ndarray
         Nominal significance level.
     split : {"one-sided", "half", "nearest", "rarest"}
         How a two-sided test shares alpha; ``"one-sided"`` gives this end all of it.
@@ -75,7 +75,7 @@ def critical_high(law: CountLaw, columns: Columns, rate: Any, alpha: float, spli
     return np.where(high <= most, high, np.nan)
 
 
-def critical_low(law: CountLaw, columns: Columns, rate: Any, alpha: float, split: str = ONE_SIDED) -> Floats:
+def critical_low(law: CountLaw, columns: Columns, rate: Any, alpha: Any, split: str = ONE_SIDED) -> Floats:
     """Return the greatest count that rejects at the low end, for many designs at once.
 
     Parameters and shape are those of `critical_high`.
