@@ -14,6 +14,7 @@ from steelyard.core.pmf import Floats, floats, hypergeometric_pmf
 _CHUNK = 1024  # elements at a time, so that the working arrays stay in the processor's cache
 _BLOCK = 1024  # term ratios at a time
 _NEGLIGIBLE = 1e-17
+_INVISIBLE = 1e-25  # what is taken from 1, even times a million
 
 
 def hypergeometric_at_most(x: ArrayLike, lot: ArrayLike, defectives: ArrayLike, n: ArrayLike) -> Floats:
@@ -68,14 +69,14 @@ def _at_most(x: Floats, lot: Floats, marked: Floats, n: Floats, slack: float) ->
     # P(X > x) is the chance of at most n - x - 1 of the other items
     count = np.where(beyond, n - x - 1.0, x)
     marked = np.where(beyond, lot - marked, marked)
-    tail = hypergeometric_pmf(count, lot, marked, n) * _ratio_sum(count, lot, marked, n)
-    tail = np.minimum(tail, 1.0)
-    return np.where(beyond, 1.0 - tail, tail)
+    tail = hypergeometric_pmf(count, lot, marked, n)
+    seen = tail > np.where(beyond, _INVISIBLE, 0.0)
+    tail[seen] *= _ratio_sum(count[seen], lot[seen], marked[seen], n[seen])
+    return np.where(beyond, 1.0 - tail, np.minimum(tail, 1.0))
 
 
 def _ratio_sum(x: Floats, lot: Floats, marked: Floats, n: Floats) -> Floats:
     """Return P(X <= x) / P(X = x), the sum of the falling products of the term ratios."""
-    x = np.clip(x, np.maximum(0.0, n + marked - lot), np.minimum(n, marked))
     up = (x, lot - marked - n + x)
     down = (marked - x + 1.0, n - x + 1.0)
     total, term, live, start = np.ones(x.size), np.ones(x.size), np.arange(x.size), 0
