@@ -58,7 +58,7 @@ def binomial_at_most(x: ArrayLike, n: ArrayLike, p: ArrayLike) -> Floats:
     0.982241919302
     """
     x, n, p = floats(x, n, p)
-    return _inside(_binomial_lower, x, 0.0, n - 1.0, (0.0, 1.0), n, p)
+    return _inside(_binomial_lower, x, 0.0, n - 1.0, (0.0, 1.0), np.maximum(n, 1.0), p)
 
 
 def binomial_at_least(x: ArrayLike, n: ArrayLike, p: ArrayLike) -> Floats:
@@ -71,7 +71,7 @@ def binomial_at_least(x: ArrayLike, n: ArrayLike, p: ArrayLike) -> Floats:
     0.017758080698
     """
     x, n, p = floats(x, n, p)
-    return _inside(_binomial_upper, x, 1.0, n, (1.0, 0.0), n, p)
+    return _inside(_binomial_upper, x, 1.0, n, (1.0, 0.0), np.maximum(n, 1.0), p)
 
 
 def poisson_at_most(x: ArrayLike, mean: ArrayLike) -> Floats:
@@ -129,7 +129,7 @@ def _binomial_lower(x: Floats, n: Floats, p: Floats) -> Floats:
     q = 1.0 - p
     value = special.betainc(n - x, x + 1.0, q)
     rounding = (1.0 - q) - p  # exactly what q lacks; it matters once n is in the thousands
-    if _any(np.abs(rounding) > 1e-13 / np.maximum(n, 1.0)):
+    if _any(np.abs(rounding) > 1e-13 / n):
         log_p, log_q = np.log(np.maximum(p, _TINY)), np.log(np.maximum(q, _TINY))
         density = np.exp(x * log_p + (n - x - 1.0) * log_q - special.betaln(n - x, x + 1.0))
         value = np.minimum(value + rounding * density, 1.0)

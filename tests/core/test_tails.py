@@ -141,7 +141,7 @@ def test_outside_the_support_the_answer_is_exact() -> None:
     ("law", "rest", "only"),
     [
         ("binomial", (3, 0.0), 0), ("binomial", (3, 1.0), 3), ("binomial", (0, 0.3), 0),
-        ("poisson", (0.0,), 0),
+        ("binomial", (0, 1.0), 0), ("poisson", (0.0,), 0),
         ("hypergeometric", (9, 0, 4), 0), ("hypergeometric", (9, 9, 4), 4), ("hypergeometric", (9, 5, 9), 5),
         ("hypergeometric", (9, 5, 0), 0), ("hypergeometric", (0, 0, 0), 0),
     ],
