@@ -166,7 +166,8 @@ def _rarest(law: RateLaw, columns: Columns, x: float, end: str, miss: float) -> 
     rates = law.even_rate(x, others, columns)
     before = weigh(law, columns, rates, [(1, own, count), (1, other, others - inwards)])
     after = weigh(law, columns, rates, tails := [(1, own, count), (1, other, others)])
-    rises = inwards * _slope(law, columns, rates, tails) > -_TIE * _slope(law, columns, rates, tails[:1])
+    slope, alone = (_slope(law, columns, rates, part) for part in (tails, tails[:1]))
+    rises = inwards * slope > -_TIE * np.abs(alone)
     tied = np.abs(after - miss) <= _TIE * miss  # then the rate itself is outside, and what follows decides
     place = int((tied & rises | (after > miss) & ~tied).argmax())
     if before[place] <= miss * (1 + _TIE):

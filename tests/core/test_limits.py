@@ -136,7 +136,7 @@ def test_split_rarest_returns_the_hull_of_a_set_with_a_hole() -> None:
 
 
 def test_split_rarest_at_a_tie_with_one_minus_confidence() -> None:
-    # At p = 1/2 the counts 0 and 2 of 2 are equally probable, 1/2 in all: outside, but all greater p are inside.
+    # At p = 1/2 the counts 0 and 2 of 2 have the chance 1/2 together: outside, what lies inwards is inside.
     plan = asked("binomial", Items(2), "either", "rarest")
     assert limit(plan, 2, "lower", 0.5) == pytest.approx(0.5, rel=1e-12)
     assert limit(plan, 0, "upper", 0.5) == pytest.approx(0.5, rel=1e-12)
