@@ -39,7 +39,7 @@ TOP_LEVEL = {
 
 # A file that holds one of these would work on one machine only, or would send people to one server.
 ONE_MACHINE_ONLY = re.compile(
-    r"""(?<![\w.])/(?:work|tmp|home|root|opt|mnt|Users)/\w   # an absolute path of somebody's machine
+    r"""(?<![\w.])/(?:work|tmp|home|root|Users)/\w   # an absolute path of somebody's machine
       | \b[A-Za-z]:\\{1,2}Users\b
       | \b(?:pypi|pythonhosted|debian|npmjs)\.(?:org|com)\b  # the host of a package index
       | --(?:extra-)?index-url
