@@ -191,7 +191,7 @@ def _read_row(columns: Sequence[Column | None], row: Row) -> tuple[dict[str, Any
 
 def _value(column: Column, cell: Raw) -> Cell | None:
     if isinstance(cell, Unusable):
-        raise InvalidValue(column.name, f"be {cell.reason}", cell.shown)
+        raise InvalidValue(column.name, f"be {column.allowed}", cell.shown)
     if cell is not None:
         return column.read(cell, column.name)
     if column.required:

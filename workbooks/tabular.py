@@ -21,7 +21,8 @@ from steelyard.core.errors import SteelyardError
 from steelyard.workbooks.parts import MEGABYTE, check_package
 
 LARGEST = 25 * MEGABYTE  # unpacked: a list of 2,000 rows takes 2 MB
-MOST_ROWS = 20_000
+MOST_ROWS = 10_000
+MOST_TAGS = {"xl/worksheets/": 600_000, "xl/sharedStrings": 600_000, "": 30_000}  # by start of a part's name
 MOST_COLUMNS = 100
 BLANK_ROWS = 1_000
 PREFERRED_SHEET = "requests"
@@ -44,8 +45,9 @@ class Unusable:
     """A cell that holds no value to work with."""
 
     shown: str
-    reason: str
 
+
+_FORMULA = Unusable("a formula without a stored value")
 
 Raw = float | str | Unusable | None
 Row = tuple[int, list[Raw]]
@@ -117,9 +119,10 @@ def _xlsx(path: Path) -> Rows:
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")  # openpyxl tells of features that a list does not need
         try:
+            _check_parts(path)
             rows = _sheet_rows(path, calculated=False)
-            if any(isinstance(cell, Unusable) for _, cells in rows for cell in cells):
-                rows = _sheet_rows(path, calculated=True)
+            if any(cell is _FORMULA for _, cells in rows for cell in cells):
+                rows = _with_values(rows, dict(_sheet_rows(path, calculated=True)))
         except _DAMAGE as error:
             if isinstance(error, SteelyardError):
                 raise
@@ -127,27 +130,53 @@ def _xlsx(path: Path) -> Rows:
     return Rows(rows)
 
 
+def _check_parts(path: Path) -> None:
+    """Refuse what makes a reader work for minutes, and entities, which no spreadsheet program writes."""
+    with zipfile.ZipFile(path) as archive:
+        for entry in archive.infolist():
+            if not entry.filename.endswith((".xml", ".rels")):
+                continue
+            data = archive.read(entry)
+            most = next(most for start, most in MOST_TAGS.items() if entry.filename.startswith(start))
+            if data.count(b"<") > most:
+                _refuse(path, f"holds too much for a request list: {entry.filename}")
+            if b"<!DOCTYPE" in data:
+                _refuse(path, "is damaged: a part declares a document type")
+
+
 def _sheet_rows(path: Path, calculated: bool) -> list[Row]:
-    workbook = load_workbook(path, read_only=True, data_only=calculated, keep_links=False)
-    try:
+    with path.open("rb") as file:
+        workbook = load_workbook(file, read_only=True, data_only=calculated, keep_links=False)
         sheets = workbook.worksheets
         sheet = next((sheet for sheet in sheets if sheet.title.lower() == PREFERRED_SHEET), sheets[0])
         sheet.reset_dimensions()  # what a file says about its own size is no promise
         rows = sheet.iter_rows(max_col=MOST_COLUMNS)
         return list(_kept((number, [_cell(cell) for cell in row]) for number, row in enumerate(rows, 1)))
-    finally:
-        workbook.close()
+
+
+def _with_values(rows: list[Row], calculated: dict[int, list[Raw]]) -> list[Row]:
+    """Put stored values in the place of formulas; a formula without one stays unusable."""
+    filled: list[Row] = []
+    for number, cells in rows:
+        values = calculated.get(number, [None] * len(cells))
+        merged = [
+            (value or None) if cell is _FORMULA and value is not None else cell
+            for cell, value in zip(cells, values, strict=True)
+        ]
+        if any(cell is not None for cell in merged):
+            filled.append((number, merged))
+    return filled
 
 
 def _cell(cell: Any) -> Raw:
     value = cell.value
-    if value is None or value == "":
-        return None
+    if value is None:
+        return "" if cell.data_type == "str" else None  # only a formula's empty text comes like this
     match cell.data_type, value:
         case "f", _:
-            return Unusable("a formula without a stored value", "a value")
+            return _FORMULA
         case "e", _:
-            return Unusable(str(value), "a value, no error")
+            return Unusable(str(value))
         case _, bool():
             return "TRUE" if value else "FALSE"
         case _, int() | float():
