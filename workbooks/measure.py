@@ -68,7 +68,7 @@ def text_width(text: str, size: float = SIZE, bold: bool = False) -> float:
     Examples
     --------
     >>> round(text_width("0000000"), 1)
-    8.3
+    7.9
     """
     units = sum([_WIDTH_OF.get(letter, _OTHER) for letter in text])
     pixels = units / 1000 * round(size * _PIXELS_PER_POINT) * (1.08 if bold else 1.0)
