@@ -67,7 +67,7 @@ def read_number(value: Any, name: str) -> float:
         number = _read_text(str(value), name)
     if not math.isfinite(number):
         raise InvalidValue(name, "be a finite number", value)
-    return number
+    return number + 0.0  # no minus zero
 
 
 def _read_text(text: str, name: str) -> float:

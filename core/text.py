@@ -32,7 +32,7 @@ def read_plan(text: str) -> Plan:
     >>> write_plan(plan)
     'binomial | n 50 | claim p<=0.02 | reject x>=4'
     """
-    opening, *segments = [part.strip() for part in str(text).split("|")]
+    opening, *segments = [" ".join(part.split()) for part in str(text).split("|")]
     candidates, words = _candidates(opening)
     for segment in segments:
         word, _, rest = segment.partition(" ")
