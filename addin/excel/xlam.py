@@ -12,9 +12,9 @@ import re
 import xml.etree.ElementTree as ET
 import zipfile
 from collections.abc import Iterable, Mapping, Sequence
+from html import escape
 from importlib.metadata import distribution
 from pathlib import Path, PureWindowsPath
-from xml.sax.saxutils import escape
 
 from steelyard.addin import CATALOGUE
 from steelyard.addin.catalogue import Entry

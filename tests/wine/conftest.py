@@ -61,20 +61,19 @@ class Windows:
 
     def run(self, script: str, *arguments: str) -> Any:
         """Run a script of the folder ``inside`` in the Windows Python; it prints one line of JSON."""
-        path = windows_path(HERE / "inside" / script)
+        path = self.path(HERE / "inside" / script)
         result = self.wine("wine", str(self.python), "-B", path, *arguments, seconds=150)
         assert result.returncode == 0, result.stdout + result.stderr
         return json.loads(result.stdout.splitlines()[-1])
+
+    def path(self, path: Path) -> str:
+        """Return a path of this side as the Windows side sees it."""
+        return "Z:" + str(path).replace("/", "\\")
 
     def local(self, path: str) -> Path:
         """Return a path of the Windows side as this side sees it."""
         drive, _, rest = path.replace("\\", "/").partition(":")
         return Path("/" if drive.upper() == "Z" else self.prefix / "drive_c") / rest.lstrip("/")
-
-
-def windows_path(path: Path) -> str:
-    """Return a path of this side as the Windows side sees it."""
-    return "Z:" + str(path).replace("/", "\\")
 
 
 def build(windows: Windows) -> None:

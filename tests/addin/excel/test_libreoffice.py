@@ -12,9 +12,9 @@ import runpy
 import shutil
 import subprocess
 import zipfile
+from html import escape
 from pathlib import Path
 from typing import Any
-from xml.sax.saxutils import escape
 
 import pytest
 

@@ -13,7 +13,16 @@ import pythoncom
 import win32com.client
 from pywintypes import com_error
 
-EMPTY_ARGUMENT = win32com.client.VARIANT(pythoncom.VT_ERROR, -2147352572)
+MISSING = win32com.client.VARIANT(pythoncom.VT_ERROR, -2147352572)
+# What xlwings itself would write for the module, asked of the Python that answers Excel.
+WRAPPERS = """
+import io, types
+from steelyard.addin.excel import udfs
+from xlwings.udfs import generate_vba_wrapper
+out = io.StringIO()
+generate_vba_wrapper(udfs.__name__, udfs, out, types.SimpleNamespace(Name="steelyard.xlam"))
+text = out.getvalue()
+"""
 VT_DISPATCH, VT_BSTR = 9, 8
 ACTIVATE, KILL = 1, -1
 
@@ -45,13 +54,13 @@ class Library:
 
 
 def argument(value):
-    """Return a value of the job as VBA hands it over."""
+    """Return a value of the job as VBA hands it over.
+
+    An error value goes as its number, which is what xlwings' side makes of one; pywin32 can send no error
+    but the one that stands for a missing argument.
+    """
     if isinstance(value, dict):
-        return (
-            EMPTY_ARGUMENT
-            if "missing" in value
-            else win32com.client.VARIANT(pythoncom.VT_ERROR, value["error"])
-        )
+        return value.get("error", MISSING)
     return tuple(map(tuple, value)) if isinstance(value, list) else value
 
 
@@ -80,6 +89,9 @@ def main(job) -> None:
         for call in job["calls"]
     ]
     answers["seconds_per_call"] = round((time.perf_counter() - begun) / max(len(job["calls"]), 1), 5)
+    names = server.Dict()
+    server.Exec(WRAPPERS, names)
+    answers["wrappers"] = server.Str(server.GetItem(names, "text"))
     answers["search_path"] = server.Str(server.Eval("__import__('sys').path"))
     process = process_of(server)
     answers["same_process"] = process_of(library.call(job["command"])) == process
