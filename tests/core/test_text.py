@@ -117,7 +117,8 @@ def test_percent_is_taken_in_decimal_arithmetic() -> None:
         ("#N/A", "kind must be one of {kinds}, but got #N/A"),
         (
             "binomial | n 50 | rejct x>=4",
-            "field must be one of n, claim, alpha, split, reject, verdict, but got rejct (did you mean reject?)",
+            "field must be one of n, claim, alpha, split, reject, verdict, but got rejct"
+            " (did you mean reject?)",
         ),
         (
             "binomial | lot 50 | n 4 | reject x>=4",
