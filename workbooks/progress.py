@@ -4,10 +4,11 @@ from __future__ import annotations
 
 import os
 import sys
-from collections.abc import Callable
+from collections.abc import Callable, Iterator, Sequence
 from time import monotonic
-from types import TracebackType
-from typing import Self, TextIO
+from typing import TextIO, TypeVar
+
+Item = TypeVar("Item")
 
 _PATIENCE = 1.0  # seconds before the bar appears
 _PAUSE = 0.1  # seconds between two pictures of it
@@ -15,55 +16,51 @@ _WIDTH = 30
 _CLEAR = "\r\x1b[K"
 
 
-class Progress:
-    """Shows how far a piece of work has come, and leaves no trace.
-
-    For instance::
-
-        with Progress("justification sheets") as progress:
-            for done, plan in enumerate(plans):
-                progress(done, len(plans))
+def progress(
+    items: Sequence[Item],
+    label: str,
+    stream: TextIO | None = None,
+    clock: Callable[[], float] = monotonic,
+) -> Iterator[Item]:
+    """Yield the items, show how far the work on them has come, and leave no trace of it.
 
     Parameters
     ----------
+    items : sequence
+        What is worked on.
     label : str
-        What is being done.
+        What they are, e.g. ``"justifications"``.
     stream : text stream, optional
         Standard error if left out. Nothing is written unless it is a terminal that can redraw a line.
     clock : callable
         Seconds.
     """
+    stream = stream or sys.stderr
+    if not stream.isatty() or os.environ.get("TERM") == "dumb":
+        yield from items
+        return
+    due = clock() + _PATIENCE
+    shown = False
+    try:
+        for done, item in enumerate(items):
+            if clock() >= due:
+                _write(stream, _CLEAR + picture(done, len(items), label))
+                due, shown = clock() + _PAUSE, True
+            yield item
+    finally:
+        if shown:
+            _write(stream, _CLEAR)
 
-    def __init__(
-        self, label: str, stream: TextIO | None = None, clock: Callable[[], float] = monotonic
-    ) -> None:
-        self.label, self._stream, self._clock = label, stream or sys.stderr, clock
-        self._on = self._stream.isatty() and os.environ.get("TERM") != "dumb"
-        self._due, self._shown = clock() + _PATIENCE, False
 
-    def __enter__(self) -> Self:
-        return self
+def picture(done: int, total: int, label: str) -> str:
+    """Return the bar as text; with NO_COLOR set it has no colour."""
+    full = _WIDTH * done // total
+    bar = "█" * full + "·" * (_WIDTH - full)
+    if not os.environ.get("NO_COLOR"):
+        bar = f"\x1b[36m{bar}\x1b[0m"
+    return f"{bar}  {done:,}/{total:,} {label}"
 
-    def __exit__(
-        self, kind: type[BaseException] | None, error: BaseException | None, trace: TracebackType | None
-    ) -> None:
-        if self._shown:
-            self._write(_CLEAR)
 
-    def __call__(self, done: int, total: int) -> None:
-        """Say that `done` of `total` are done; cheap enough to be said for each."""
-        if self._on and self._clock() >= self._due:
-            self._write(_CLEAR + self.picture(done, total))
-            self._due, self._shown = self._clock() + _PAUSE, True
-
-    def picture(self, done: int, total: int) -> str:
-        """Return the bar as text; with NO_COLOR set it has no colour."""
-        full = _WIDTH * done // max(total, 1)
-        bar = "█" * full + "·" * (_WIDTH - full)
-        if not os.environ.get("NO_COLOR"):
-            bar = f"\x1b[36m{bar}\x1b[0m"
-        return f"{bar}  {done:,}/{total:,} {self.label}"
-
-    def _write(self, text: str) -> None:
-        self._stream.write(text)
-        self._stream.flush()
+def _write(stream: TextIO, text: str) -> None:
+    stream.write(text)
+    stream.flush()

@@ -4,7 +4,7 @@ import io
 
 import pytest
 
-from steelyard.workbooks.progress import Progress
+from steelyard.workbooks.progress import picture, progress
 
 
 class Terminal(io.StringIO):
@@ -21,9 +21,7 @@ def plain(monkeypatch):
 def run(stream, seconds):
     """Work on four things, with the clock at the given times."""
     times = iter(seconds)
-    with Progress("plans", stream, clock=lambda: next(times)) as progress:
-        for done in range(4):
-            progress(done, 4)
+    assert list(progress("abcd", "plans", stream, clock=lambda: next(times))) == ["a", "b", "c", "d"]
     return stream.getvalue()
 
 
@@ -41,20 +39,33 @@ def test_long_work_shows_a_bar_and_clears_it():
     ]
 
 
+def test_work_that_fails_clears_the_bar():
+    terminal, times = Terminal(), iter([0.0, 1.5, 1.5])
+    steps = progress("ab", "plans", terminal, clock=lambda: next(times))
+    next(steps)
+    with pytest.raises(RuntimeError):
+        steps.throw(RuntimeError)
+    assert terminal.getvalue().endswith("\r\x1b[K")
+
+
 def test_a_file_or_pipe_gets_nothing():
-    assert run(io.StringIO(), [0.0, *[9.0] * 9]) == ""
+    assert run(io.StringIO(), []) == ""
 
 
 def test_a_terminal_that_cannot_redraw_gets_nothing(monkeypatch):
     monkeypatch.setenv("TERM", "dumb")
-    assert run(Terminal(), [0.0, *[9.0] * 9]) == ""
+    assert run(Terminal(), []) == ""
 
 
 def test_colour_only_where_it_is_welcome(monkeypatch):
-    assert "\x1b" not in Progress("plans", Terminal()).picture(1, 2)
+    assert "\x1b" not in picture(1, 2, "plans")
     monkeypatch.delenv("NO_COLOR")
-    assert Progress("plans", Terminal()).picture(1, 2).startswith("\x1b[36m███████████████···")
+    assert picture(1, 2, "plans").startswith("\x1b[36m███████████████···")
+
+
+def test_large_numbers_are_grouped():
+    assert picture(500, 2000, "plans").endswith("  500/2,000 plans")
 
 
 def test_nothing_to_do_is_no_error():
-    assert Progress("plans", Terminal()).picture(0, 0).endswith("0/0 plans")
+    assert list(progress([], "plans", Terminal())) == []
