@@ -50,7 +50,7 @@ class Machine:
     @classmethod
     def this(cls) -> Machine:
         """Return the computer and the Python that run now."""
-        roaming = os.environ.get("APPDATA", "")
+        roaming = os.environ.get("APPDATA") or Path.home() / "AppData" / "Roaming"
         files = distribution("xlwings").files or ()
         return cls(
             system=platform.system(),

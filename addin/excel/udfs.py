@@ -44,12 +44,14 @@ def _error_text(value: Any) -> Any:
 
 def _signature(entry: Entry) -> inspect.Signature:
     return inspect.Signature(
-        inspect.Parameter(
-            vba_name(argument.name),
-            inspect.Parameter.POSITIONAL_OR_KEYWORD,
-            default=inspect.Parameter.empty if argument.required else None,
-        )
-        for argument in entry.arguments
+        [
+            inspect.Parameter(
+                vba_name(argument.name),
+                inspect.Parameter.POSITIONAL_OR_KEYWORD,
+                default=inspect.Parameter.empty if argument.required else None,
+            )
+            for argument in entry.arguments
+        ]
     )
 
 

@@ -42,8 +42,10 @@ xmlns:dc="http://purl.org/dc/elements/1.1/"><dc:title>Steelyard {VERSION}</dc:ti
 # What the loader is changed in, and how often each text must stand there. It looks at the workbook that
 # happens to be active, for settings and for the command that starts Python: each workbook would start a
 # Python of its own, and one with a settings sheet could name another program. The add-in looks at itself.
-# The option -P keeps Excel's current folder out of the search for modules.
+# The option -P keeps Excel's current folder out of the search for modules. A private module keeps the
+# loader's own functions out of the function wizard.
 LOADER_CHANGES = (
+    ('Attribute VB_Name = "xlwings"', 'Attribute VB_Name = "xlwings"\nOption Private Module', 1),
     ('PROJECT_NAME As String = "myaddin"', f'PROJECT_NAME As String = "{PROJECT}"', 1),
     ("ActiveWorkbook", "ThisWorkbook", 22),
     ('tail = " -B -c ', 'tail = " -B -P -c ', 1),
@@ -149,7 +151,8 @@ def _swapped(text: str, pattern: str, new: str, times: int = 1) -> str:
     changed, found = re.subn(pattern, lambda _: new, text, flags=re.DOTALL)
     if found != times:
         message = (
-            f"this version of xlwings brings an unexpected add-in template ({pattern} stands {found} times)"
+            "the installed xlwings brings another add-in template than Steelyard knows: reinstall Steelyard, "
+            f"which brings the right one ({pattern} stands {found} times in it)"
         )
         raise SteelyardError(message)
     return changed

@@ -115,6 +115,7 @@ def test_nothing_of_the_templates_author_is_left(parts):
 
 def test_the_loader_looks_at_the_add_in_only(modules):
     loader = modules["xlwings"]
+    assert loader.startswith('Attribute VB_Name = "xlwings"\r\nOption Private Module\r\n')
     assert 'Public Const PROJECT_NAME As String = "steelyard"' in loader
     assert "ActiveWorkbook" not in loader
     assert 'tail = " -B -P -c ""import sys, os;"' in loader
@@ -141,7 +142,7 @@ def test_a_wrapper_that_vba_would_refuse_stops_the_file(tmp_path, monkeypatch):
 def test_another_template_is_refused(monkeypatch):
     changes = (("PROJECT_NAME As String", "", 2),)
     monkeypatch.setattr(xlam, "LOADER_CHANGES", changes)
-    with pytest.raises(SteelyardError, match="unexpected add-in template"):
+    with pytest.raises(SteelyardError, match="another add-in template than Steelyard knows"):
         xlam.xlam_bytes(CATALOGUE.values(), {})
 
 
