@@ -64,7 +64,11 @@ def SY_CRITICAL(plan: Plans, end: End | None = None) -> Cells:
     return questions.critical(plan, end)
 
 
-@cell(group="ask", help="Critical region: every count or measure that rejects the claim.", example="=SY_REGION(A2)")
+@cell(
+    group="ask",
+    help="Critical region: every count or measure that rejects the claim.",
+    example="=SY_REGION(A2)",
+)
 def SY_REGION(plan: Plans) -> Cells:
     """Return the critical region in words."""
     return questions.region(plan)

@@ -85,7 +85,9 @@ class Entry:
 CATALOGUE: dict[str, Entry] = {}
 
 
-def add(function: Callable[..., Any], answer: Callable[..., Cells], group: str, help: str, example: str) -> Entry:
+def add(
+    function: Callable[..., Any], answer: Callable[..., Cells], group: str, help: str, example: str
+) -> Entry:
     """Enter a function into the catalogue; `answer` is what the hosts call."""
     entry = Entry(function.__name__, group, help, tuple(arguments_of(function)), example, answer)
     CATALOGUE[entry.name] = entry

@@ -130,7 +130,12 @@ def _over_ranges(
 
 
 def _one_cell(
-    one: Callable[..., Cells], arguments: Sequence[Argument], given: Sequence[Any], row: int, column: int, found: Any
+    one: Callable[..., Cells],
+    arguments: Sequence[Argument],
+    given: Sequence[Any],
+    row: int,
+    column: int,
+    found: Any,
 ) -> Cells:
     if found is not None and found == found:
         return found
@@ -163,7 +168,9 @@ def _range(value: Cells, place: int, arguments: Sequence[Argument]) -> Any:
     return rows[0][0] if len(rows) == len(rows[0]) == 1 else rows
 
 
-def _shape(ranges: Sequence[list[list[Any]]], arguments: Sequence[Argument], given: Sequence[Any]) -> tuple[int, int]:
+def _shape(
+    ranges: Sequence[list[list[Any]]], arguments: Sequence[Argument], given: Sequence[Any]
+) -> tuple[int, int]:
     if not ranges:
         return 1, 1
     rows, columns = max(map(len, ranges)), max(len(value[0]) for value in ranges)

@@ -28,7 +28,9 @@ from steelyard.core import making
 from steelyard.core.text import write_plan
 
 
-def _planned(kind: str, values: dict[str, Any], claim: Any, alpha: float, side: Any, split: str, verdict: str) -> str:
+def _planned(
+    kind: str, values: dict[str, Any], claim: Any, alpha: float, side: Any, split: str, verdict: str
+) -> str:
     return write_plan(making.plan_from_claim(kind, values, claim, alpha, side, split, verdict))
 
 
@@ -100,7 +102,9 @@ def SY_RULE(
     verdict: Verdict = "fail",
 ) -> Cells:
     """Return the text of a plan whose rule is given."""
-    return write_plan(making.plan_from_rule(kind, n, reject_from, reject_to, claim, lot_or_sigma, alpha, verdict))
+    return write_plan(
+        making.plan_from_rule(kind, n, reject_from, reject_to, claim, lot_or_sigma, alpha, verdict)
+    )
 
 
 @cell(

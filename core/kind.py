@@ -163,6 +163,12 @@ class Kind(ABC):
             raise InvalidValue("claim", f"be about {parameter.symbol} ({parameter.name})", text)
         return Claim(parameter.symbol, relation, parameter.claimed(value, relation, design))
 
+    def rises(self, plan: Plan) -> bool:
+        """Tell whether the power of a one-sided plan rises with the parameter."""
+        if plan.claim is not None and plan.claim.side != "either":
+            return bool(plan.claim.side == "above")
+        return bool(plan.rule.high is not None)
+
     def given_rule(self, rule: Reject) -> Any:
         """Return a rule of this kind from critical values given from outside."""
         message = (

@@ -36,6 +36,8 @@ class Parameter:
         Other symbols that a claim may be written with, in lower case.
     optional : bool
         Whether a question may leave it out (a sigma that the plan already knows).
+    whole : bool
+        Whether only whole numbers are possible.
     """
 
     symbol: str
@@ -46,6 +48,7 @@ class Parameter:
     lower_open: bool = False
     aliases: tuple[str, ...] = ()
     optional: bool = False
+    whole: bool = False
 
     def read(self, value: Any, design: Any = None) -> float:
         """Return one value of the parameter from a number or text.
@@ -81,6 +84,11 @@ class Parameter:
         """Return queried values in the parameter's own unit, NaN where they are refused."""
         del columns
         return values if self.allowed(values).all() else np.where(self.allowed(values), values, np.nan)
+
+    def span(self, columns: Columns) -> tuple[Floats, Floats]:
+        """Return the least and the greatest value for each plan, either of which may be infinite."""
+        del columns
+        return np.asarray(self.lower), np.asarray(self.upper)
 
     def show(self, value: float, bare: bool = False) -> str:
         """Return a value as sentences show it, with its name unless `bare`."""

@@ -36,7 +36,11 @@ def check(plan: Plan) -> str:
         notes.append(f"size {show_rate(actual)}; alpha {show_rate(plan.alpha)} would give {other}")
     elif actual > plan.alpha * (1 + 1e-12):
         notes.append(f"size {show_rate(actual)} exceeds alpha {show_rate(plan.alpha)}")
-    if plan.claim.side == "either" and isinstance(plan.rule, Reject) and None in (plan.rule.low, plan.rule.high):
+    if (
+        plan.claim.side == "either"
+        and isinstance(plan.rule, Reject)
+        and None in (plan.rule.low, plan.rule.high)
+    ):
         notes.append("the other tail is empty: no count there can reject")
     return "; ".join(notes) or "ok"
 
@@ -55,7 +59,7 @@ def sentences(plan: Plan) -> list[str]:
     --------
     >>> from steelyard.core.text import read_plan
     >>> print(sentences(read_plan("binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4"))[1])
-    Claim: the defect rate is at most 2 %.
+    Claim: defect rate at most 2 %.
     """
     told = [sample_sentence(plan)]
     if plan.claim is not None:
@@ -82,7 +86,7 @@ def claim_sentence(plan: Plan) -> str:
     parameter, claim = kind_of(plan).parameters[0], plan.claim
     if claim is None:
         return "The plan carries no claim."
-    return f"Claim: the {parameter.name} is {_CLAIMED[claim.relation]} {parameter.show(claim.value, bare=True)}."
+    return f"Claim: {parameter.name} {_CLAIMED[claim.relation]} {parameter.show(claim.value, bare=True)}."
 
 
 def rule_sentence(plan: Plan) -> str:
@@ -105,7 +109,9 @@ def rule_sentence(plan: Plan) -> str:
 def _risks(plan: Plan) -> list[str]:
     actual = show_rate(size(plan))
     nominal = "" if plan.alpha is None else f" (nominal alpha {show_rate(plan.alpha)})"
-    return [f"Type I error: while the claim is true it is rejected with probability {actual} at most{nominal}."]
+    return [
+        f"Type I error: while the claim is true it is rejected with probability {actual} at most{nominal}."
+    ]
 
 
 def _reach(plan: Plan) -> str:
@@ -116,7 +122,7 @@ def _reach(plan: Plan) -> str:
     except SteelyardError:
         return ""
     told = ", ".join(f"{show_rate(goal)} at {rate}" for goal, rate in found)
-    return f"Power reaches {told}: the {parameter.name} that the plan detects so often."
+    return f"Power reaches {told} ({parameter.name})."
 
 
 def _note(plan: Plan) -> str:

@@ -61,7 +61,10 @@ def takes(*names: str, **options: Any) -> tuple[tuple[str, ...], dict[str, Any]]
 
 
 HOST = takes(
-    "--host", choices=("excel", "calc"), default="excel", help="spelling of the formulas: SY_POWER or SY.POWER"
+    "--host",
+    choices=("excel", "calc"),
+    default="excel",
+    help="spelling of the formulas: SY_POWER or SY.POWER",
 )
 BOOK = takes("book", metavar="BOOK.xlsx", help="a workbook with SY formulas")
 
@@ -80,8 +83,12 @@ COMMANDS = (
         "steelyard demo",
         "commands.demo",
         (
-            takes("-o", "--output", default="demo-book.xlsx", metavar="FILE", help="plan book (demo-book.xlsx)"),
-            takes("--list", default="demo-requests.csv", metavar="FILE", help="demo list (demo-requests.csv)"),
+            takes(
+                "-o", "--output", default="demo-book.xlsx", metavar="FILE", help="plan book (demo-book.xlsx)"
+            ),
+            takes(
+                "--list", default="demo-requests.csv", metavar="FILE", help="demo list (demo-requests.csv)"
+            ),
             HOST,
         ),
     ),
@@ -101,7 +108,9 @@ COMMANDS = (
             takes("requests", metavar="REQUESTS", help="request list, .xlsx or .csv"),
             output(),
             HOST,
-            takes("--justify", metavar="A,B,C", help="characteristics that get a justification sheet, or: all"),
+            takes(
+                "--justify", metavar="A,B,C", help="characteristics that get a justification sheet, or: all"
+            ),
         ),
     ),
     Command(

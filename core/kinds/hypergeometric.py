@@ -81,6 +81,10 @@ class Defectives(Parameter):
         """Return 0 and the lot."""
         return 0.0, float(design.lot)
 
+    def span(self, columns: Columns) -> tuple[Floats, Floats]:
+        """Return 0 and the lot."""
+        return np.zeros(()), np.asarray(columns["lot"], dtype=float)
+
     def convert(self, values: Floats, columns: Columns) -> Floats:
         """Return D for queried values, NaN where a value is no whole number of items of the lot."""
         lot = columns["lot"]
@@ -132,7 +136,9 @@ class HypergeometricKind(CountKind):
 
     law = HypergeometricLaw()
 
-    parameters = (Defectives("D", "defectives in the lot", "items per lot", 0.0, math.inf, aliases=("p",)),)
+    parameters = (
+        Defectives("D", "defectives in the lot", "items per lot", 0.0, math.inf, aliases=("p",), whole=True),
+    )
     grammar = Grammar(
         kind="hypergeometric",
         head="hypergeometric",

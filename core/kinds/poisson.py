@@ -35,7 +35,7 @@ class Extent:
 class PoissonLaw(UnboundedCountLaw):
     """Defects found in `units` at a mean of `rate` defects per unit."""
 
-    statistic, amount = "x", "units"
+    statistic, amount, divisible = "x", "units", True
 
     def at_most(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
         """Return P(X <= x)."""

@@ -1,0 +1,302 @@
+"""From a power back to rates: where a plan's power reaches a target, and where two plans' curves cross.
+
+The search halves the range of floating-point numbers between two ends, so it ends at neighbouring numbers
+at any scale, from ppm to thousands, and needs nothing of a kind but that its power is monotone there.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Sequence
+
+import numpy as np
+from numpy.typing import NDArray
+
+from steelyard.core.errors import InvalidValue, NoAnswer
+from steelyard.core.kind import Kind, claim_of, kind_of
+from steelyard.core.numbers import write_number
+from steelyard.core.parameter import Columns, Floats
+from steelyard.core.plan import Plan, Reject
+from steelyard.core.questions import power, size
+
+_DOUBLINGS, _HALVINGS = 80, 64
+_UPWARDS, _DOWNWARDS = "upper", "lower"
+_GRID = np.concatenate(
+    [10.0 ** np.arange(-9, -2), np.arange(0.01, 1, 0.01), 1 - 10.0 ** np.arange(-3, -10, -1)]
+)
+
+Truth = NDArray[np.bool_]
+
+
+def rate_for(plan: Plan, target: float, end: str | None = None) -> float:
+    """Return the rate at which a plan's power reaches a target.
+
+    Parameters
+    ----------
+    plan : Plan
+        Of a kind with one parameter.
+    target : float
+        A power, strictly between 0 and 1.
+    end : {"lower", "upper"}, optional
+        For two-sided plans: the rate below or above the claim, where power climbs from its valley.
+
+    Returns
+    -------
+    float
+        In the parameter's unit; the rate nearest to the claim at which the power is at least the target.
+        In a finite lot the first whole number of defectives.
+
+    Raises
+    ------
+    InvalidValue
+        When the end is missing, or the plan does not reject there.
+    NoAnswer
+        When the power reaches the target nowhere, or everywhere, on that side.
+
+    Examples
+    --------
+    >>> from steelyard.core.text import read_plan
+    >>> plan = read_plan("binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4")
+    >>> round(rate_for(plan, 0.9), 6)
+    0.128757
+    """
+    end = _end(plan, end)
+    if claims_both_sides(plan) and target <= (least := size(plan)):
+        message = (
+            f"the target must be greater than the plan's size {least:.6g}, but got {write_number(target)}"
+        )
+        raise NoAnswer(message)
+    found = float(rates_for([plan], [target], end)[0, 0])
+    if np.isnan(found):
+        message = f"the power reaches {write_number(target)} at no rate on this side"
+        raise NoAnswer(message)
+    return found
+
+
+def rates_for(plans: Sequence[Plan], targets: Sequence[float], end: str | None = None) -> Floats:
+    """Return the rates at which the power of many plans reaches many targets.
+
+    Parameters
+    ----------
+    plans : sequence of Plan
+        Of any kinds with one parameter.
+    targets : sequence of float
+        Powers, strictly between 0 and 1.
+    end : {"lower", "upper"}, optional
+        Taken from each plan's rule where it rejects at one end only.
+
+    Returns
+    -------
+    ndarray of float, shape (len(plans), len(targets))
+        NaN where a plan has no such rate.
+    """
+    result = np.full((len(plans), len(targets)), np.nan)
+    groups: dict[tuple[str, str, bool], list[int]] = {}
+    for place, plan in enumerate(plans):
+        try:
+            groups.setdefault((plan.kind, _end(plan, end), claims_both_sides(plan)), []).append(place)
+        except (InvalidValue, NoAnswer):
+            continue
+    for (_, side, both), places in groups.items():
+        chosen = [plans[place] for place in places]
+        result[places] = _solve(chosen, np.array([targets], dtype=float), side, both)
+    return result
+
+
+def claims_both_sides(plan: Plan) -> bool:
+    """Tell whether the plan rejects at both ends of its statistic."""
+    return isinstance(plan.rule, Reject) and None not in (plan.rule.low, plan.rule.high)
+
+
+def _end(plan: Plan, end: str | None) -> str:
+    """Return on which side of the claim the power climbs."""
+    kind = kind_of(plan)
+    if sum(not parameter.optional for parameter in kind.parameters) > 1:
+        message = f"a plan of kind {plan.kind} has more than one parameter, so no single rate answers this"
+        raise NoAnswer(message)
+    if claims_both_sides(plan):
+        claim_of(plan)
+        if end is None:
+            raise InvalidValue("end", "be lower or upper for a plan that rejects at both ends", None)
+        return end
+    own = _climb(plan)
+    if end not in (None, own):
+        raise InvalidValue("end", f"be {own}: the plan rejects nothing at the other end", end)
+    return own
+
+
+def _climb(plan: Plan) -> str:
+    return _UPWARDS if kind_of(plan).rises(plan) else _DOWNWARDS
+
+
+def _solve(plans: Sequence[Plan], targets: Floats, end: str, both: bool) -> Floats:
+    kind = kind_of(plans[0])
+    columns = {name: values[:, None] for name, values in kind.columns(plans).items()}
+
+    def reached(rates: Floats) -> Truth:
+        return np.asarray(kind.reject(columns, rates) >= targets)
+
+    shape = np.broadcast_shapes((len(plans), 1), targets.shape)
+    anchors = np.array([[_anchor(plan)] for plan in plans]) if both else None
+    inside, outside = _ends(kind, columns, plans, end, anchors)
+    inside, outside = (np.broadcast_to(edge, shape).astype(float) for edge in (inside, outside))
+    outside = _reach(kind, reached, inside, outside)
+    fine = reached(outside) & (~reached(inside) | (not both))
+    found = _halve(reached, inside, outside, whole=kind.parameters[0].whole)
+    return np.where(fine, found, np.nan)
+
+
+def _anchor(plan: Plan) -> float:
+    return float(claim_of(plan).value)
+
+
+def _ends(
+    kind: Kind, columns: Columns, plans: Sequence[Plan], end: str, anchors: Floats | None
+) -> tuple[Floats, Floats]:
+    """Return where the power is least and where it is greatest; an infinite end is searched later."""
+    lower, upper = kind.parameters[0].span(columns)
+    near = (lower if end == _UPWARDS else upper) if anchors is None else anchors
+    near = np.where(np.isfinite(near), near, np.nan)
+    if np.isnan(near).any():  # a mean has no least value: start far on the claim's own side
+        middle = np.array([[_middle(plan)] for plan in plans])
+        far = np.maximum(1.0, np.abs(middle)) * 2.0**30
+        near = np.where(np.isnan(near), middle - far if end == _UPWARDS else middle + far, near)
+    return near, np.asarray(upper if end == _UPWARDS else lower, dtype=float)
+
+
+def _middle(plan: Plan) -> float:
+    if plan.claim is not None:
+        return float(plan.claim.value)
+    ends = [value for value in (plan.rule.low, plan.rule.high) if value is not None]
+    return float(ends[0])
+
+
+def _reach(kind: Kind, reached: Callable[[Floats], Truth], inside: Floats, outside: Floats) -> Floats:
+    """Replace infinite outer ends by finite ones at which the power has reached its target."""
+    if np.isfinite(outside).all():
+        return outside
+    sign, step = np.sign(outside), np.maximum(1.0, np.abs(inside)) * 2.0**-20
+    far = np.where(np.isfinite(outside), outside, inside + sign * step)
+    for _ in range(_DOUBLINGS):
+        short = np.isinf(outside) & ~reached(far)
+        if not short.any():
+            break
+        step = np.where(short, step * 2, step)
+        far = np.where(short, inside + sign * step, far)
+    return far
+
+
+def _halve(reached: Callable[[Floats], Truth], inside: Floats, outside: Floats, whole: bool) -> Floats:
+    """Return the rates nearest to `inside` at which the target is reached, by halving the numbers between."""
+    order, value = (_as_whole, _as_float) if whole else (_order, _value)
+    near, far = order(inside), order(outside)
+    for _ in range(_HALVINGS):
+        middle = near + (far - near) // 2
+        hit = reached(value(middle))
+        far, near = np.where(hit, middle, far), np.where(hit, near, middle)
+        if (np.abs(far - near) <= 1).all():
+            break
+    return value(far)
+
+
+def _as_whole(values: Floats) -> NDArray[np.int64]:
+    return np.rint(values).astype(np.int64)
+
+
+def _as_float(places: NDArray[np.int64]) -> Floats:
+    return places.astype(float)
+
+
+def _order(values: Floats) -> NDArray[np.int64]:
+    """Return the place of each number among all floating-point numbers: halving it halves scales, too."""
+    bits = np.ascontiguousarray(values).view(np.int64)
+    return np.where(bits < 0, np.int64(-(2**63)) - bits, bits)
+
+
+def _value(places: NDArray[np.int64]) -> Floats:
+    bits = np.where(places < 0, np.int64(-(2**63)) - places, places)
+    return bits.view(np.float64)
+
+
+def best(plans: Sequence[Plan], rate: object) -> Plan:
+    """Return the most powerful plan at a rate; of equals the one that inspects less, then the first.
+
+    Parameters
+    ----------
+    plans : sequence of Plan
+        All about the same parameter.
+    rate : float, int or str
+        As typed.
+
+    Raises
+    ------
+    InvalidValue
+        When the plans' parameters differ.
+    """
+    _same_parameter(plans)
+    return max(plans, key=lambda plan: (power(plan, rate), -_extent(plan)))
+
+
+def _extent(plan: Plan) -> float:
+    value = getattr(plan.design, kind_of(plan).grammar.extent, 0.0)
+    return float(value) if isinstance(value, int | float) else 0.0
+
+
+def crossing(plan_a: Plan, plan_b: Plan) -> list[float]:
+    """Return the rates at which the power curves of two plans cross, in rising order.
+
+    The curves are compared at the rates where either reaches powers from 1e-9 to 1 - 1e-9, so the search
+    looks closely where they bend; each change of sign is then halved down to neighbouring numbers. In a
+    finite lot the rate is the first whole number of defectives at which the order has changed.
+
+    Raises
+    ------
+    InvalidValue
+        When the plans' parameters differ.
+    NoAnswer
+        When one plan is at least as powerful throughout.
+
+    Examples
+    --------
+    >>> from steelyard.core.text import read_plan
+    >>> plans = [read_plan(f"binomial | {text}") for text in ("n 50 | reject x>=4", "n 20 | reject x>=2")]
+    >>> [round(rate, 4) for rate in crossing(*plans)]
+    [0.0734]
+    """
+    plans = (plan_a, plan_b)
+    _same_parameter(plans)
+    whole = kind_of(plan_a).parameters[0].whole
+    grid = np.unique(np.concatenate([_landmarks(plan) for plan in plans]))
+    signs = _ahead(plans, grid)
+    kept = signs != 0
+    grid, signs = grid[kept], signs[kept]
+    turns = np.flatnonzero(signs[1:] != signs[:-1])
+    if not turns.size:
+        message = "the two power curves do not cross: one is at least as high throughout"
+        raise NoAnswer(message)
+    before = signs[turns]
+    found = _halve(lambda rates: _ahead(plans, rates) == -before, grid[turns], grid[turns + 1], whole)
+    return [float(rate) for rate in found]
+
+
+def _landmarks(plan: Plan) -> Floats:
+    ends = (_DOWNWARDS, _UPWARDS) if claims_both_sides(plan) else (None,)
+    found = np.concatenate([rates_for([plan], list(_GRID), end)[0] for end in ends])
+    return found[np.isfinite(found)]
+
+
+def _ahead(plans: Sequence[Plan], rates: Floats) -> Floats:
+    """Return the sign of the first plan's power minus the second's, from whichever tail is small."""
+    kinds = [kind_of(plan) for plan in plans]
+    columns = [kind.columns([plan]) for kind, plan in zip(kinds, plans, strict=True)]
+    safe = [kind.parameters[0].convert(rates, own) for kind, own in zip(kinds, columns, strict=True)]
+    first, second = (kind.reject(own, rate) for kind, own, rate in zip(kinds, columns, safe, strict=True))
+    missed, let = (kind.accept(own, rate) for kind, own, rate in zip(kinds, columns, safe, strict=True))
+    difference = np.where(first < 0.5, first - second, let - missed)
+    size_of_it = np.where(first < 0.5, first + second, let + missed)
+    return np.where(np.abs(difference) <= 1e-12 * size_of_it, 0.0, np.sign(difference))
+
+
+def _same_parameter(plans: Sequence[Plan]) -> None:
+    symbols = list(dict.fromkeys(kind_of(plan).parameters[0].symbol for plan in plans))
+    if len(symbols) > 1:
+        raise InvalidValue("plans", "be about the same parameter", " and ".join(symbols))
