@@ -10,7 +10,7 @@ from steelyard.addin import ask, explain, make
 from steelyard.addin.catalogue import CATALOGUE, Cells
 from steelyard.addin.cells import refusal
 
-__all__ = ["CATALOGUE", "call", *sorted(CATALOGUE)]  # noqa: PLE0604 (names come from the catalogue)
+__all__ = ["CATALOGUE", "call", *sorted(CATALOGUE)]
 
 globals().update({name: entry.function for name, entry in CATALOGUE.items()})
 

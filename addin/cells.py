@@ -114,7 +114,7 @@ def _over_ranges(
     """Answer cell by cell where an argument is a range; ranges broadcast like rows against columns."""
     try:
         given = [_range(value, place, arguments) for place, value in enumerate(cells)]
-        rows, columns = _shape([value for value in given if isinstance(value, list)], arguments, given)
+        rows, columns = _shape(arguments, given)
     except SteelyardError as error:
         return refusal(error)
     if not any(isinstance(value, list) for value in given):
@@ -168,9 +168,8 @@ def _range(value: Cells, place: int, arguments: Sequence[Argument]) -> Any:
     return rows[0][0] if len(rows) == len(rows[0]) == 1 else rows
 
 
-def _shape(
-    ranges: Sequence[list[list[Any]]], arguments: Sequence[Argument], given: Sequence[Any]
-) -> tuple[int, int]:
+def _shape(arguments: Sequence[Argument], given: Sequence[Any]) -> tuple[int, int]:
+    ranges = [value for value in given if isinstance(value, list)]
     if not ranges:
         return 1, 1
     rows, columns = max(map(len, ranges)), max(len(value[0]) for value in ranges)

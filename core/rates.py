@@ -20,9 +20,8 @@ from steelyard.core.questions import power, size
 
 _DOUBLINGS, _HALVINGS = 80, 64
 _UPWARDS, _DOWNWARDS = "upper", "lower"
-_GRID = np.concatenate(
-    [10.0 ** np.arange(-9, -2), np.arange(0.01, 1, 0.01), 1 - 10.0 ** np.arange(-3, -10, -1)]
-)
+_SMALL = 10.0 ** np.arange(-9, -2)
+_GRID = np.concatenate([_SMALL, np.arange(0.01, 1, 0.01), 1 - _SMALL[::-1]])
 
 Truth = NDArray[np.bool_]
 
@@ -61,10 +60,7 @@ def rate_for(plan: Plan, target: float, end: str | None = None) -> float:
     """
     end = _end(plan, end)
     if claims_both_sides(plan) and target <= (least := size(plan)):
-        message = (
-            f"the target must be greater than the plan's size {least:.6g}, but got {write_number(target)}"
-        )
-        raise NoAnswer(message)
+        raise InvalidValue("power", f"be greater than the plan's size {least:.6g}", target)
     found = float(rates_for([plan], [target], end)[0, 0])
     if np.isnan(found):
         message = f"the power reaches {write_number(target)} at no rate on this side"
@@ -260,7 +256,7 @@ def crossing(plan_a: Plan, plan_b: Plan) -> list[float]:
     >>> from steelyard.core.text import read_plan
     >>> plans = [read_plan(f"binomial | {text}") for text in ("n 50 | reject x>=4", "n 20 | reject x>=2")]
     >>> [round(rate, 4) for rate in crossing(*plans)]
-    [0.0734]
+    [0.0567]
     """
     plans = (plan_a, plan_b)
     _same_parameter(plans)

@@ -10,7 +10,7 @@ from steelyard.core.parameter import show_rate
 from steelyard.core.plan import Plan, Reject
 from steelyard.core.questions import region, size
 from steelyard.core.rates import rate_for
-from steelyard.core.regions import critical_region
+from steelyard.core.regions import critical_region, empty_tails
 
 _CLAIMED = {"<=": "at most", ">=": "at least", "=": "exactly"}
 NOT_PROOF = "Not rejecting a claim does not prove it; a sample proves no lot free of defects."
@@ -25,7 +25,7 @@ def check(plan: Plan) -> str:
     >>> check(read_plan("binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4"))
     'ok'
     >>> check(read_plan("binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=5"))
-    'size 0.3213 %; alpha 5 % would give x ≥ 4'
+    'size 0.321 %; alpha 5 % would give x ≥ 4'
     """
     if plan.claim is None or plan.alpha is None:
         return "ok"
@@ -36,12 +36,7 @@ def check(plan: Plan) -> str:
         notes.append(f"size {show_rate(actual)}; alpha {show_rate(plan.alpha)} would give {other}")
     elif actual > plan.alpha * (1 + 1e-12):
         notes.append(f"size {show_rate(actual)} exceeds alpha {show_rate(plan.alpha)}")
-    if (
-        plan.claim.side == "either"
-        and isinstance(plan.rule, Reject)
-        and None in (plan.rule.low, plan.rule.high)
-    ):
-        notes.append("the other tail is empty: no count there can reject")
+    notes += [str(tail) for tail in empty_tails(plan)]
     return "; ".join(notes) or "ok"
 
 
