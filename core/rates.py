@@ -56,7 +56,7 @@ def rate_for(plan: Plan, target: float, end: str | None = None) -> float:
     >>> from steelyard.core.text import read_plan
     >>> plan = read_plan("binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4")
     >>> round(rate_for(plan, 0.9), 6)
-    0.128757
+    0.128756
     """
     end = _end(plan, end)
     if claims_both_sides(plan) and target <= (least := size(plan)):
