@@ -16,13 +16,13 @@ C. J. Clopper and E. S. Pearson, Biometrika 26 (1934), 404-413; F. Garwood, Biom
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
 from steelyard.core.parameter import Columns, Floats
-from steelyard.core.splits import ONE_SIDED, Tail, Truth, first_whole, opposite, tails_of, weigh, within
+from steelyard.core.splits import ONE_SIDED, Tail, Truth, opposite, tails_of, weigh, within
 
 if TYPE_CHECKING:
     from steelyard.core.law import CountLaw, RateLaw
@@ -33,6 +33,7 @@ _OWN = {"lower": ("high", "low", 1.0), "upper": ("low", "high", -1.0)}
 _CLOSE = 1e-8  # relative step from which on Newton's method must get better with every step
 _TIE = 1e-12
 _TINY = 1e-300
+_POINTS = 32
 
 
 def rate_limit(law: RateLaw, row: Row, x: float, end: str, miss: float, split: str) -> float:
@@ -83,25 +84,42 @@ def lot_limit(law: CountLaw, row: Row, x: float, end: str, miss: float, split: s
     3.0
     """
     columns, (own, _, inwards) = dict(row), _OWN[end]
-    least, most = x, float(row["lot"] - row["n"] + x)
-    start, stop = (least, most) if end == "lower" else (most, least)
+    span = float(row["lot"] - row["n"])
+    outermost = x if end == "lower" else x + span
 
-    def possible(count: Floats, bound: float, split: str) -> Truth:
-        inside = np.clip(count, least, most)
-        tails = tails_of(law, columns, inside, np.asarray(x), own, split)
-        return ~within(law, columns, inside, tails, bound) | ((count - stop) * inwards >= 0)
+    def possible(distance: Floats, bound: float, split: str) -> Truth:
+        count = outermost + inwards * np.minimum(distance, span)
+        tails = tails_of(law, columns, count, np.asarray(x), own, split)
+        return ~within(law, columns, count, tails, bound) | (distance >= span)
 
     if split != "rarest":
-        return float(first_whole(lambda count: possible(count, miss, split), np.asarray(start), inwards))
+        return outermost + inwards * _first(lambda distance: possible(distance, miss, split), span)
     outside = miss / _most_times(row["n"] / 4)
-    place = float(first_whole(lambda count: possible(count, outside, ONE_SIDED), np.asarray(start), inwards))
+    start = _first(lambda distance: possible(distance, outside, ONE_SIDED), span)
     for length in (64 * 2**k for k in range(64)):  # longer and longer stretches, so that it ends soon
-        stretch = place + inwards * np.arange(length)
+        stretch = start + np.arange(length)
         found = possible(stretch, miss, split)
         if found.any():
-            return float(stretch[found.argmax()])
-        place += inwards * length
+            return float(outermost + inwards * stretch[found.argmax()])
+        start += length
     raise AssertionError("unreachable: the far end is possible")
+
+
+def _first(predicate: Callable[[Floats], Truth], last: float) -> float:
+    """Return the first whole number from 0 to `last` where a monotone predicate is true, as it is at `last`.
+
+    Like bisection, but many points in each round: one call for many costs little more than one for one.
+    """
+    below, above = -1.0, last
+    while above - below > 1:
+        points = np.arange(below + 1, above, max(1.0, (above - below) // _POINTS))
+        found = predicate(points)
+        place = int(found.argmax())
+        if not found[place]:
+            below = float(points[-1])
+        else:
+            below, above = float(points[place - 1]) if place else below, float(points[place])
+    return above
 
 
 def _one_sided(law: RateLaw, columns: Columns, x: float, own: str, miss: float) -> float:

@@ -111,7 +111,8 @@ def p_value(law: CountLaw, columns: Columns, rate: Floats, x: Floats, side: str,
     """
     split = split if side == "either" else ONE_SIDED
     found = [weigh(law, columns, rate, tails_of(law, columns, rate, x, end, split)) for end in ENDS[side]]
-    return np.minimum.reduce(found)
+    smallest: Floats = np.minimum.reduce(found)
+    return smallest
 
 
 def tails_of(law: CountLaw, columns: Columns, rate: Floats, x: Floats, end: str, split: str) -> list[Tail]:
@@ -148,8 +149,9 @@ def tails_of(law: CountLaw, columns: Columns, rate: Floats, x: Floats, end: str,
 def weigh(law: CountLaw, columns: Columns, rate: Floats, tails: list[Tail]) -> Floats:
     """Return the weighted sum of tails, at most 1."""
     sides = {"low": law.at_most, "high": law.at_least}
-    total: Any = sum(weight * sides[end](x, columns, rate) for weight, end, x in tails)
-    return np.minimum(total, 1.0)
+    parts = [weight * sides[end](x, columns, rate) for weight, end, x in tails]
+    total: Floats = np.minimum(sum(parts[1:], parts[0]), 1.0)
+    return total
 
 
 def within(law: CountLaw, columns: Columns, rate: Floats, tails: list[Tail], alpha: Any) -> Truth:

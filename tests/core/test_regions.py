@@ -137,7 +137,9 @@ def test_critical_counts_of_many_designs_are_the_ends_of_their_regions(kind: str
     assert sum(map(len, groups.values())) == CASES
     for (side, split), members in groups.items():
         fields = KINDS[kind].grammar.fields
-        columns = {f.attribute: np.array([getattr(c.design, f.attribute) for c, _ in members]) for f in fields}
+        columns = {
+            f.attribute: np.array([getattr(c.design, f.attribute) for c, _ in members]) for f in fields
+        }
         rates = np.array([case.claim.value for case, _ in members])
         alphas = np.array([alpha for _, alpha in members])
         shared = split if side == "either" else ONE_SIDED
