@@ -43,7 +43,7 @@ _FAR_POISSON = 1e-16  # below: gammainc and gammaincc pass 1e-12 at large means
 _LEVELS = 16  # of the continued fraction; full precision from eight standard deviations outwards
 _CHUNK = 4096  # elements of the far tail at a time, so that they stay in the cache
 _TINY = 1e-300
-_ENDLESS = np.array(np.inf)
+_ENDLESS = np.array(np.finfo(float).max)  # so that infinity lies beyond
 
 Kernel = Callable[..., Floats]
 
@@ -107,7 +107,7 @@ def _inside(
     below, above = x < low, x > high
     if not _any(below | above):
         return kernel(x, *rest)
-    value = kernel(np.clip(x, low, np.maximum(high, low)), *rest)
+    value = kernel(np.where(below | above, low, x), *rest)  # any x that the kernel takes will do outside
     return np.where(below, ends[0], np.where(above, ends[1], value))
 
 
