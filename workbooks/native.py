@@ -1,6 +1,6 @@
 """Power from the spreadsheet's own functions, so that anybody can check a plan without Steelyard.
 
-The formulas take sample size and critical counts from cells and follow them when these change. Upper tails are
+The formulas take sample size and critical counts from cells and follow when these change. Upper tails are
 lower tails of the items that are not counted, because 1 minus a lower tail loses small probabilities; for
 defects per unit they are a gamma distribution.
 """
@@ -43,7 +43,7 @@ TAILS = {
 
 
 def power_formula(kind: str, low: str, high: str, rate: str, **design: str) -> str:
-    """Return the chance that the claim is rejected, from cells; a critical count that is a text is an empty tail.
+    """Return the chance that the claim is rejected, from cells; a text as critical count is an empty tail.
 
     Examples
     --------

@@ -10,9 +10,11 @@ from typing import Any
 from steelyard.core.claims import claim_from
 from steelyard.core.errors import InvalidValue, SteelyardError
 from steelyard.core.kind import Kind, kind_of
-from steelyard.core.making import design_from, extent_values, kind_named, plan_from_claim, smallest_from
+from steelyard.core.making import design_from, extent_values, kind_named, plan_from_claim
+from steelyard.core.need import need_from
 from steelyard.core.numbers import read_number
-from steelyard.core.plan import Plan, split_claim
+from steelyard.core.plan import Claim, Plan, split_claim
+from steelyard.core.smallest import smallest_plan
 from steelyard.core.text import write_plan
 from steelyard.workbooks.columns import COLUMNS
 from steelyard.workbooks.requests import Problem, Request
@@ -41,6 +43,8 @@ class Planned:
         The claim's boundary as a cell holds it: a number, or text where only a text says it.
     catches : tuple
         No, one or two rates to catch, likewise.
+    own_catches : tuple of float
+        The same in the parameter's own unit: a share of a lot as a whole number of items.
     """
 
     number: int
@@ -50,6 +54,7 @@ class Planned:
     alpha: float
     claim: float | str
     catches: tuple[float | str, ...]
+    own_catches: tuple[float, ...]
 
     @property
     def kind(self) -> Kind:
@@ -108,18 +113,19 @@ class _Refused(Exception):  # noqa: N818 (it carries a problem, it is none)
 def _plan(request: Request, number: int) -> Planned:
     with _blamed_on("kind", request):
         kind = kind_named(request.kind)
-    extra = _extra(kind, request)
-    alpha = request.alpha or ALPHA
-    catches = _catches(request)
-    if request.n is None:
-        plan = _smallest(kind, request, alpha, extra)
-    else:
-        plan = _of_size(kind, request, alpha, extra)
-        _check_catches(plan, request, catches)
-    claim = _cell(_boundary(request.claim), request, kind)
-    return Planned(
-        number, request, plan, write_plan(plan), alpha, claim, tuple(_cell(c, request, kind) for c in catches)
-    )
+    extra, alpha = _extra(kind, request), request.alpha or ALPHA
+    design = _design(kind, request, extra)
+    with _blamed_on("claim", request):
+        claim = claim_from(kind, request.claim, request.side, design)
+        kind.check_claim(claim, design)
+    catches = _catches(kind, request, claim, alpha, extra)
+    with _blamed_on("catch" if request.n is None else "n", request):
+        plan = (
+            _smallest(request, alpha, extra) if request.n is None else _of_size(kind, request, alpha, extra)
+        )
+    typed = [_cell(rate, kind) for rate in (request.catch or "").split(" and ") if rate.strip()]
+    boundary = _cell(_boundary(request.claim), kind)
+    return Planned(number, request, plan, write_plan(plan), alpha, boundary, tuple(typed), catches)
 
 
 def _extra(kind: Kind, request: Request) -> float | None:
@@ -134,50 +140,48 @@ def _extra(kind: Kind, request: Request) -> float | None:
     return getattr(request, wanted) if wanted else None
 
 
-def _of_size(kind: Kind, request: Request, alpha: float, extra: Any) -> Plan:
-    values = extent_values(kind, request.n, extra)
+def _design(kind: Kind, request: Request, extra: float | None) -> Any:
+    """Return the design; where the size is sought, one of size 1 stands in."""
     with _blamed_on("n", request):
-        design = design_from(kind, values)
-    with _blamed_on("claim", request):
-        claim_from(kind, request.claim, request.side, design)
-        return plan_from_claim(request.kind, values, request.claim, alpha, request.side, *_options(request))
+        return design_from(kind, extent_values(kind, request.n or 1, extra))
 
 
-def _smallest(kind: Kind, request: Request, alpha: float, extra: Any) -> Plan:
+def _catches(
+    kind: Kind, request: Request, claim: Claim, alpha: float, extra: float | None
+) -> tuple[float, ...]:
+    """Return the rates to catch in the parameter's own unit, each where the claim is false."""
     for column in ("catch", "power"):
-        if getattr(request, column) is None:
+        if request.n is None and getattr(request, column) is None:
             raise _Refused(Problem(request.row, column, None, "given where n is left empty"))
+    if request.catch is None:
+        return ()
+    power = request.power or (1 + alpha) / 2  # of a size that is given the power need not be asked for
     with _blamed_on("catch", request):
-        return smallest_from(
-            request.kind,
-            request.claim,
-            alpha,
-            request.catch,
-            request.power or 0.0,
-            request.side,
-            "first",
-            extra,
-            *_options(request),
-        )
+        return need_from(kind.grammar.kind, str(claim), alpha, request.catch, power, extra=extra).catches
+
+
+def _of_size(kind: Kind, request: Request, alpha: float, extra: float | None) -> Plan:
+    values = extent_values(kind, request.n, extra)
+    return plan_from_claim(request.kind, values, request.claim, alpha, request.side, *_options(request))
+
+
+def _smallest(request: Request, alpha: float, extra: float | None) -> Plan:
+    split, verdict = _options(request)
+    return smallest_plan(
+        request.kind,
+        request.claim,
+        alpha,
+        request.catch,
+        request.power,
+        side=request.side,
+        extra=extra,
+        split=split,
+        verdict=verdict,
+    )
 
 
 def _options(request: Request) -> tuple[str, str]:
     return request.split or "half", request.verdict or "fail"
-
-
-def _catches(request: Request) -> list[str]:
-    return [part.strip() for part in (request.catch or "").split(" and ") if part.strip()]
-
-
-def _check_catches(plan: Plan, request: Request, catches: Sequence[str]) -> None:
-    """Refuse a rate to catch that is no rate, or at which the claim is true."""
-    assert plan.claim is not None
-    for catch in catches:
-        with _blamed_on("catch", request):
-            parameter = kind_of(plan).parameters[0]
-            value = parameter.read(catch, plan.design)
-            if plan.claim.holds(value):
-                raise InvalidValue("catch", f"lie where the claim {plan.claim} is false", catch)
 
 
 def _boundary(claim: str) -> str:
@@ -185,9 +189,9 @@ def _boundary(claim: str) -> str:
     return split_claim(claim)[2] if any(sign in claim for sign in "<>=≤≥") else claim
 
 
-def _cell(typed: str, request: Request, kind: Kind) -> float | str:
-    """Return what a cell holds for a rate: its number, unless a lot's ``100%`` would then be read as 1 item."""
-    number = read_number(typed, request.kind)
+def _cell(typed: str, kind: Kind) -> float | str:
+    """Return what a cell holds for a rate: its number, unless a lot's ``100%`` would then become 1 item."""
+    number = read_number(typed, "rate")
     return typed if kind.grammar.extra == "lot" and number >= 1 and typed.rstrip().endswith("%") else number
 
 

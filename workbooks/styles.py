@@ -82,7 +82,8 @@ LOOKS = {
 #: Formats of numbers; sections in brackets show more digits where a risk is small.
 DIGITS = {
     "count": Digits("#,##0", 8),
-    "number": Digits("0.######", 9),
+    "number": Digits("General", 9),
+    "value": Digits("[>=10]0.00;[>=1]0.000;0.00000", 9),
     "power": Digits("0.0000", 7),
     "risk": Digits("[=0]0%;[<0.001]0.0000%;0.00%", 8),
     "rate": Digits("0.0###%", 7),

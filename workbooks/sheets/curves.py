@@ -1,4 +1,4 @@
-"""The chart of one plan: power, chance to pass, and lines at the claim, the rate to catch and the power wanted.
+"""The chart of one plan: power, chance to pass, lines at the claim, the rate to catch, the power wanted.
 
 Its points stand right of what is printed, as array formulas that follow the plan.
 """
@@ -11,8 +11,8 @@ from collections.abc import Sequence
 from steelyard.workbooks.charts import Axis, Curve, Role, curve_chart
 from steelyard.workbooks.house import LiveArray, Put, Sheet
 from steelyard.workbooks.sheets import rows
-from steelyard.workbooks.sheets.grid import nice
 from steelyard.workbooks.sheets.register import Register
+from steelyard.workbooks.sheets.scales import clean, nice, rate_axis
 from steelyard.workbooks.terms import Terms, ask
 
 POINTS = 60
@@ -36,7 +36,7 @@ def table_rates(register: Register, place: int, count: int) -> list[float]:
     found = set(marked)
     for parts in range(count, 1, -1):
         step = max(1.0, float(math.ceil(nice(end / parts)))) if lots else nice(end / parts)
-        steps = [float(f"{step * i:.12g}") for i in range(math.ceil(end / step - 1e-9) + 1)]
+        steps = [clean(step * i) for i in range(math.ceil(end / step - 1e-9) + 1)]
         tried = {rate for rate in steps if rate <= upper} | set(marked)
         if len(tried) <= count:
             found = tried
@@ -63,7 +63,7 @@ def add_curves(sheet: Sheet, register: Register, place: int, end: float) -> None
     planned, top = register.planned[place], sheet.next_row
     lots = rows.in_lots(planned)
     step = float(max(1, math.ceil(end / POINTS))) if lots else end / POINTS
-    rates = [float(f"{step * i:.12g}") for i in range(math.floor(end / step + 1e-9) + 1)]
+    rates = [clean(step * i) for i in range(math.floor(end / step + 1e-9) + 1)]
     last = top + len(rates)
     _write_points(sheet, register, place, rates)
     lines = _marks(sheet, register, place, end)
@@ -75,10 +75,10 @@ def add_curves(sheet: Sheet, register: Register, place: int, end: float) -> None
         *lines,
     ]
     name = f"true {planned.kind.parameters[0].name}"
-    digits = "0.####%" if rows.rate_style(planned) == "rate" else "General"
+    axis = rate_axis(name, end, percent=rows.rate_style(planned) == "rate")
     chart = curve_chart(
         "Power and chance to pass",
-        Axis(name, digits=digits),
+        axis,
         Axis("probability", 1.0),
         curves,
         _WIDTH,

@@ -12,15 +12,15 @@ from steelyard.workbooks.charts import Axis, Curve, curve_chart
 from steelyard.workbooks.house import Book, Put, Sheet, between
 from steelyard.workbooks.sheets import paper, rows
 from steelyard.workbooks.sheets.register import Register
+from steelyard.workbooks.sheets.scales import clean, nice, rate_axis
 from steelyard.workbooks.terms import Terms, across, ask, column
 
 TITLE = "Power grid"
-STEPS = 16
+STEPS = 20
 MOST_CURVES = 12
 
 _SPREAD = 4  # plans whose scales differ by more stand in another block
 _LEFT, _RIGHT = get_column_letter(4), get_column_letter(4 + STEPS)
-_NICE = (1, 2, 2.5, 5, 10)
 
 
 @dataclass(frozen=True, slots=True)
@@ -33,7 +33,7 @@ class Block:
     @property
     def rates(self) -> list[float]:
         """The true values across."""
-        return [float(f"{self.step * i:.12g}") for i in range(STEPS + 1)]
+        return [clean(self.step * i) for i in range(STEPS + 1)]
 
 
 def blocks(register: Register) -> list[Block]:
@@ -71,23 +71,10 @@ def _block(register: Register, places: Sequence[int], reach: float) -> Block:
     return Block(tuple(places), step)
 
 
-def nice(step: float) -> float:
-    """Return the next round number: 1, 2, 2.5 or 5 times a power of ten.
-
-    Examples
-    --------
-    >>> nice(0.0163), nice(0.25), nice(21)
-    (0.02, 0.25, 25.0)
-    """
-    power = 10.0 ** math.floor(math.log10(step))
-    factor = next(factor for factor in _NICE if factor * power >= step * (1 - 1e-9))
-    return float(f"{factor * power:.12g}")
-
-
 def add_grid(book: Book, register: Register) -> Sheet:
     """Add the sheet and return it."""
     widths = {"A": 5.0, "B": 27.0, "C": 44.0}
-    widths |= {get_column_letter(4 + i): 8.3 for i in range(STEPS + 1)}
+    widths |= {get_column_letter(4 + i): 7.6 for i in range(STEPS + 1)}
     sheet = book.sheet(TITLE, widths)
     sheet.add(Put("Power grid", "title"))
     sheet.add(Put("The chance that each plan rejects its claim, by the true value.", "subtitle"))
@@ -106,7 +93,7 @@ def add_grid(book: Book, register: Register) -> Sheet:
     sheet.freeze("C4")
     sheet.protect()
     sheet.print_setup(landscape=True, area=f"A1:{_RIGHT}{sheet.next_row - 1}")
-    paper.fixed_scale(sheet, 61)
+    paper.fixed_scale(sheet, 58)
     return sheet
 
 
@@ -160,10 +147,10 @@ def _choose(sheet: Sheet, table: range, register: Register, block: Block, power:
 def _add_chart(sheet: Sheet, name: str, style: str, head: int, drawn: range, end: float) -> None:
     x = sheet.ref(f"{_LEFT}{head}", f"{_RIGHT}{head}")
     curves = [Curve(sheet.ref(f"B{row}"), x, sheet.ref(f"{_LEFT}{row}", f"{_RIGHT}{row}")) for row in drawn]
-    axis = Axis(f"true {name}", high=end, digits="0.####%" if style == "rate" else "General")
+    axis = rate_axis(f"true {name}", end, percent=style == "rate")
     sheet.skip()
     chart = curve_chart(
-        "Power by the true value", axis, Axis("power: chance of rejecting", 1.0), curves, 39.0, 12.0
+        "Power by the true value", axis, Axis("power: chance of rejecting", 1.0), curves, 42.5, 13.0
     )
     sheet.chart(
         chart,

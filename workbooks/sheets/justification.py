@@ -1,4 +1,4 @@
-"""A *Justification*: what a plan tests, at which risks and why, on two pages that are signed before sampling."""
+"""A *Justification*: what a plan tests, at which risks and why, on two pages signed before sampling."""
 
 from __future__ import annotations
 
@@ -23,10 +23,10 @@ _ALTERNATIVE = {
     "either": "differs from the claim",
 }
 _PASSING = {
-    "fail": "The sample does not contradict the claim. It proves neither the claim nor a lot free of defects.",
-    "pass": "The sample contradicts the claim; with probability alpha at most it does so while the claim is true.",
+    "fail": "The sample does not contradict the claim. It proves neither the claim nor a lot without defects.",
+    "pass": "The sample contradicts the claim; while the claim is true it does so with probability alpha at most.",
 }
-_AFTER = "The lot is dealt with by the procedure for failed lots. No second sample is taken: the plan has only one."
+_AFTER = "The procedure for failed lots applies. No second sample is taken: the plan has only one."
 _GENERAL = (
     "The process is stable over what the claim is about.",
     "The inspection method is validated for this characteristic.",
@@ -157,8 +157,14 @@ class _Page:
             sheet.add(Put(label, "label"), *ask(self.host, name, self.plan, spread).arrays("result power"))
         sheet.add(None, *(Put(text, "heading", 2) for text in ("95 %", "50 %", "10 %", "5 %")))
         last = self.register.passing("p05", self.place)
-        accepted = [self._link(key, f"result {self.style}", 2) for key in ("p95", "p50", "p10")]
-        sheet.add(Put("Passes with this chance", "label"), *accepted, _wide(last, f"result {self.style}", 2))
+        accepted = [
+            self._link(key, f"result {rows.result_style(self.planned)}", 2) for key in ("p95", "p50", "p10")
+        ]
+        sheet.add(
+            Put("Passes with this chance", "label"),
+            *accepted,
+            _wide(last, f"result {rows.result_style(self.planned)}", 2),
+        )
         add_curves(sheet, self.register, self.place, rates[-1])
 
     def native_check(self) -> None:

@@ -18,9 +18,9 @@ SHEETS = (
 )
 STEPS = (
     "Edit the yellow cells of the Register; plan, risks and curves follow when Steelyard's add-in is loaded.",
-    "Read the remark on each plan, and the shortfall where a size was fixed: it tells how much power is missing.",
-    "Print the justification sheets, fill in what they leave open, and have them signed before any sample is taken.",
-    "Without the add-in all numbers stay as they were computed; the green columns are recalculated by any spreadsheet program.",
+    "Read the remark on each plan, and where a size was fixed the shortfall: how much power is missing.",
+    "Print the justifications, fill in what they leave open, have them signed before any sample is taken.",
+    "Without the add-in the numbers stay as they were computed; green columns need no add-in at all.",
     "To add characteristics, or to change their kind, extend the request list and build the book anew.",
 )
 CAUTIONS = (
@@ -91,7 +91,7 @@ def _connection(sheet: Sheet) -> None:
         None,
         Put("Connection", "label"),
         Live(
-            f'=IF(C{live}=C{built},"The add-in is of the version that built this book.",'
+            f'=IF(C{live}&""=C{built},"The add-in is of the version that built this book.",'
             f'IF(ISERROR(FIND("not",C{live})),"The add-in is of another version than the book: '
             f'newer functions may be missing.","The numbers shown need the add-in to follow your edits."))',
             "The add-in is of the version that built this book.",

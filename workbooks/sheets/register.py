@@ -33,9 +33,9 @@ class Head:
 
 
 HEADS = (
-    Head("number", "No.", 5, "Request"),
+    Head("number", "No.", 5),
     Head("name", "Characteristic", 27),
-    Head("kind", "Kind", 14.5),
+    Head("kind", "Kind", 14.5, "Request"),
     Head("unit", "Unit", 20),
     Head("claim", "Claim", 9),
     Head("side", "Side", 7.5),
@@ -71,6 +71,11 @@ REQUESTED = [head.key for head in HEADS].index("plan")  # columns of the request
 _CHANCE = between(1e-12, 1 - 1e-12, "Probability", "Between 0 and 1: type 5% or 0.05.", blank=True)
 _SIZE = between(
     1e-9, 1e9, "Sample size", "Items or units to inspect. Empty: the smallest plan is sought.", blank=True
+)
+_NOTES = (
+    "Yellow cells may be edited; what stands right of them follows.",
+    "Where the side is either, the true values that pass with 95, 50 and 10 % are those above the claim;",
+    "in a lot they are the first whole numbers that pass with that chance or less.",
 )
 _PASSING = {"p95": 0.95, "p50": 0.5, "p10": 0.1, "p05": 0.05}
 
@@ -178,16 +183,15 @@ class Register:
         words = literals(self._each(lambda planned: planned.kind.grammar.extent))
         self._live("size", ask(host, "FIELD", plans, words), "result number")
         for key, end, missing in (("low", "lower", "above"), ("high", "upper", "below")):
-            self._live(
-                key, _critical(ask(host, "CRITICAL", plans, literal(end)), self._terms["side"], missing)
-            )
+            critical = _critical(ask(host, "CRITICAL", plans, literal(end)), self._terms["side"], missing)
+            self._live(key, critical, "index count")
 
     def _write_risks(self) -> None:
         host, plans = self.book.host, self._terms["plan"]
-        styles = self._each(lambda planned: f"result {rows.rate_style(planned)}")
+        styles = self._each(lambda planned: f"result {rows.result_style(planned)}")
         self._live("actual", ask(host, "SIZE", plans), "result risk")
-        for key, typed in (("catch_own", "catch"), ("second_own", "second")):
-            self._live(key, self._own_catches(typed), styles)
+        for number, key in enumerate(("catch", "second")):
+            self._live(f"{key}_own", self._own_catches(number, key), styles)
         powers = [
             ask(host, "POWER", plans, self._terms[f"{key}_own"], unless_blank=self._terms[key])
             for key in ("catch", "second")
@@ -197,12 +201,12 @@ class Register:
         for key in ("p95", "p50", "p10"):
             self._live(key, _passing(host, key, self._terms), styles)
 
-    def _own_catches(self, key: str) -> Terms:
+    def _own_catches(self, number: int, key: str) -> Terms:
         texts, cells = [], []
         for place, planned in enumerate(self.planned):
-            at, upper = self._at(place), key == "second"
-            texts.append(rows.own_catch_formula(planned, at[key], at, upper))
-            cells.append([rows.own_catch(planned, self.value(key, place), upper)])
+            at = self._at(place)
+            texts.append(rows.own_catch_formula(planned, number, at[key], at))
+            cells.append([(*planned.own_catches, None, None)[number]])
         return Terms(tuple(texts), cells)
 
     def _least(self, first: Terms, second: Terms) -> Terms:
@@ -245,18 +249,18 @@ class Register:
         sheet = self.book.sheet(TITLE, {PLACE[head.key]: head.width for head in HEADS})
         sheet.add(Put("Register", "title"))
         sheet.add(
-            Put(
-                "A row for each characteristic: what was asked for, the plan, and what the plan does.",
-                "subtitle",
-            )
+            None,
+            None,
+            Put("What was asked for, the plan that answers it, and what the plan does.", "subtitle"),
         )
-        sheet.add(Put("Yellow cells may be edited; what stands right of them follows.", "note", REQUESTED))
+        sheet.add(None, None, Put(" ".join(_NOTES), "note", REQUESTED - 2))
         sheet.skip()
         sheet.add(*(Put(head.group, "section") if head.group else None for head in HEADS))
         sheet.add(*(Put(head.text, "heading") for head in HEADS))
         sheet.rows([self._pieces[head.key][place] for head in HEADS] for place in range(len(self.planned)))
         last, check = sheet.next_row - 1, PLACE["check"]
         sheet.freeze(f"{PLACE['kind']}{FIRST}")
+        sheet.flag(f"{check}{FIRST}:{check}{last}", f'={check}{FIRST}&""<>"ok"')
         sheet.flag(
             f"{PLACE['agrees']}{FIRST}:{PLACE['agrees']}{last}", f'={PLACE["agrees"]}{FIRST}="{DIFFERS}"'
         )
@@ -289,7 +293,7 @@ def _critical(terms: Terms, sides: Terms, missing: str) -> Terms:
 
 
 def _passing(host: str, chance: str, terms: dict[str, Terms]) -> Terms:
-    """Return the true values at which plans pass with a chance; rejecting means passing in a demonstration."""
+    """Return the true values at which plans pass with a chance; in a demonstration rejecting is passing."""
     probability = _PASSING[chance]
     power = _either(terms["verdict"], "pass", probability, round(1 - probability, 2))
     end = _either(terms["side"], "below", "lower", "upper")

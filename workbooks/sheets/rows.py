@@ -1,13 +1,11 @@
-"""What a row of the register holds for one characteristic: formats and formulas that follow its kind of plan."""
+"""What a row of the register holds: formats and formulas that follow the kind of plan."""
 
 from __future__ import annotations
 
-import math
 from collections.abc import Mapping, Sequence
 from typing import Any
 
 from steelyard.addin import CATALOGUE
-from steelyard.core.numbers import typed
 from steelyard.workbooks import native
 from steelyard.workbooks.plans import Planned
 
@@ -21,8 +19,15 @@ def in_lots(planned: Planned) -> bool:
 
 
 def rate_style(planned: Planned) -> str:
-    """Return the number format of a plan's parameter."""
+    """Return the number format of a plan's parameter where it is typed."""
     return "rate" if planned.kind.parameters[0].upper == 1.0 else "number"
+
+
+def result_style(planned: Planned) -> str:
+    """Return the number format of a computed value of the parameter."""
+    if in_lots(planned):
+        return "count"
+    return "risk" if rate_style(planned) == "rate" else "value"
 
 
 def typed_style(planned: Planned, value: Any) -> str:
@@ -32,7 +37,7 @@ def typed_style(planned: Planned, value: Any) -> str:
 
 
 def plan_formula(planned: Planned, at: Cells, host: str) -> str:
-    """Return the formula of the plan's text: of the size that is given, or the smallest that meets both risks."""
+    """Return the formula of the plan: of the size that is given, or the smallest that meets both risks."""
     catch = at["catch"]
     if len(planned.catches) > 1:  # as text, with a decimal point whatever the language of the program
         catch = f'SUBSTITUTE({catch}&" and "&{at["second"]},",",".")'
@@ -50,25 +55,17 @@ def _call(name: str, arguments: Sequence[str], host: str) -> str:
     return f"{name}({','.join(ranges)})"
 
 
-def own_catch_formula(planned: Planned, cell: str, at: Cells, upper: bool) -> str:
-    """Return a rate to catch in the plan's own unit: a share of a lot becomes whole items."""
+def own_catch_formula(planned: Planned, number: int, cell: str, at: Cells) -> str:
+    """Return a rate to catch in the plan's own unit: a share of a lot is rounded away from the claim."""
     if not in_lots(planned):
         return f'IF({cell}="","",{cell})'
     items = f"ROUND({cell}*{at['extra']},6)"
     up, down = f"ROUNDUP({items},0)", f"ROUNDDOWN({items},0)"
-    whole = (up if upper else down) if planned.side == "either" else f'IF({at["side"]}="below",{down},{up})'
+    whole = f'IF({at["side"]}="below",{down},{up})'
+    if planned.side == "either" and len(planned.own_catches) > number:
+        assert planned.plan.claim is not None
+        whole = up if planned.own_catches[number] > planned.plan.claim.value else down
     return f'IF({cell}="","",IF(AND({cell}>0,{cell}<1),{whole},{cell}))'
-
-
-def own_catch(planned: Planned, value: float | str | None, upper: bool) -> float | None:
-    """Return the value of that formula."""
-    if value is None or isinstance(value, str):
-        return None
-    if not in_lots(planned) or not 0 < value < 1:
-        return float(value)
-    items = typed(value) * int(planned.extra or 0)
-    up = upper if planned.side == "either" else planned.side == "above"
-    return float(math.ceil(items) if up else math.floor(items))
 
 
 def native_formula(planned: Planned, at: Cells, rate: str) -> str:
