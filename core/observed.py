@@ -2,10 +2,11 @@
 
 from __future__ import annotations
 
-import math
 from typing import Any
 
 from steelyard.core.numbers import read_whole
+
+MOST_COUNTED = 2_000_000_000
 
 
 def read_count(value: Any, most: float) -> float:
@@ -16,7 +17,7 @@ def read_count(value: Any, most: float) -> float:
     value : float, int or str
         A number, or its text.
     most : float
-        The greatest possible count; may be infinite.
+        The greatest possible count; where it is infinite, two thousand million are allowed.
 
     Raises
     ------
@@ -25,7 +26,7 @@ def read_count(value: Any, most: float) -> float:
 
     Examples
     --------
-    >>> read_count("2", 50), read_count(3, math.inf)
+    >>> read_count("2", 50), read_count(3, float("inf"))
     (2.0, 3.0)
     """
-    return float(read_whole(value, "observed", 0, int(most) if math.isfinite(most) else None))
+    return float(read_whole(value, "observed", 0, int(min(most, MOST_COUNTED))))

@@ -16,14 +16,16 @@ from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
 from steelyard.core.law import ExactLaw, UnboundedCountLaw, running_means
 from steelyard.core.numbers import read_number, typed
 from steelyard.core.parameter import Columns, Floats, Parameter
+from steelyard.core.plan import Claim
 from steelyard.core.threshold import CountKind, threshold_fields
 
 MOST_UNITS = 1e9
+MOST_EXPECTED = 1e9
 
 
 @dataclass(frozen=True, slots=True)
 class Extent:
-    """`units` inspected: any positive number of items, metres, hours …"""
+    """`units` inspected: any positive number of items, metres or hours."""
 
     units: float
 
@@ -96,6 +98,13 @@ class PoissonKind(CountKind):
         extent="units",
         **threshold_fields("x", whole=True),
     )
+
+    def check_claim(self, claim: Claim, design: Any) -> None:
+        """Refuse claims that are always true, and counts too large to be told apart."""
+        super().check_claim(claim, design)
+        if claim.value * design.units > MOST_EXPECTED:
+            rule = f"expect at most {MOST_EXPECTED:.0f} defects in {design.units:g} units"
+            raise InvalidValue("claim", rule, str(claim))
 
 
 POISSON = register(PoissonKind())

@@ -60,7 +60,7 @@ def test_decision(text: str, observed: Any, decision: str) -> None:
         (ABOVE, "#N/A", "be a number"),
         (ABOVE, True, "be a number"),
         (ABOVE, None, "be a number"),
-        ("poisson | units 2.5 | claim rate<=1 | reject x>=4", -1, "be a whole number of at least 0"),
+        ("poisson | units 2.5 | claim rate<=1 | reject x>=4", -1, "be a whole number from 0 to 2000000000"),
         ("hypergeometric | lot 60 | n 32 | claim D<=0 | reject x>=1", 33, "be a whole number from 0 to 32"),
     ],
 )

@@ -76,7 +76,7 @@ def plans(draw: st.DrawFn) -> Plan:
     }
     value, symbol = {
         "binomial": lambda: (draw(st.floats(1e-300, 1 - 1e-12)), "p"),
-        "poisson": lambda: (draw(st.floats(1e-300, 1e300)), "rate"),
+        "poisson": lambda: (draw(st.floats(1e-300, 1.0)), "rate"),
         "hypergeometric": lambda: (float(draw(st.integers(1, design.lot - 1))), "D"),
     }[kind]()
     return Plan(
@@ -187,6 +187,10 @@ def test_percent_is_taken_in_decimal_arithmetic() -> None:
             "reject must not lie on the side where the claim p>=0.02 is true, but got x<=0 or x>=4",
         ),
         ("poisson | units 0 | reject x>=4", "units must be greater than 0 and at most 1000000000, but got 0"),
+        (
+            "poisson | units 5 | claim rate<=1e12 | reject x>=4",
+            "claim must expect at most 1000000000 defects in 5 units, but got rate<=1000000000000",
+        ),
         ("poisson | units 5 | claim rate<=-1 | reject x>=4", "rate must be at least 0, but got -1"),
         (
             "hypergeometric | lot 5 | n 6 | reject x>=4",
