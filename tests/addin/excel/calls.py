@@ -15,7 +15,8 @@ PLANS = (
     "binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4",
     "binomial | n 80 | claim p<=0.02 | alpha 0.05 | reject x>=5",
 )
-CELLS = {"A2": PLANS[0], "A3": PLANS[1], "A2:A5": [[PLANS[0]], [None], [PLANS[1]], [None]]}
+RATE = 0.05
+REFERENCE = re.compile(r"([A-Z])(\d+)(?::([A-Z])(\d+))?")
 PART = re.compile(r'"[^"]*"|[^,]+')
 
 
@@ -28,9 +29,20 @@ def plain_arguments(entry: Entry) -> list[Any]:
 def _value(part: str) -> Any:
     if part.startswith('"'):
         return part.strip('"')
-    if part in CELLS:
-        return CELLS[part]
+    if reference := REFERENCE.fullmatch(part):
+        return _range(*reference.groups())
     return float(part.removesuffix("%")) / 100 if part.endswith("%") else float(part)
+
+
+def _range(left: str, top: str, right: str | None, bottom: str | None) -> Any:
+    """Return the cells of a reference: plans stand in column A, one row of two, and rates in the others."""
+    if right is None or bottom is None:
+        return PLANS[int(top) % 2] if left == "A" else RATE
+    columns = range(ord(right) - ord(left) + 1)
+    return [
+        [None if row % 2 else PLANS[row // 2 % 2] if left == "A" else RATE for _ in columns]
+        for row in range(int(bottom) - int(top) + 1)
+    ]
 
 
 def calls() -> Iterator[tuple[str, list[Any]]]:

@@ -160,5 +160,5 @@ def test_a_failed_write_keeps_the_old_file(tmp_path, monkeypatch):
 def test_settings_of_another_file_are_refused(tmp_path, content):
     other = tmp_path / "other.xlam"
     other.write_bytes(content)
-    with pytest.raises(SteelyardError, match=r"other\.xlam is no add-in file of Steelyard"):
+    with pytest.raises(SteelyardError, match=r"other\.xlam is no add-in file of Steelyard: move it"):
         xlam.read_settings(other)
