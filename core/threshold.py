@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from typing import Any, NoReturn
+from typing import Any
 
 import numpy as np
 
@@ -87,19 +87,8 @@ class ThresholdKind(Kind):
             raise InvalidValue("reject", f"not lie on the side where the claim {plan.claim} is true", text)
 
     def critical_rule(self, design: Any, claim: Claim, alpha: float, split: str) -> Reject:
-        """Return the largest region that keeps alpha.
-
-        Raises
-        ------
-        InvalidValue
-            When nothing, or everything, would be rejected.
-        """
-        low, high = self._critical_ends(design, claim, alpha, split)
-        if low is None and high is None:
-            self.refuse_empty(design, claim, alpha, split)
-        if low is not None and high is not None and high - low <= self.law.step:
-            raise InvalidValue("alpha", "leave some outcome that does not reject", alpha)
-        return Reject(low, high)
+        """Return the largest region that keeps alpha."""
+        return Reject(*self._critical_ends(design, claim, alpha, split))
 
     def _critical_ends(
         self, design: Any, claim: Claim, alpha: float, split: str
@@ -109,11 +98,6 @@ class ThresholdKind(Kind):
         found = {end: float(self.law.critical(row, rate, alpha, end, split)) for end in ENDS[claim.side]}
         low, high = found.get("low", math.nan), found.get("high", math.nan)
         return None if math.isnan(low) else low, None if math.isnan(high) else high
-
-    def refuse_empty(self, design: Any, claim: Claim, alpha: float, split: str) -> NoReturn:
-        """Raise because nothing can reject the claim."""
-        del design, split
-        raise InvalidValue("alpha", f"leave something that rejects the claim {claim}", alpha)
 
     def outcome(self, plan: Plan, observed: Any) -> bool:
         """Tell whether the statistic rejects the claim."""
@@ -155,13 +139,31 @@ class CountKind(ThresholdKind):
         split = plan.split if claim_of(plan).side == "either" else ONE_SIDED
         return self.law.limit(design_row(self, plan.design), observed, end, miss, split)
 
-    def refuse_empty(self, design: Any, claim: Claim, alpha: float, split: str) -> NoReturn:
-        """Raise, naming the smallest amount at which some count can reject."""
-        law, row, ends = self.law, design_row(self, design), ENDS[claim.side]
+    def critical_rule(self, design: Any, claim: Claim, alpha: float, split: str) -> Reject:
+        """Return the largest region that keeps alpha.
+
+        Raises
+        ------
+        InvalidValue
+            When no count would be rejected, naming the smallest amount at which some can be, or all would.
+        """
+        low, high = self._critical_ends(design, claim, alpha, split)
+        if low is None and high is None:
+            raise self._too_little(design, claim, alpha, split)
+        if low is not None and high is not None and high - low <= 1:
+            raise InvalidValue("alpha", "leave some outcome that does not reject", alpha)
+        return Reject(low, high)
+
+    def _too_little(self, design: Any, claim: Claim, alpha: float, split: str) -> InvalidValue:
+        law, row = self.law, design_row(self, design)
         split = split if claim.side == "either" else ONE_SIDED
-        least = min(least_amount(law, row, claim.value, alpha, end, split) for end in ends)
+        least = min(least_amount(law, row, claim.value, alpha, end, split) for end in ENDS[claim.side])
+        if math.isinf(least):
+            hint = f"no {law.amount} up to {float(law.largest(row)):.0f} is enough"
+            rule = f"be one that some count can reject at alpha {write_number(alpha)}"
+            return InvalidValue("claim", rule, str(claim), hint)
         rule = f"be at least {least:.0f} so that some count can reject {claim} at alpha {write_number(alpha)}"
-        raise InvalidValue(law.amount, rule, float(row[law.amount]))
+        return InvalidValue(law.amount, rule, float(row[law.amount]))
 
 
 def _same(one: float | None, other: float | None) -> bool:

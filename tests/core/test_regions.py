@@ -304,6 +304,15 @@ def test_refusal_names_the_smallest_amount_that_can_reject(
     assert str(refusal.value) == message
 
 
+def test_refusal_says_so_where_no_amount_can_reject() -> None:
+    with pytest.raises(InvalidValue) as refusal:
+        make_plan("binomial", Items(50), Claim("p", ">=", 1e-9), 0.05)
+    assert str(refusal.value) == (
+        "claim must be one that some count can reject at alpha 0.05, but got p>=1e-09"
+        " (no n up to 10000000 is enough)"
+    )
+
+
 def test_alpha_at_which_everything_would_reject_is_refused() -> None:
     with pytest.raises(
         InvalidValue, match=r"^alpha must leave some outcome that does not reject, but got 0.5$"
