@@ -45,7 +45,7 @@ class Law(ABC):
         """Return the least and the greatest value of the statistic."""
 
     @abstractmethod
-    def critical(self, columns: Columns, rate: Floats, alpha: float, end: str, split: str) -> Floats:
+    def critical(self, columns: Columns, rate: Floats, alpha: Any, end: str, split: str) -> Floats:
         """Return the critical values at one end: ``"low"`` or ``"high"``; NaN where none can reject.
 
         `rate` is the claim's boundary; `split` is ``"one-sided"``, or how the two ends share alpha.
@@ -71,7 +71,7 @@ class ContinuousLaw(Law):
     def quantile(self, prob: float, columns: Columns, rate: Floats, end: str) -> Floats:
         """Return the value with the chance `prob` at or below it (end ``"low"``) or at or above it."""
 
-    def critical(self, columns: Columns, rate: Floats, alpha: float, end: str, split: str) -> Floats:
+    def critical(self, columns: Columns, rate: Floats, alpha: Any, end: str, split: str) -> Floats:
         """Return the quantile of alpha, or of half of it for a two-sided test."""
         self._refuse(split)
         return self.quantile(alpha if split == ONE_SIDED else alpha / 2, columns, rate, end)
@@ -165,7 +165,7 @@ class CountLaw(Law):
         """Return 0 and the greatest possible count."""
         return 0, self.most({self.amount: getattr(design, self.amount)})
 
-    def critical(self, columns: Columns, rate: Floats, alpha: float, end: str, split: str) -> Floats:
+    def critical(self, columns: Columns, rate: Floats, alpha: Any, end: str, split: str) -> Floats:
         """Return the critical counts, ties with alpha decided exactly."""
         find = splits.critical_low if end == "low" else splits.critical_high
         return find(self, columns, rate, alpha, split)
