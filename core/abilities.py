@@ -6,6 +6,7 @@ from typing import Any, Protocol, runtime_checkable
 
 from steelyard.core.errors import NoAnswer
 from steelyard.core.kind import Kind
+from steelyard.core.need import Need
 from steelyard.core.plan import Claim, Plan
 
 
@@ -42,8 +43,16 @@ class Judging(Deciding, Protocol):
         """Return the confidence limit ``"lower"`` or ``"upper"`` at confidence 1 - miss."""
 
 
+@runtime_checkable
+class Sizable(Protocol):
+    """A kind whose amount can be sought: how much must be inspected for two risks."""
+
+    def smallest_amount(self, need: Need, lasting: bool) -> float:
+        """Return the first amount that meets a need, or the lasting one; NaN where none does."""
+
+
 def rule_making(kind: Kind) -> RuleMaking:
-    """Return the kind as one whose rules follow from a claim and alpha; raise `NoAnswer` if they do not."""
+    """Return the kind as one whose rules follow from a claim and alpha, or raise `NoAnswer`."""
     if isinstance(kind, RuleMaking):
         return kind
     raise _lacking(kind, "rule that follows from alpha alone")
@@ -57,10 +66,17 @@ def deciding(kind: Kind) -> Deciding:
 
 
 def judging(kind: Kind, what: str) -> Judging:
-    """Return the kind as one that weighs results; raise `NoAnswer`, naming `what` it lacks, if it does not."""
+    """Return the kind as one that weighs results; raise `NoAnswer`, naming `what` it lacks."""
     if isinstance(kind, Judging):
         return kind
     raise _lacking(kind, what)
+
+
+def sizable(kind: Kind) -> Sizable:
+    """Return the kind as one whose amount can be sought; raise `NoAnswer` if it can't be."""
+    if isinstance(kind, Sizable):
+        return kind
+    raise _lacking(kind, "search for the smallest plan")
 
 
 def _lacking(kind: Kind, what: str) -> NoAnswer:

@@ -126,10 +126,13 @@ class CountLaw(Law):
     ----------
     amount : str
         The column that says how much is inspected, e.g. ``"n"``.
+    divisible : bool
+        Whether the amount may be any positive number, unlike a number of items.
     """
 
     step = 1
     amount: str
+    divisible = False
 
     @abstractmethod
     def exactly(self, x: Any, columns: Columns, *rates: Floats) -> Floats:
@@ -147,6 +150,11 @@ class CountLaw(Law):
         """Return the expected count per unit of the amount."""
         del columns
         return rate
+
+    def leans_high(self, rate: float) -> bool:
+        """Tell whether the upper tail surely falls more slowly than the lower one, at every amount."""
+        del rate
+        return False
 
     def divergence(self, share: Floats, expected: Floats) -> Floats:
         """Return how fast the chance falls of a count per unit that lies away from the expected one.
@@ -228,6 +236,11 @@ class UnboundedCountLaw(RateLaw):
         """Return infinity."""
         del columns
         return math.inf
+
+    def leans_high(self, rate: float) -> bool:
+        """Return True."""
+        del rate
+        return True
 
     def divergence(self, share: Floats, expected: Floats) -> Floats:
         """Return Chernoff's exponent for a Poisson count."""

@@ -11,12 +11,15 @@ import numpy as np
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import Kind, claim_of
 from steelyard.core.law import CountLaw, Law
+from steelyard.core.need import Need
 from steelyard.core.numbers import read_number, write_number
 from steelyard.core.observed import read_count
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.plan import Claim, Plan, Reject
 from steelyard.core.regions import design_row, least_amount
+from steelyard.core.requirements import one_sided_amount
 from steelyard.core.splits import ENDS, ONE_SIDED
+from steelyard.core.two_sided import two_sided_amount
 
 
 class ThresholdKind(Kind):
@@ -138,6 +141,11 @@ class CountKind(ThresholdKind):
         """Return an exact confidence limit of the rate."""
         split = plan.split if claim_of(plan).side == "either" else ONE_SIDED
         return self.law.limit(design_row(self, plan.design), observed, end, miss, split)
+
+    def smallest_amount(self, need: Need, lasting: bool) -> float:
+        """Return the first or the lasting amount that meets a need; NaN beyond the largest amount."""
+        find = two_sided_amount if need.claim.side == "either" else one_sided_amount
+        return find(self.law, design_row(self, need.design), need, lasting)
 
     def critical_rule(self, design: Any, claim: Claim, alpha: float, split: str) -> Reject:
         """Return the largest region that keeps alpha.

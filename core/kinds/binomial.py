@@ -66,6 +66,10 @@ class BinomialLaw(RateLaw):
         del rate
         return float(columns["n"]) / 4
 
+    def leans_high(self, rate: float) -> bool:
+        """Tell whether defectives are no more frequent than good items."""
+        return rate <= 0.5
+
     def largest(self, columns: Columns) -> Any:
         """Return the most items of one plan."""
         del columns

@@ -1,0 +1,163 @@
+"""The sample sizes that go with a critical count.
+
+A plan rejects from `k` events on. Growing the sample makes `k` events more likely, under the lower rate and
+under the higher one. So the sizes at which `k` keeps both risks form an interval, its *span*: it opens where
+the higher rate yields `k` events often enough, and closes where the lower rate yields them too often. Both
+ends grow with `k`; that is all the search for the smallest plan needs.
+
+A plan that rejects low counts has the same spans. It rejects up to ``k - 1``; what was its size limits the
+opening, what was its power limits the closing.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from steelyard.core.law import CountLaw
+from steelyard.core.parameter import Columns, Floats
+from steelyard.core.splits import NEAR, Truth, compare
+
+Rows = NDArray[np.intp]
+
+_PATIENCE = 6  # Newton steps before every second step halves the bracket
+_TINY = 1e-300
+
+
+@dataclass(frozen=True, slots=True)
+class Risk:
+    """A bound on one tail at one rate: broken by small samples, kept by all larger ones, or the reverse.
+
+    Parameters
+    ----------
+    law : CountLaw
+    columns : dict of ndarray
+        The designs' fields except the amount, each of shape ``(requirements,)``.
+    rate : ndarray of float
+        The rate at which the tail is taken, of the same shape.
+    bound : ndarray of float
+        What the tail is compared with, of the same shape.
+    end : {"high", "low"}
+        The tail: at least `k` events, or fewer than `k`.
+    closing : bool
+        False: the first size is sought that keeps the bound; True: the last.
+    step : ndarray of float
+        Amount of one step of the search, of the same shape: 1 for whole sizes.
+    """
+
+    law: CountLaw
+    columns: Columns
+    rate: Floats
+    bound: Floats
+    end: str
+    closing: bool
+    step: Floats
+
+    def turn(self, rows: Rows, count: Floats) -> Floats:
+        """Return where the bound turns, in steps, for requirements and critical counts.
+
+        Parameters
+        ----------
+        rows : ndarray of int
+            Which requirements.
+        count : ndarray of float
+            The critical count `k` of each, at least 1.
+
+        Returns
+        -------
+        ndarray of float
+            Opening: the first size that keeps the bound, or one more than the largest size allowed.
+            Closing: the last size that keeps it, at most the largest size allowed.
+        """
+        part = self._rows(rows)
+        first = _first_size(part, count, np.floor(part.law.largest(part.columns) / part.step))
+        return first - 1 if self.closing else first
+
+    def _rows(self, rows: Rows) -> Risk:
+        columns = {name: column[rows] for name, column in self.columns.items()}
+        rate, bound, step = self.rate[rows], self.bound[rows], self.step[rows]
+        return Risk(self.law, columns, rate, bound, self.end, self.closing, step)
+
+    def passed(self, size: Floats, count: Floats) -> tuple[Truth, Floats]:
+        """Tell which sizes lie at or beyond the turn, and how many steps away it seems."""
+        columns = {**self.columns, self.law.amount: size * self.step}
+        tail = (
+            self.law.at_least(count, columns, self.rate)
+            if self.end == "high"
+            else self.law.at_most(count - 1, columns, self.rate)
+        )
+        sign = np.sign(tail - self.bound)
+        near = np.flatnonzero(np.abs(tail - self.bound) <= NEAR * self.bound)
+        if near.size:
+            sign[near] = self._rows(near)._exact_sign(size[near], count[near])
+        risen = sign if self.end == "high" else -sign
+        passed = risen > 0 if self.closing else risen >= 0
+        return passed, self._newton(tail, columns, count, passed)
+
+    def _exact_sign(self, size: Floats, count: Floats) -> NDArray[Any]:
+        columns = {**self.columns, self.law.amount: size * self.step}
+        x = count if self.end == "high" else count - 1
+        return compare(self.law, columns, self.rate, [(1, self.end, x)], self.bound)
+
+    def _newton(self, tail: Floats, columns: Columns, count: Floats, passed: Truth) -> Floats:
+        """Return Newton's step on the logarithm of the tail or its complement, whichever shall be small."""
+        speed = (
+            self.law.share(columns, self.rate) * self.step * self.law.exactly(count - 1, columns, self.rate)
+        )
+        speed = speed if self.end == "high" else -speed
+        small = self.bound <= 0.5
+        now = np.maximum(np.where(small, tail, 1.0 - tail), _TINY)
+        aim = np.where(small, self.bound, 1.0 - self.bound)
+        speed = np.where(small, speed, -speed)
+        still = np.abs(speed) < _TINY
+        move = np.log(aim / now) * now / np.where(still, 1.0, speed)
+        return np.where(still, np.where(passed, -np.inf, np.inf), move)
+
+
+def _first_size(risk: Risk, count: Floats, largest: Floats) -> Floats:
+    """Return the first size at or beyond the turn: Newton's method inside a bracket that never lets go."""
+    bounded = np.isfinite(risk.law.most({risk.law.amount: largest}))
+    before = np.where(bounded, count - 1, np.zeros(count.shape))
+    beyond = np.array(np.broadcast_to(largest + 1, count.shape))
+    before = np.minimum(before, largest)
+    size = _guess(risk, count, bounded)
+    rounds = 0
+    while (open_ := np.flatnonzero(beyond - before > 1)).size:
+        part = risk if open_.size == count.size else risk._rows(open_)
+        low, high = before[open_], beyond[open_]
+        at = np.clip(size[open_], low + 1, high - 1)
+        passed, move = part.passed(at, count[open_])
+        low, high = np.where(passed, low, at), np.where(passed, at, high)
+        if rounds > _PATIENCE and rounds % 2:
+            size[open_] = np.floor((low + high) / 2)
+        else:
+            size[open_] = np.ceil(at + move)
+        before[open_], beyond[open_] = low, high
+        rounds += 1
+    return beyond
+
+
+def _guess(risk: Risk, count: Floats, bounded: Truth) -> Floats:
+    """Return about where the turn is: Wilson and Hilferty's gamma quantile, as a size.
+
+    For items that count at most once, W. C. Guenther's correction is applied (J. Qual. Technology 1,
+    1969, from memory).
+    """
+    level = risk.bound if risk.end == "high" else 1.0 - risk.bound
+    root = 1.0 - 1.0 / (9.0 * count) + _normal_quantile(level) / (3.0 * np.sqrt(count))
+    mean = count * np.maximum(root, 0.05) ** 3
+    share = np.maximum(risk.law.share(risk.columns, risk.rate), _TINY)
+    amount = mean / share - np.where(bounded, (mean - count + 1.0) / 2.0, 0.0)
+    return np.ceil(amount / risk.step)
+
+
+def _normal_quantile(level: Floats) -> Floats:
+    """Return the normal quantile to about three digits (Abramowitz and Stegun, 26.2.23, from memory)."""
+    tail = np.clip(np.minimum(level, 1.0 - level), _TINY, 0.5)
+    t = np.sqrt(-2.0 * np.log(tail))
+    above = 1.0 + t * (1.432788 + t * (0.189269 + t * 0.001308))
+    z = t - (2.515517 + t * (0.802853 + t * 0.010328)) / above
+    return np.where(level < 0.5, -z, z)
