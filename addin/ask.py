@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
-from steelyard.addin.grid import asking
+from steelyard.addin.grid import asking, rates_grid
 from steelyard.addin.words import CellName, Confidence, End, Observed, PlanRange, Plans, Rates, Second, Target
 from steelyard.core import evidence, questions, rates
 from steelyard.core.errors import NoAnswer
@@ -78,6 +78,7 @@ def SY_REGION(plan: Plans) -> Cells:
     group="ask",
     help="The true rate at which the power reaches a target.",
     example="=SY_RATE_FOR(A2,90%)",
+    grid=rates_grid,
 )
 def SY_RATE_FOR(plan: Plans, power: Target, end: End | None = None) -> Cells:
     """Return the rate at which the power reaches a target."""

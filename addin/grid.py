@@ -7,9 +7,12 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.addin.plans import table_of
+from steelyard.addin.plans import plan_or_none, table_of
+from steelyard.core.evidence import LIMIT_ENDS
 from steelyard.core.kind import Kind
 from steelyard.core.parameter import Floats
+from steelyard.core.plan import Plan
+from steelyard.core.rates import rates_for
 from steelyard.core.table import PlanTable, Question
 
 
@@ -21,7 +24,7 @@ def asking(question: Callable[[Kind], Question]) -> Callable[..., Any]:
     """
 
     def grid(plan: Any, *rates: Any) -> Any:
-        rows = plan if isinstance(plan, list) else [[plan]]
+        rows = rows_of(plan)
         table, places = table_of(tuple(cell for row in rows for cell in row))
         index = places.reshape(len(rows), len(rows[0]))
         given = [floats(rate) for rate in rates if rate is not None]
@@ -30,10 +33,30 @@ def asking(question: Callable[[Kind], Question]) -> Callable[..., Any]:
     return grid
 
 
+def rates_grid(plan: Any, power: Any, end: Any = None) -> Any:
+    """Return the grid twin of SY_RATE_FOR: one search for all cells with the same power and end."""
+    cells = np.broadcast_arrays(*(np.array(rows_of(cells), dtype=object) for cells in (plan, power, end)))
+    groups: dict[tuple[float, str | None], list[tuple[Plan, tuple[int, ...]]]] = {}
+    for place in np.ndindex(cells[0].shape):
+        found, goal, side = plan_or_none(cells[0][place]), cells[1][place], cells[2][place]
+        if found is not None and type(goal) is float and 0 < goal < 1 and side in (None, *LIMIT_ENDS):
+            groups.setdefault((goal, side), []).append((found, place))
+    answers = np.full(cells[0].shape, np.nan)
+    for (goal, side), members in groups.items():
+        solved = rates_for([found for found, _ in members], [goal], side)
+        for (_, place), rate in zip(members, solved[:, 0], strict=True):
+            answers[place] = rate
+    return answers.tolist()
+
+
+def rows_of(cells: Any) -> list[list[Any]]:
+    """Return a single cell as rows, too."""
+    return cells if isinstance(cells, list) else [[cells]]
+
+
 def floats(cells: Any) -> Floats:
     """Return cells as rows of floats, NaN for everything that is no plain number."""
-    rows = cells if isinstance(cells, list) else [[cells]]
-    return np.array([[_float(cell) for cell in row] for row in rows], dtype=float)
+    return np.array([[_float(cell) for cell in row] for row in rows_of(cells)], dtype=float)
 
 
 def _float(cell: Any) -> float:

@@ -41,14 +41,20 @@ def plan_of(value: Any, name: str = "plan") -> Plan:
     return found
 
 
+def plan_or_none(value: Any) -> Plan | None:
+    """Return the plan that a cell's text describes, None where it describes none."""
+    found = _read(value) if isinstance(value, str) else None
+    return found if isinstance(found, Plan) else None
+
+
 @functools.lru_cache(_TABLES)
 def table_of(cells: tuple[Any, ...]) -> tuple[PlanTable, NDArray[np.intp]]:
     """Return the distinct plans of many cells as a table, and each cell's place in it (-1: no plan)."""
     distinct: dict[Plan, int] = {}
     places = []
     for cell in cells:
-        found = _read(cell) if isinstance(cell, str) else None
-        places.append(distinct.setdefault(found, len(distinct)) if isinstance(found, Plan) else -1)
+        found = plan_or_none(cell)
+        places.append(-1 if found is None else distinct.setdefault(found, len(distinct)))
     return PlanTable.of(list(distinct)), np.array(places, dtype=np.intp)
 
 

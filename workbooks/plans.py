@@ -2,19 +2,24 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
 from typing import Any
 
+import numpy as np
+
 from steelyard.core.claims import claim_from
+from steelyard.core.designs import design_from, extent_values, kind_named
 from steelyard.core.errors import InvalidValue, SteelyardError
 from steelyard.core.kind import Kind, kind_of
-from steelyard.core.making import design_from, extent_values, kind_named, plan_from_claim
-from steelyard.core.need import need_from
+from steelyard.core.need import Need, need_from
 from steelyard.core.numbers import read_number
-from steelyard.core.plan import Claim, Plan, split_claim
-from steelyard.core.smallest import smallest_plan
+from steelyard.core.parameter import Floats
+from steelyard.core.plan import SPLITS, VERDICTS, Claim, Plan, split_claim
+from steelyard.core.regions import make_plan
+from steelyard.core.smallest import plan_for, smallest_sizes
 from steelyard.core.text import write_plan
 from steelyard.workbooks.columns import COLUMNS
 from steelyard.workbooks.requests import Problem, Request
@@ -94,38 +99,44 @@ def plan_requests(requests: Sequence[Request]) -> tuple[list[Planned], list[Prob
     problems : list of Problem
         One for each row left out.
     """
-    planned: list[Planned] = []
+    asked: list[_Asked] = []
     problems: list[Problem] = []
     for request in requests:
-        try:
-            planned.append(_plan(request, len(planned) + 1))
-        except _Refused as refused:
-            problems.append(refused.problem)
-    return planned, problems
+        with _noting(problems):
+            asked.append(_ask(request))
+    planned: list[Planned] = []
+    for one, amount in zip(asked, _amounts(asked), strict=True):
+        with _noting(problems):
+            planned.append(_plan(one, amount, len(planned) + 1))
+    return planned, sorted(problems, key=lambda problem: problem.row)
 
 
-class _Refused(Exception):  # noqa: N818 (it carries a problem, it is none)
-    def __init__(self, problem: Problem) -> None:
-        self.problem = problem
-        super().__init__(problem)
+@dataclass(frozen=True, slots=True)
+class _Asked:
+    """A request as the core reads it; `need` is what a size that is sought must meet."""
+
+    request: Request
+    kind: Kind
+    design: Any
+    claim: Claim
+    alpha: float
+    need: Need | None
+
+    @property
+    def sought(self) -> bool:
+        return self.request.n is None
 
 
-def _plan(request: Request, number: int) -> Planned:
+def _ask(request: Request) -> _Asked:
     with _blamed_on("kind", request):
         kind = kind_named(request.kind)
     extra, alpha = _extra(kind, request), request.alpha or ALPHA
-    design = _design(kind, request, extra)
+    with _blamed_on("n", request):  # where the size is sought, 1 stands in for it
+        design = design_from(kind, extent_values(kind, request.n or 1, extra))
     with _blamed_on("claim", request):
         claim = claim_from(kind, request.claim, request.side, design)
         kind.check_claim(claim, design)
-    catches = _catches(kind, request, claim, alpha, extra)
-    with _blamed_on("catch" if request.n is None else "n", request):
-        plan = (
-            _smallest(request, alpha, extra) if request.n is None else _of_size(kind, request, alpha, extra)
-        )
-    typed = [_cell(rate, kind) for rate in (request.catch or "").split(" and ") if rate.strip()]
-    boundary = _cell(_boundary(request.claim), kind)
-    return Planned(number, request, plan, write_plan(plan), alpha, boundary, tuple(typed), catches)
+    return _Asked(request, kind, design, claim, alpha, _need(kind, request, claim, alpha, extra))
 
 
 def _extra(kind: Kind, request: Request) -> float | None:
@@ -140,48 +151,62 @@ def _extra(kind: Kind, request: Request) -> float | None:
     return getattr(request, wanted) if wanted else None
 
 
-def _design(kind: Kind, request: Request, extra: float | None) -> Any:
-    """Return the design; where the size is sought, one of size 1 stands in."""
-    with _blamed_on("n", request):
-        return design_from(kind, extent_values(kind, request.n or 1, extra))
-
-
-def _catches(
-    kind: Kind, request: Request, claim: Claim, alpha: float, extra: float | None
-) -> tuple[float, ...]:
-    """Return the rates to catch in the parameter's own unit, each where the claim is false."""
+def _need(kind: Kind, request: Request, claim: Claim, alpha: float, extra: float | None) -> Need | None:
+    """Return the rates to catch, each where the claim is false, and the power there."""
     for column in ("catch", "power"):
         if request.n is None and getattr(request, column) is None:
             raise _Refused(Problem(request.row, column, None, "given where n is left empty"))
     if request.catch is None:
-        return ()
-    power = request.power or (1 + alpha) / 2  # of a size that is given the power need not be asked for
+        return None
+    power = request.power or (1 + alpha) / 2  # at a size that is given no power need be asked for
+    split = request.split or SPLITS[0]
     with _blamed_on("catch", request):
-        return need_from(kind.grammar.kind, str(claim), alpha, request.catch, power, extra=extra).catches
+        return need_from(request.kind, str(claim), alpha, request.catch, power, extra=extra, split=split)
 
 
-def _of_size(kind: Kind, request: Request, alpha: float, extra: float | None) -> Plan:
-    values = extent_values(kind, request.n, extra)
-    return plan_from_claim(request.kind, values, request.claim, alpha, request.side, *_options(request))
+def _amounts(asked: Sequence[_Asked]) -> list[float]:
+    """Return the size of each plan; sizes that are sought on one side are sought together."""
+    amounts = [one.request.n or math.nan for one in asked]
+    groups: dict[tuple[str, str], list[int]] = {}
+    for place, one in enumerate(asked):
+        if one.sought and one.claim.side != "either":
+            groups.setdefault((one.request.kind, one.claim.side), []).append(place)
+    for (kind, side), places in groups.items():
+        for place, amount in zip(
+            places, _sought(kind, side, [asked[place] for place in places]), strict=True
+        ):
+            amounts[place] = float(amount)
+    return amounts
 
 
-def _smallest(request: Request, alpha: float, extra: float | None) -> Plan:
-    split, verdict = _options(request)
-    return smallest_plan(
-        request.kind,
-        request.claim,
-        alpha,
-        request.catch,
-        request.power,
-        side=request.side,
-        extra=extra,
-        split=split,
-        verdict=verdict,
+def _sought(kind: str, side: str, asked: Sequence[_Asked]) -> Floats:
+    needs = [one.need for one in asked if one.need is not None]
+    columns = np.array([(need.claim.value, need.alpha, need.catches[0], need.power) for need in needs])
+    word = needs[0].kind.grammar.extra
+    extra = [getattr(need.design, word) for need in needs] if word else None
+    return smallest_sizes(kind, *columns.T, side=side, extra=extra).amount
+
+
+def _plan(asked: _Asked, amount: float, number: int) -> Planned:
+    request, need, kind = asked.request, asked.need, asked.kind
+    split, verdict = request.split or SPLITS[0], request.verdict or VERDICTS[0]
+    with _blamed_on("catch" if asked.sought else "n", request):
+        if need is not None and math.isnan(amount):  # two-sided, or none was found: then this says so
+            plan = plan_for(need, verdict=verdict)
+        else:
+            design = need.sized(amount) if need is not None else asked.design
+            plan = make_plan(request.kind, design, asked.claim, asked.alpha, split, verdict)
+    catches = [_cell(rate, kind) for rate in (request.catch or "").split(" and ") if rate.strip()]
+    return Planned(
+        number=number,
+        request=request,
+        plan=plan,
+        text=write_plan(plan),
+        alpha=asked.alpha,
+        claim=_cell(_boundary(request.claim), kind),
+        catches=tuple(catches),
+        own_catches=need.catches if need is not None else (),
     )
-
-
-def _options(request: Request) -> tuple[str, str]:
-    return request.split or "half", request.verdict or "fail"
 
 
 def _boundary(claim: str) -> str:
@@ -193,6 +218,21 @@ def _cell(typed: str, kind: Kind) -> float | str:
     """Return what a cell holds for a rate: its number, unless a lot's ``100%`` would then become 1 item."""
     number = read_number(typed, "rate")
     return typed if kind.grammar.extra == "lot" and number >= 1 and typed.rstrip().endswith("%") else number
+
+
+class _Refused(Exception):  # noqa: N818 (it carries a problem, it is none)
+    def __init__(self, problem: Problem) -> None:
+        self.problem = problem
+        super().__init__(problem)
+
+
+@contextmanager
+def _noting(problems: list[Problem]) -> Iterator[None]:
+    """Note why a row is left out, and go on."""
+    try:
+        yield
+    except _Refused as refused:
+        problems.append(refused.problem)
 
 
 @contextmanager

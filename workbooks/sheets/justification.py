@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from steelyard.core import VERSION, review
+from steelyard.core import VERSION
 from steelyard.workbooks.house import Book, Live, Put, Sheet, choice
 from steelyard.workbooks.sheets import paper, rows
 from steelyard.workbooks.sheets.curves import add_curves, table_rates
@@ -78,6 +78,7 @@ class _Page:
         self.planned = register.planned[place]
         self.host = sheet.book.host
         self.plan = register.term("plan", place)
+        self.explained = ask(self.host, "EXPLAIN", self.plan)
         self.style = rows.rate_style(self.planned)
         self.parameter = self.planned.kind.parameters[0]
 
@@ -262,13 +263,8 @@ class _Page:
 
     def _sentence(self, number: int) -> Live:
         """Return one of the sentences of SY_EXPLAIN."""
-        explained = ask(self.host, "EXPLAIN", self.plan)
-        return Live(
-            f"=INDEX({explained.texts[0]},{number},1)",
-            review.sentences(self.planned.plan)[number - 1],
-            "text",
-            VALUES,
-        )
+        text = f"=INDEX({self.explained.texts[0]},{number},1)"
+        return Live(text, self.explained.cells[number - 1][0], "text", VALUES)
 
     def _by_word(self, key: str, texts: dict[str, str]) -> Live:
         """Return the text that belongs to the word in a cell of the register."""
