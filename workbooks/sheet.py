@@ -261,5 +261,5 @@ class Sheet:
         last = column + span - 1
         for covered in range(column + 1, last + 1):
             self.raw.cell(row, covered)._style = copy(self.raw.cell(row, column)._style)
-        # merge_cells would work out the borders, which the cells have already, at ten times the cost of the cells
+        # merge_cells would set the borders, which the cells have already, at ten times the cost
         self.raw.merged_cells.ranges.add(CellRange(None, column, row, last, row))

@@ -66,6 +66,7 @@ LOOKS = {
     "unit": Look(SLATE, across="left"),
     "input": Look(fill=WHEAT, border="box", locked=False),
     "tick": Look(fill=WHEAT, border="box", across="center", upright="center", locked=False),
+    "pick": Look(fill=WHEAT, border="box", across="center", locked=False),
     "edit": Look(fill=WHEAT, border="box", wrap=True, across="left", locked=False),
     "entry": Look(border="hair", wrap=True, across="left", locked=False),
     "writing": Look(border="bottom", edge=SLATE, wrap=True, across="left", upright="bottom", locked=False),

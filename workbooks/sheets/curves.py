@@ -17,7 +17,7 @@ from steelyard.workbooks.terms import Terms, ask
 
 POINTS = 60
 _X, _POWER, _PASS = "K", "L", "M"
-_HEIGHT, _WIDTH = 7.0, 19.0  # cm
+_HEIGHT, _WIDTH = 6.7, 19.0  # cm
 
 
 def marked_rates(register: Register, place: int) -> list[float]:
@@ -60,6 +60,7 @@ def _more(found: set[float], missing: int, lots: bool, upper: float) -> list[flo
 
 def add_curves(sheet: Sheet, register: Register, place: int, end: float) -> None:
     """Draw the chart below what is written."""
+    sheet.add(height=6)  # the chart would cover the lines below the table
     planned, top = register.planned[place], sheet.next_row
     lots = rows.in_lots(planned)
     step = float(max(1, math.ceil(end / POINTS))) if lots else end / POINTS
@@ -108,7 +109,8 @@ def _marks(sheet: Sheet, register: Register, place: int, end: float) -> list[Cur
     style = f"plain {rows.rate_style(register.planned[place])}"
     claim, *catches = marked_rates(register, place)
     lines: list[tuple[str, Role, list[tuple[float, float]]]] = [("Claim", "claim", [(claim, 0), (claim, 1)])]
-    lines += [("Catch", "catch", [(catch, 0), (catch, 1)]) for catch in catches]
+    names = ["Catch"] if len(catches) == 1 else ["Catch, low", "Catch, high"]
+    lines += [(name, "catch", [(x, 0), (x, 1)]) for name, x in zip(names, catches, strict=False)]
     wanted = register.value("wanted", place)
     if wanted is not None:
         lines.append(("Power wanted", "target", [(0, wanted), (end, wanted)]))

@@ -18,13 +18,13 @@ VALUES = WIDE - 1  # columns right of the labels
 _WIDTHS = {"A": 23.0} | dict.fromkeys("BCDEFGHI", 9.8) | {"J": 3.0} | dict.fromkeys("KLM", 11.0)
 _BOX = choice(("☐", "☑"), "Tick", "Choose ☑ when the evidence is at hand.")
 _ALTERNATIVE = {
-    "above": "is larger than claimed",
-    "below": "is smaller than claimed",
-    "either": "differs from the claim",
+    "above": "above what is claimed",
+    "below": "below what is claimed",
+    "either": "not as claimed",
 }
 _PASSING = {
-    "fail": "The sample does not contradict the claim. It proves neither the claim nor a lot without defects.",
-    "pass": "The sample contradicts the claim; while the claim is true it does so with probability alpha at most.",
+    "fail": "The sample does not contradict the claim. It proves neither the claim nor a faultless lot.",
+    "pass": "The sample contradicts the claim; while the claim is true it does so with the actual size at most.",
 }
 _AFTER = "The procedure for failed lots applies. No second sample is taken: the plan has only one."
 _GENERAL = (
@@ -78,6 +78,7 @@ class _Page:
         self.planned = register.planned[place]
         self.host = sheet.book.host
         self.plan = register.term("plan", place)
+        self.size = register.term("actual", place)
         self.explained = ask(self.host, "EXPLAIN", self.plan)
         self.style = rows.rate_style(self.planned)
         self.parameter = self.planned.kind.parameters[0]
@@ -96,7 +97,7 @@ class _Page:
         self._section("1  What is inspected")
         lot = f"A finite lot of {self.planned.extra:,.0f} items" if rows.in_lots(self.planned) else None
         self._line("Characteristic", self._link("name", "text", VALUES))
-        self._line("Judged by", Put(self.planned.kind.grammar.wording.title, "text", VALUES))
+        self._line("Judged by", self._measure())
         self._line("Requirement and source", self._link("reference", "text", VALUES))
         self._line("Effect of a failure", self._blank())
         self._line("Risk class, procedure", self._blank(self.planned.request.risk_class))
@@ -106,9 +107,9 @@ class _Page:
     def claim_and_risks(self) -> None:
         """Write the hypotheses and the risks of both errors."""
         self._section("2  Claim and risks")
-        name = self.parameter.name
+        name = self.parameter.name.capitalize()
         self._line("Claim (null hypothesis)", self._sentence(2))
-        alternatives = {side: f"The {name} {text}." for side, text in _ALTERNATIVE.items()}
+        alternatives = {side: f"{name} {text}." for side, text in _ALTERNATIVE.items()}
         self._line("Alternative", self._by_word("side", alternatives))
         self._line("What passing means", self._by_word("verdict", _PASSING))
         heads = (
@@ -184,16 +185,14 @@ class _Page:
         """Write what must hold, each with a box to tick and room for the evidence."""
         self._section("6  Assumptions: tick each, and name the evidence")
         for text in (*self.planned.kind.grammar.wording.assumptions, *_GENERAL):
-            self.sheet.add(Put("☐", "tick", check=_BOX), Put(text, "text", 5), Put(None, "writing words", 3))
+            self.sheet.add(Put(text, "text", 5), Put("☐", "tick", check=_BOX), Put(None, "writing words", 3))
 
     def cautions(self) -> None:
         """Write what the plan does not show."""
         self._section("7  Cautions")
-        alpha, size = (self.register.term(key, self.place) for key in ("alpha", "actual"))
-        self.sheet.add(
-            _sentence("Passing does not show that the lot is free of defects", self._still_passing())
-        )
-        self.sheet.add(_sentence("Nominal alpha ", alpha, " %, actual size ", size, " %."))
+        alpha = self.register.term("alpha", self.place)
+        self.sheet.add(self._still_passing())
+        self.sheet.add(_sentence("Nominal alpha ", alpha, " %, actual size ", self.size, " %."))
         for caution in CAUTIONS:
             self.sheet.add(Put(caution, "text", WIDE))
 
@@ -258,6 +257,14 @@ class _Page:
         text, value = term.texts[0], term.values()[0]
         return Live(f"={text}" if value is not None else f'=IF({text}="","",{text})', value, style, span)
 
+    def _measure(self) -> Put | Live:
+        """Return what is counted or measured, and in which unit."""
+        title, unit = self.planned.kind.grammar.wording.title, self.planned.request.unit
+        if unit is None:
+            return Put(title, "text", VALUES)
+        formula = f'="{title}; unit: "&{self.register.term("unit", self.place).texts[0]}'
+        return Live(formula, f"{title}; unit: {unit}", "text", VALUES)
+
     def _typed(self, key: str) -> str:
         return f"result {rows.typed_style(self.planned, self.register.value(key, self.place))}"
 
@@ -275,24 +282,33 @@ class _Page:
             formula = f'IF({term.texts[0]}="{word}",{literal(text).texts[0]},{formula})'
         return Live(f"={formula}", texts[term.values()[0]], "text", VALUES)
 
-    def _still_passing(self) -> Terms | None:
+    def _still_passing(self) -> Live:
+        """Return the caution that a lot which should fail can pass."""
+        start = "Passing does not show that the lot is free of defects"
+        demonstration = self.planned.plan.verdict == "pass"
+        if demonstration:  # what must not pass is the claim's own rate
+            return _sentence(
+                f"{start}; where the claim is just true it passes with probability ", self.size, " %."
+            )
         catch = self.register.term("catch_own", self.place)
-        return None if catch.values()[0] is None else ask(self.host, "ACCEPTANCE", self.plan, catch)
+        if catch.values()[0] is None:
+            return _sentence(f"{start}.")
+        passing = ask(self.host, "ACCEPTANCE", self.plan, catch)
+        return _sentence(f"{start}; at the rate to catch it still passes with probability ", passing, " %.")
 
 
 def _wide(terms: Terms, style: str, span: int) -> Live:
     return Live(f"={terms.texts[0]}", terms.cells[0][0], style, span)
 
 
-def _sentence(*parts: str | Terms | None) -> Live:
+def _sentence(*parts: str | Terms) -> Live:
     """Return a line of words and of probabilities in percent."""
-    if parts[-1] is None:
-        return Live(f"={literal(f'{parts[0]}.').texts[0]}", f"{parts[0]}.", "text", WIDE)
-    if isinstance(parts[-1], Terms):
-        parts = (f"{parts[0]}; at the rate to catch it still passes with probability ", parts[-1], " %.")
-    texts = [
-        f"ROUND(100*{part.texts[0]},4)" if isinstance(part, Terms) else literal(part).texts[0]
-        for part in parts
-    ]
-    shown = [f"{round(100 * part.values()[0], 4):g}" if isinstance(part, Terms) else part for part in parts]
+    texts, shown = [], []
+    for part in parts:
+        if isinstance(part, Terms):
+            texts.append(f"ROUND(100*{part.texts[0]},4)")
+            shown.append(f"{round(100 * part.cells[0][0], 4):g}")
+        else:
+            texts.append(literal(part).texts[0])
+            shown.append(part)
     return Live(f"={'&'.join(texts)}", "".join(shown), "text", WIDE)

@@ -154,7 +154,7 @@ class Register:
             self._each(lambda planned: planned.claim),
             self._rate_inputs(self._each(lambda p: p.claim)),
         )
-        self._input("side", self._each(lambda planned: planned.side), "input", choice(tuple(SIDES.values())))
+        self._input("side", self._each(lambda planned: planned.side), "pick", choice(tuple(SIDES.values())))
         self._input("alpha", self._each(lambda planned: planned.alpha), "input rate", _CHANCE)
         self._input("catch", first, self._rate_inputs(first))
         pairs = self._each(lambda planned: len(planned.catches) > 1)
@@ -165,8 +165,8 @@ class Register:
         self._input("wanted", self._each(lambda planned: planned.request.power), "input rate", _CHANCE)
         self._input("extra", self._each(lambda planned: planned.extra), self._each(_extra_style))
         self._input("fixed", self._each(lambda planned: planned.request.n), "input number", _SIZE)
-        self._input("verdict", self._each(lambda planned: planned.plan.verdict), "input", choice(VERDICTS))
-        self._input("split", self._each(lambda planned: planned.plan.split), "input", choice(SPLITS))
+        self._input("verdict", self._each(lambda planned: planned.plan.verdict), "pick", choice(VERDICTS))
+        self._input("split", self._each(lambda planned: planned.plan.split), "pick", choice(SPLITS))
         self._input("reference", self._each(lambda planned: planned.request.reference), "entry words")
         self._input("note", self._each(lambda planned: planned.request.note), "entry words")
 
