@@ -66,6 +66,7 @@ HOST = takes(
     default="excel",
     help="spelling of the formulas: SY_POWER or SY.POWER",
 )
+PROGRAM = takes("program", choices=("calc", "excel"), help="LibreOffice Calc, or Excel on Windows")
 BOOK = takes("book", metavar="BOOK.xlsx", help="a workbook with SY formulas")
 
 
@@ -120,6 +121,38 @@ COMMANDS = (
         "commands.functions",
         (takes("name", nargs="?", metavar="NAME", help="a function, e.g. SY_POWER"),),
     ),
+    Command(
+        "connect",
+        "put the functions into Calc or Excel for the current user",
+        "steelyard connect calc",
+        "hosts.connect",
+        (PROGRAM,),
+    ),
+    Command(
+        "disconnect",
+        "take the functions out of Calc or Excel again",
+        "steelyard disconnect calc",
+        "hosts.disconnect",
+        (PROGRAM,),
+    ),
+    Command(
+        "addin-file",
+        "write the add-in file alone, on any system",
+        "steelyard addin-file excel -o steelyard.xlam",
+        "hosts.addin_file",
+        (
+            PROGRAM,
+            takes("-o", "--output", metavar="FILE", help="file to write (steelyard.oxt or steelyard.xlam)"),
+            takes("--interpreter", metavar="PYTHON", help="the Python that is to answer"),
+        ),
+    ),
+    Command(
+        "doctor",
+        "tell what is installed, what is wrong, and what to do",
+        "steelyard doctor --json",
+        "doctor.doctor",
+        (takes("--json", action="store_true", help="print the report as JSON, for support"),),
+    ),
 )
 
 
@@ -129,7 +162,7 @@ def parser() -> argparse.ArgumentParser:
         prog="steelyard",
         description="Plan inspections by sample: sizes, risks and power, live in spreadsheet cells.",
         epilog=EPILOG,
-        formatter_class=argparse.RawDescriptionHelpFormatter,
+        formatter_class=lambda prog: argparse.RawDescriptionHelpFormatter(prog, max_help_position=14),
     )
     top.add_argument("--version", action="store_true", help="print the versions in use")
     top.add_argument("--debug", action="store_true", help="show the traceback of an error")
