@@ -11,6 +11,8 @@ import functools
 from collections.abc import Callable, Sequence
 from typing import Any
 
+import numpy as np
+
 from steelyard.addin.catalogue import Argument, Cells, add, arguments_of
 from steelyard.core.errors import InvalidValue, SteelyardError
 
@@ -51,8 +53,8 @@ def cell(
     help, example : str
         Wizard text and an example formula.
     grid : callable, optional
-        A vectorised twin: takes the arguments as rows of cells and returns rows of floats with NaN
-        where the scalar function must answer (refusals, texts).
+        A vectorised twin: takes the arguments as rows of cells and returns an array of floats, NaN where
+        the scalar function must answer (refusals, texts).
     """
 
     def decorate(function: Callable[..., Any]) -> Callable[..., Cells]:
@@ -119,14 +121,11 @@ def _over_ranges(
         return refusal(error)
     if not any(isinstance(value, list) for value in given):
         return one(*given)
-    answers = grid(*given) if grid else None
-    return [
-        [
-            _one_cell(one, arguments, given, row, column, None if answers is None else answers[row][column])
-            for column in range(columns)
-        ]
-        for row in range(rows)
-    ]
+    answers = np.full((rows, columns), np.nan) if grid is None else grid(*given)
+    table: list[list[Cells]] = answers.tolist()
+    for row, column in np.argwhere(np.isnan(answers)).tolist():
+        table[row][column] = _one_cell(one, arguments, given, row, column)
+    return table
 
 
 def _one_cell(
@@ -135,10 +134,7 @@ def _one_cell(
     given: Sequence[Any],
     row: int,
     column: int,
-    found: Any,
 ) -> Cells:
-    if found is not None and found == found:
-        return found
     picked = [_at(value, row, column) if isinstance(value, list) else value for value in given]
     for argument, value, whole in zip(arguments, picked, given, strict=False):
         if isinstance(whole, list) and argument.required and is_blank(value):

@@ -13,7 +13,7 @@ from steelyard.core.kind import Kind
 from steelyard.core.parameter import Floats
 from steelyard.core.plan import Plan
 from steelyard.core.rates import rates_for
-from steelyard.core.table import PlanTable, Question
+from steelyard.core.table import Question
 
 
 def asking(question: Callable[[Kind], Question]) -> Callable[..., Any]:
@@ -28,7 +28,7 @@ def asking(question: Callable[[Kind], Question]) -> Callable[..., Any]:
         table, places = table_of(tuple(cell for row in rows for cell in row))
         index = places.reshape(len(rows), len(rows[0]))
         given = [floats(rate) for rate in rates if rate is not None]
-        return PlanTable.map(table, question, index, *given).tolist()
+        return table.map(question, index, *given)
 
     return grid
 
