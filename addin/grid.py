@@ -46,7 +46,7 @@ def rates_grid(plan: Any, power: Any, end: Any = None) -> Any:
         solved = rates_for([found for found, _ in members], [goal], side)
         for (_, place), rate in zip(members, solved[:, 0], strict=True):
             answers[place] = rate
-    return answers.tolist()
+    return answers
 
 
 def rows_of(cells: Any) -> list[list[Any]]:
