@@ -50,12 +50,8 @@ FUNCTIONS = _load("functions.json")
 _worker = Worker(**_load("settings.json"))
 
 
-_INTERFACE = uno.getClass("steelyardcalc.XFunctions")
-_FACES: Any = (unohelper.Base, _INTERFACE, XAddIn, XCompatibilityNames, XServiceName, XServiceInfo)
-
-
-class Functions(*_FACES):  # type: ignore[misc]
-    """The add-in object; one method per cell function is added below."""
+class AddIn(unohelper.Base, XAddIn, XCompatibilityNames, XServiceName, XServiceInfo):  # type: ignore[misc]
+    """What Calc asks about the functions; `create` adds the functions themselves."""
 
     def __init__(self, context: Any) -> None:
         self._locale = Locale("en", "US", "")
@@ -159,15 +155,18 @@ def _cell(value: Any) -> Any:
     return value
 
 
+def create(context: Any) -> Any:
+    """Return the add-in object: a method per cell function, as the extension's interface declares them."""
+    interface = uno.getClass("steelyardcalc.XFunctions")
+    return type("Functions", (AddIn, interface), {name: _method(name) for name in FUNCTIONS})(context)
+
+
 def _method(name: str) -> Callable[..., Rows]:
-    def method(self: Functions, *given: Any) -> Rows:
+    def method(self: AddIn, *given: Any) -> Rows:
         return answer(name, given)
 
     return method
 
 
-for _name in FUNCTIONS:
-    setattr(Functions, _name, _method(_name))
-
 g_ImplementationHelper = unohelper.ImplementationHelper()  # noqa: N816 - the name LibreOffice looks for
-g_ImplementationHelper.addImplementation(Functions, IMPLEMENTATION, (ADDIN, SERVICE))
+g_ImplementationHelper.addImplementation(create, IMPLEMENTATION, (ADDIN, SERVICE))

@@ -38,7 +38,13 @@ def connect_calc() -> list[str]:
         raise SteelyardError(message)
     with tempfile.TemporaryDirectory(prefix="steelyard-") as folder:
         extension = write_oxt(Path(folder) / "steelyard.oxt")  # LibreOffice keeps a copy of its own
-        _run(tool, "add", "--force", "--suppress-license", str(extension))
+        _remove(tool)
+        _run(tool, "add", "--suppress-license", str(extension))
+    # LibreOffice keeps two copies of its list of extensions and changes over at each start of its tool or
+    # of itself. Its very first start looks into the older copy; one more run brings that up to date.
+    if IDENTIFIER not in _run(tool, "list"):
+        message = "LibreOffice took the extension but does not list it: close LibreOffice and try again"
+        raise SteelyardError(message)
     return [
         f"Steelyard {VERSION} is installed in LibreOffice for this user.",
         f"The functions are computed by {sys.executable}; after moving it, connect again.",
@@ -60,10 +66,8 @@ def disconnect_calc() -> list[str]:
     SteelyardError
         If LibreOffice is missing or its tool refuses.
     """
-    tool = _unopkg()
-    if IDENTIFIER not in _run(tool, "list"):
+    if not _remove(_unopkg()):
         return ["Steelyard was not installed in LibreOffice for this user; nothing to remove."]
-    _run(tool, "remove", IDENTIFIER)
     return ["Steelyard is removed from LibreOffice. Close LibreOffice and open it again."]
 
 
@@ -75,6 +79,14 @@ def _unopkg() -> Path:
         )
         raise SteelyardError(message)
     return tool
+
+
+def _remove(tool: Path) -> bool:
+    """Remove the extension if it is installed, and tell whether it was."""
+    installed = IDENTIFIER in _run(tool, "list")
+    if installed:
+        _run(tool, "remove", IDENTIFIER)
+    return installed
 
 
 def _run(tool: Path, *arguments: str) -> str:

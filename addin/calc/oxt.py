@@ -33,8 +33,8 @@ _MANIFEST = f"""\
 <manifest:manifest xmlns:manifest="http://openoffice.org/2001/manifest">
   <manifest:file-entry manifest:full-path="{IDL}"
     manifest:media-type="application/vnd.sun.star.uno-typelibrary;type=RDB"/>
-  <manifest:file-entry manifest:full-path="{COMPONENTS}"
-    manifest:media-type="application/vnd.sun.star.uno-components"/>
+  <manifest:file-entry manifest:full-path="component.py"
+    manifest:media-type="application/vnd.sun.star.uno-component;type=Python"/>
 </manifest:manifest>
 """
 
@@ -85,7 +85,6 @@ def parts(interpreter: str | None = None, timeout: float = TIMEOUT) -> dict[str,
         "META-INF/manifest.xml": _MANIFEST.encode(),
         "description.xml": _DESCRIPTION.format(identifier=IDENTIFIER, version=escape(VERSION)).encode(),
         IDL: _idl().encode(),
-        COMPONENTS: _COMPONENTS.encode(),
         "component.py": code.joinpath("component.py").read_bytes(),
         "pythonpath/steelyard_pipe.py": code.joinpath("pipe.py").read_bytes(),
         "functions.json": _json({_method(entry): _function(entry) for entry in CATALOGUE.values()}),
@@ -122,8 +121,8 @@ def write_oxt(path: str | os.PathLike[str], interpreter: str | None = None) -> P
 
 
 def unpack(folder: Path, interpreter: str | None = None, timeout: float = TIMEOUT) -> Path:
-    """Lay the extension's files out in a folder, to be used without installing it."""
-    for name, content in parts(interpreter, timeout).items():
+    """Lay the extension's files out in a folder, with the list of services that installing would add."""
+    for name, content in (parts(interpreter, timeout) | {COMPONENTS: _COMPONENTS.encode()}).items():
         file = folder / name
         file.parent.mkdir(parents=True, exist_ok=True)
         file.write_bytes(content)

@@ -47,7 +47,12 @@ def cells(document, area):
 
 def put(document, area, rows):
     """Write rows of numbers, texts and formulas (texts that begin with ``=``)."""
-    cells(document, area).setFormulaArray(tuple(tuple(row) for row in rows))
+    area = cells(document, area)
+    area.setDataArray(tuple(tuple(row) for row in rows))  # numbers in full: a formula array rounds them
+    for y, row in enumerate(rows):
+        for x, value in enumerate(row):
+            if str(value).startswith("="):
+                area.getCellByPosition(x, y).Formula = value
 
 
 def typed(document, cell, text):
@@ -79,6 +84,16 @@ def recalculate(document):
     start = time.monotonic()
     documents[document].calculateAll()
     return time.monotonic() - start
+
+
+def automatic(document, on):
+    """Say whether the document calculates by itself."""
+    documents[document].enableAutomaticCalculation(on)
+
+
+def rest(seconds):
+    """Do nothing for a while, as a user does between two recalculations."""
+    time.sleep(seconds)
 
 
 def save(document, path, filter_name):
@@ -114,6 +129,8 @@ COMMANDS = {
     "get": get,
     "formula": formula,
     "recalculate": recalculate,
+    "automatic": automatic,
+    "rest": rest,
     "save": save,
     "close": close,
     "functions": functions,

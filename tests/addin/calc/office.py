@@ -6,7 +6,9 @@ Commands are those of `driver.py`, called as methods: ``office.put(doc, "A1:B1",
 from __future__ import annotations
 
 import json
+import os
 import shutil
+import signal
 import subprocess
 import sys
 import uuid
@@ -80,6 +82,14 @@ class Office:
             return self._reply()
 
         return run
+
+    def kill(self) -> None:
+        """End LibreOffice as a crash would."""
+        self._driver.kill()
+        office = Path(f"/proc/{self._office.pid}/task/{self._office.pid}/children").read_text().split()
+        for process in office:
+            os.kill(int(process), signal.SIGKILL)
+        self._office.wait(30)
 
     def value(self, document: int, cell: str) -> Any:
         """Return one cell's number or text."""

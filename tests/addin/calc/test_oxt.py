@@ -60,12 +60,22 @@ def test_the_settings_name_the_interpreter_and_the_version(parts: dict[str, byte
 
 
 def test_the_manifest_names_files_that_are_there(parts: dict[str, bytes]) -> None:
-    for name in ("META-INF/manifest.xml", "description.xml", "steelyard.components"):
-        ElementTree.fromstring(parts[name])
+    ElementTree.fromstring(parts["description.xml"])
     attribute = "{http://openoffice.org/2001/manifest}full-path"
     entries = list(ElementTree.fromstring(parts["META-INF/manifest.xml"]))
-    assert [entry.get(attribute) for entry in entries] == ["steelyard.idl", "steelyard.components"]
-    assert {"component.py", "pythonpath/steelyard_pipe.py"} <= parts.keys()
+    assert [entry.get(attribute) for entry in entries] == ["steelyard.idl", "component.py"]
+    assert {"steelyard.idl", "component.py", "pythonpath/steelyard_pipe.py"} <= parts.keys()
+
+
+def test_unpacked_it_carries_its_list_of_services(tmp_path: Path) -> None:
+    oxt.unpack(tmp_path, interpreter="/opt/python", timeout=2)
+    services = ElementTree.fromstring((tmp_path / oxt.COMPONENTS).read_bytes())
+    assert [element.get("name") for element in services.iter() if element.tag.endswith("service")] == [
+        "com.sun.star.sheet.AddIn",
+        "SY",
+    ]
+    settings = json.loads((tmp_path / "settings.json").read_text())
+    assert settings == {"interpreter": "/opt/python", "version": VERSION, "timeout": 2}
 
 
 def test_a_file_that_cannot_be_written_leaves_nothing_behind(

@@ -1,0 +1,172 @@
+"""What Calc shows when the worker is killed, stopped, replaced, mad or out of memory, and how it recovers.
+
+One LibreOffice serves all tests. Its worker is a script that looks into a file to see what to be.
+"""
+
+from __future__ import annotations
+
+import fcntl
+import os
+import signal
+from collections.abc import Iterator
+from pathlib import Path
+from threading import Thread
+
+import pytest
+from conftest import StandIn
+from office import Office
+
+from steelyard.addin import call
+from steelyard.addin.calc.pipe import PAUSE
+from steelyard.core import VERSION
+
+pytestmark = [
+    pytest.mark.calc,
+    pytest.mark.skipif(os.name == "nt", reason="a script cannot stand in for an interpreter on Windows"),
+]
+
+TIMEOUT = 3.0
+CELLS = 10_000
+PLAN = "binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4"
+AREA = f"F1:F{CELLS}"
+AGAIN = "Press Ctrl+Shift+F9 to calculate again."
+
+CHAMELEON = """
+mode = open(__file__ + ".mode").read()
+if mode == "good":
+    os.execv(sys.executable, [sys.executable, *sys.argv[1:]])
+if mode == "scanty":
+    import resource
+    from steelyard.addin.calc import worker
+    from steelyard.core import VERSION
+    resource.setrlimit(resource.RLIMIT_AS, (1 << 30, 1 << 30))
+    def answer(name, args): return bytearray(1 << 31)
+    worker.serve(worker._lines(sys.stdin.buffer), sys.stdout.buffer, answer, VERSION)
+say({"steelyard": "9.9.9", "protocol": 1} if mode == "other" else HELLO)
+sys.stdin.readline()
+if mode == "rubbish":
+    print("0.5")
+if mode == "stopped":
+    os.kill(os.getpid(), signal.SIGSTOP)
+"""
+
+HOLDS_A_LOCK = """
+import fcntl
+file = open(__file__)
+fcntl.flock(file, fcntl.LOCK_EX)
+os.set_inheritable(file.fileno(), True)
+"""
+
+
+class Patient:
+    """A Calc document of 10,000 cells, one call each, and the worker behind them."""
+
+    def __init__(self, office: Office, program: StandIn) -> None:
+        self.office = office
+        self.program = program
+        self.be("good")
+        self.document = office.open()
+        office.automatic(self.document, False)
+        office.put(self.document, AREA, [[f'=SY.POWER("{PLAN}";{row + 1}/{CELLS})'] for row in range(CELLS)])
+
+    def be(self, mode: str) -> None:
+        """Say what the next worker is."""
+        Path(self.program.path + ".mode").write_text(mode)
+
+    def signal(self, number: signal.Signals) -> None:
+        """Send a signal to the running worker."""
+        os.kill(self.program.starts[-1], number)
+
+    def recalculate(self) -> float:
+        """Calculate every cell anew, as a recalculation of its own, and return the seconds."""
+        self.office.rest(PAUSE + 0.1)
+        return self.office.recalculate(self.document)
+
+    def values(self) -> list[object]:
+        return [row[0] for row in self.office.get(self.document, AREA)]
+
+
+@pytest.fixture(scope="module")
+def expected() -> list[object]:
+    return [call("SY_POWER", [PLAN, (row + 1) / CELLS]) for row in range(CELLS)]
+
+
+@pytest.fixture(scope="module")
+def patient(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Patient]:
+    program = StandIn(tmp_path_factory.mktemp("faults") / "stand-in", CHAMELEON)
+    with Office(program.path, TIMEOUT) as office:
+        yield Patient(office, program)
+
+
+@pytest.fixture(autouse=True)
+def healthy(patient: Patient) -> None:
+    """Begin with a worker that works."""
+    patient.be("good")
+    patient.office.rest(PAUSE + 0.1)
+    assert patient.office.compute(patient.document, "=SY.VERSION()") == VERSION
+
+
+def test_a_worker_killed_in_the_middle_is_replaced_without_notice(
+    patient: Patient, expected: list[object]
+) -> None:
+    starts = len(patient.program.starts)
+    calculation = Thread(target=patient.recalculate)
+    calculation.start()
+    while calculation.is_alive() and len(patient.program.starts) < starts + 3:
+        patient.signal(signal.SIGKILL)
+        calculation.join(0.3)
+    calculation.join()
+    assert len(patient.program.starts) > starts
+    assert patient.values() == expected
+
+
+@pytest.mark.parametrize(
+    ("mode", "message"),
+    [
+        ("dead", f"SY: the helper process ended twice while it computed this cell (out of memory?). {AGAIN}"),
+        ("stopped", f"SY: no answer within 3 s, so the helper process was ended. {AGAIN}"),
+        ("rubbish", f"SY: the helper process sent something that is no answer, so it was ended. {AGAIN}"),
+        (
+            "other",
+            f"SY: this add-in belongs to Steelyard {VERSION}, but Python runs Steelyard 9.9.9. "
+            "Run: steelyard connect calc. Then restart LibreOffice.",
+        ),
+        ("scanty", "SY: the memory does not suffice for this call: use smaller ranges"),
+    ],
+)
+def test_every_cell_says_what_happened_and_the_next_recalculation_is_right(
+    patient: Patient, expected: list[object], mode: str, message: str
+) -> None:
+    patient.be(mode)
+    patient.signal(signal.SIGKILL)
+    seconds = patient.recalculate()
+    assert set(patient.values()) == {message}
+    assert seconds < 2 * TIMEOUT  # the promise itself
+    patient.be("good")
+    if mode == "scanty":  # this one still lives
+        patient.signal(signal.SIGKILL)
+    patient.recalculate()
+    assert patient.values() == expected
+
+
+def test_a_worker_stopped_in_the_middle_leaves_right_numbers_and_texts(
+    patient: Patient, expected: list[object]
+) -> None:
+    patient.signal(signal.SIGSTOP)
+    assert patient.recalculate() < 2 * TIMEOUT  # the promise itself
+    assert set(patient.values()) == {f"SY: no answer within 3 s, so the helper process was ended. {AGAIN}"}
+    patient.recalculate()
+    assert patient.values() == expected
+
+
+def test_the_worker_ends_with_calc(tmp_path: Path) -> None:
+    """The worker holds a lock on a file as long as it lives; here we wait until the lock is free."""
+    program = StandIn(tmp_path / "stand-in", HOLDS_A_LOCK + CHAMELEON)
+    Path(program.path + ".mode").write_text("good")
+    with Office(program.path) as office:
+        assert office.compute(office.open(), "=SY.VERSION()") == VERSION
+        with Path(program.path).open() as file:
+            with pytest.raises(BlockingIOError):
+                fcntl.flock(file, fcntl.LOCK_EX | fcntl.LOCK_NB)
+            office.kill()
+            fcntl.flock(file, fcntl.LOCK_EX)
