@@ -19,6 +19,7 @@ from steelyard.core.plan import Plan, Reject
 from steelyard.core.questions import power, size
 
 _DOUBLINGS, _HALVINGS = 80, 64
+_FAR, _NEAR_NOTHING = 2.0**30, 2.0**-30
 _UPWARDS, _DOWNWARDS = "upper", "lower"
 _SMALL = 10.0 ** np.arange(-9, -2)
 _GRID = np.concatenate([_SMALL, np.arange(0.01, 1, 0.01), 1 - _SMALL[::-1]])
@@ -106,7 +107,7 @@ def claims_both_sides(plan: Plan) -> bool:
 def _end(plan: Plan, end: str | None) -> str:
     """Return on which side of the claim the power climbs."""
     kind = kind_of(plan)
-    if sum(not parameter.optional for parameter in kind.parameters) > 1:
+    if kind.needs(plan) > 1:
         message = f"a plan of kind {plan.kind} has more than one parameter, so no single rate answers this"
         raise NoAnswer(message)
     if claims_both_sides(plan):
@@ -149,14 +150,15 @@ def _ends(
     kind: Kind, columns: Columns, plans: Sequence[Plan], end: str, anchors: Floats | None
 ) -> tuple[Floats, Floats]:
     """Return where the power is least and where it is greatest; an infinite end is searched later."""
-    lower, upper = kind.parameters[0].span(columns)
-    near = (lower if end == _UPWARDS else upper) if anchors is None else anchors
-    near = np.where(np.isfinite(near), near, np.nan)
-    if np.isnan(near).any():  # a mean has no least value: start far on the claim's own side
-        middle = np.array([[_middle(plan)] for plan in plans])
-        far = np.maximum(1.0, np.abs(middle)) * 2.0**30
-        near = np.where(np.isnan(near), middle - far if end == _UPWARDS else middle + far, near)
-    return near, np.asarray(upper if end == _UPWARDS else lower, dtype=float)
+    parameter = kind.parameters[0]
+    lower, upper = parameter.span(columns)
+    middle = np.array([[_middle(plan)] for plan in plans])
+    if parameter.lower_open:  # a standard deviation or a life of 0 is none
+        lower = middle * _NEAR_NOTHING
+    start, outside = (lower, upper) if end == _UPWARDS else (upper, lower)
+    far = np.maximum(1.0, np.abs(middle)) * _FAR  # on the claim's own side, where the power is least
+    start = np.where(np.isfinite(start), start, middle - far if end == _UPWARDS else middle + far)
+    return start if anchors is None else anchors, np.asarray(outside, dtype=float)
 
 
 def _middle(plan: Plan) -> float:
