@@ -48,7 +48,10 @@ def cells(document, area):
 def put(document, area, rows):
     """Write rows of numbers, texts and formulas (texts that begin with ``=``)."""
     area = cells(document, area)
-    area.setDataArray(tuple(tuple(row) for row in rows))  # numbers in full: a formula array rounds them
+    if all(isinstance(value, str) for row in rows for value in row):
+        area.setFormulaArray(tuple(map(tuple, rows)))
+        return
+    area.setDataArray(tuple(map(tuple, rows)))  # numbers in full: a formula array rounds them
     for y, row in enumerate(rows):
         for x, value in enumerate(row):
             if str(value).startswith("="):

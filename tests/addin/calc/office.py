@@ -56,14 +56,15 @@ class Office:
             command = stack.enter_context(soffice.session(True, *self._options))
             pipe = f"steelyard{uuid.uuid4().hex}"
             command += [f"--accept=pipe,name={pipe};urp;"]
-            self._office = stack.enter_context(subprocess.Popen(command, stderr=subprocess.DEVNULL))
-            stack.callback(self._office.kill)
+            self._office = stack.enter_context(
+                subprocess.Popen(command, stderr=subprocess.DEVNULL, start_new_session=True)
+            )
             self._driver = stack.enter_context(
                 subprocess.Popen(
                     [python, str(DRIVER), pipe], stdin=subprocess.PIPE, stdout=subprocess.PIPE, text=True
                 )
             )
-            stack.callback(self._driver.kill)
+            stack.callback(self.kill)
             self._reply()
             self._stack = stack.pop_all()
         return self
@@ -84,12 +85,10 @@ class Office:
         return run
 
     def kill(self) -> None:
-        """End LibreOffice as a crash would."""
+        """End LibreOffice as a crash would, with the program that watches over it."""
+        if self._office.poll() is None:
+            os.killpg(self._office.pid, signal.SIGKILL)
         self._driver.kill()
-        office = Path(f"/proc/{self._office.pid}/task/{self._office.pid}/children").read_text().split()
-        for process in office:
-            os.kill(int(process), signal.SIGKILL)
-        self._office.wait(30)
 
     def value(self, document: int, cell: str) -> Any:
         """Return one cell's number or text."""
