@@ -114,7 +114,9 @@ def test_rubbish_never_becomes_a_number(stand_in: Maker, answer: str) -> None:
     assert worker(program).call("power", [1]) == RUBBISH
 
 
-@pytest.mark.parametrize("hello", ["print('hello', flush=True)", "say([1])", "say({})", "print('{', flush=True)"])
+@pytest.mark.parametrize(
+    "hello", ["print('hello', flush=True)", "say([1])", "say({})", "print('{', flush=True)"]
+)
 def test_a_program_that_is_no_worker_is_refused(stand_in: Maker, hello: str) -> None:
     assert worker(stand_in(f"{hello}\nsys.stdin.readline()\n")).call("power", [1]) == RUBBISH
 
