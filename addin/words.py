@@ -117,3 +117,12 @@ ToCatch = Annotated[
     Any, Word('The rate that must be caught, such as 5%; for either side also "1% and 5%".', as_typed)
 ]
 FieldName = Annotated[str, Word("Word that starts the field, such as n, units, lot, claim or alpha.", text)]
+Misses = Annotated[
+    float, Word("Share of the defectives (or defects) that inspection misses, such as 10%.", number)
+]
+FalseAlarms = Annotated[
+    float,
+    Word(
+        "Share of the good items that inspection condemns; false finds per unit where defects count.", number
+    ),
+]

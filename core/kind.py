@@ -33,7 +33,7 @@ class Field:
     word : str
         The word that starts the field; the design's attribute has ``_`` for ``-``.
     read : callable
-        Turns the text after the word into a value; raises `InvalidValue`.
+        Turns the text after the word, or a number, into a value; raises `InvalidValue`.
     write : callable
         Turns a value into text.
     default : object
@@ -41,7 +41,7 @@ class Field:
     """
 
     word: str
-    read: Callable[[str, str], Any]
+    read: Callable[[Any, str], Any]
     write: Callable[[Any], str] = write_number
     default: Any = None
 
@@ -106,6 +106,8 @@ class Grammar:
         The field that says how much is inspected.
     extra : str
         The field, if any, that must be known beside it: the lot, or sigma.
+    base : str
+        The kind that this one is a form of, with further fields such as ``misses``.
     """
 
     kind: str
@@ -120,6 +122,7 @@ class Grammar:
     wording: Wording
     extent: str = "n"
     extra: str = ""
+    base: str = ""
 
 
 class Kind(ABC):

@@ -72,20 +72,25 @@ def rate_limit(law: RateLaw, row: Row, x: float, end: str, miss: float, split: s
     return _one_sided(law, columns, x, own, miss if split == ONE_SIDED else miss / 2)
 
 
-def lot_limit(law: CountLaw, row: Row, x: float, end: str, miss: float, split: str) -> float:
+def lot_limit(
+    law: CountLaw, row: Row, x: float, end: str, miss: float, split: str, reach: tuple[float, float]
+) -> float:
     """Return a limit for the number of defectives in a lot, a whole number; ties are decided exactly.
 
-    Parameters are those of `rate_limit`; the row has the fields ``lot`` and ``n``.
+    Parameters are those of `rate_limit`, and with them
+
+    reach : tuple of float
+        The least and the greatest number of defectives with which the count may be found.
 
     Examples
     --------
     >>> from steelyard.core.kinds.hypergeometric import HYPERGEOMETRIC
-    >>> lot_limit(HYPERGEOMETRIC.law, {"lot": 60, "n": 32}, 0, "upper", 0.05, "one-sided")
+    >>> lot_limit(HYPERGEOMETRIC.law, {"lot": 60, "n": 32}, 0, "upper", 0.05, "one-sided", (0, 28))
     3.0
     """
     columns, (own, _, inwards) = dict(row), _OWN[end]
-    span = float(row["lot"] - row["n"])
-    outermost = x if end == "lower" else x + span
+    outermost = reach[0] if end == "lower" else reach[1]
+    span = reach[1] - reach[0]
 
     def possible(distance: Floats, bound: float, split: str) -> Truth:
         count = outermost + inwards * np.minimum(distance, span)

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import dataclasses
 
+from steelyard.core.abilities import Remarking
 from steelyard.core.errors import SteelyardError
 from steelyard.core.kind import kind_of
 from steelyard.core.parameter import show_rate
@@ -62,7 +63,9 @@ def sentences(plan: Plan) -> list[str]:
         told += [text for text in (_reach(plan), _note(plan)) if text]
     else:
         told.append(rule_sentence(plan))
-    return [*told, NOT_PROOF]
+    kind = kind_of(plan)
+    remarks = kind.remarks(plan) if isinstance(kind, Remarking) else []
+    return [*told, *remarks, NOT_PROOF]
 
 
 def sample_sentence(plan: Plan) -> str:

@@ -101,21 +101,32 @@ def _store(words: dict[str, str], word: str, rest: str, candidates: list[Kind]) 
 
 
 def _choose(candidates: list[Kind], words: dict[str, str]) -> Kind:
-    fitting = [kind for kind in candidates if kind.grammar.marker in words]
-    if len(fitting) == 1:
-        kind = fitting[0]
-    elif fitting:
-        markers = " and ".join(kind.grammar.marker for kind in fitting)
-        raise InvalidValue("plan", f"have only one of {markers}", "all of them")
-    elif len(candidates) == 1:
-        kind = candidates[0]
-    else:
-        markers = " or ".join(kind.grammar.marker for kind in candidates)
-        raise InvalidValue("plan", f"say {markers}", None)
+    """Return the kind whose fields cover the words and whose marker is among them."""
+    covering = [kind for kind in candidates if words.keys() <= _fields(kind)] or candidates
+    fitting = [kind for kind in covering if kind.grammar.marker in words] or covering
+    if len(fitting) > 1:
+        return _foremost(fitting, words)
     for word in words:
-        if word not in (*kind.grammar.order, kind.grammar.head):
-            raise InvalidValue("field", f"be one of {', '.join(kind.grammar.order)}", word)
-    return kind
+        if word not in _fields(fitting[0]):
+            raise InvalidValue("field", f"be one of {', '.join(fitting[0].grammar.order)}", word)
+    return fitting[0]
+
+
+def _fields(kind: Kind) -> set[str]:
+    return {*kind.grammar.order, kind.grammar.head}
+
+
+def _foremost(fitting: list[Kind], words: dict[str, str]) -> Kind:
+    """Return the one kind that is no form of another; several are told apart by their markers."""
+    if any(kind.grammar.marker in words for kind in fitting):  # and no kind has all the fields
+        bases = {kind.grammar.base for kind in fitting}
+        markers = [kind.grammar.marker for kind in fitting if kind.grammar.kind not in bases]
+        raise InvalidValue("plan", f"have only one of {' and '.join(markers)}", "all of them")
+    plain = [kind for kind in fitting if not kind.grammar.base]
+    if len(plain) != 1:
+        markers = [kind.grammar.marker for kind in plain or fitting]
+        raise InvalidValue("plan", f"say {' or '.join(markers)}", None)
+    return plain[0]
 
 
 def _assemble(grammar: Grammar, kind: Kind, words: dict[str, str]) -> Plan:

@@ -2,7 +2,7 @@
 
 from importlib import import_module
 
-MODULES = ("binomial", "poisson", "hypergeometric")
+MODULES = ("binomial", "poisson", "hypergeometric", "inspected")
 
 for _module in MODULES:
     import_module(f"{__name__}.{_module}")

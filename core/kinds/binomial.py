@@ -12,7 +12,7 @@ import numpy as np
 from steelyard.core import exact, inverses, tails
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
-from steelyard.core.law import ExactLaw, RateLaw, running_means
+from steelyard.core.law import CountLaw, ExactLaw, RateLaw, running_means
 from steelyard.core.numbers import read_whole
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.threshold import CountKind, threshold_fields
@@ -79,7 +79,7 @@ class BinomialLaw(RateLaw):
 class BinomialKind(CountKind):
     """Single plans for the rate of defectives."""
 
-    law = BinomialLaw()
+    law: CountLaw = BinomialLaw()
     parameters = (Parameter("p", "defect rate", "proportion between 0 and 1", 0.0, 1.0),)
     grammar = Grammar(
         kind="binomial",

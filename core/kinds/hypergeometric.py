@@ -120,7 +120,8 @@ class HypergeometricLaw(CountLaw):
 
     def limit(self, row: Mapping[str, Any], x: float, end: str, miss: float, split: str) -> float:
         """Return a limit for D, a whole number."""
-        return limits.lot_limit(self, row, x, end, miss, split)
+        reach = (x, x + float(row["lot"] - row["n"]))
+        return limits.lot_limit(self, row, x, end, miss, split, reach)
 
     def largest(self, columns: Columns) -> Any:
         """Return the lot."""
@@ -134,7 +135,7 @@ class HypergeometricLaw(CountLaw):
 class HypergeometricKind(CountKind):
     """Single plans for a finite lot."""
 
-    law = HypergeometricLaw()
+    law: CountLaw = HypergeometricLaw()
 
     parameters = (
         Defectives("D", "defectives in the lot", "items per lot", 0.0, math.inf, aliases=("p",), whole=True),

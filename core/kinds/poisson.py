@@ -13,7 +13,7 @@ import numpy as np
 from steelyard.core import exact, inverses, tails
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
-from steelyard.core.law import ExactLaw, UnboundedCountLaw, running_means
+from steelyard.core.law import CountLaw, ExactLaw, UnboundedCountLaw, running_means
 from steelyard.core.numbers import read_number, typed
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.plan import Claim
@@ -76,7 +76,7 @@ class PoissonLaw(UnboundedCountLaw):
 class PoissonKind(CountKind):
     """Single plans for defects per unit."""
 
-    law = PoissonLaw()
+    law: CountLaw = PoissonLaw()
     parameters = (Parameter("rate", "defects per unit", "defects per unit, 0 or more", 0.0, math.inf),)
     grammar = Grammar(
         kind="poisson",
