@@ -2,15 +2,16 @@
 
 from __future__ import annotations
 
+import dataclasses
 from dataclasses import dataclass
 from typing import Any
 
 from steelyard.core.claims import claim_from
 from steelyard.core.designs import design_from, extent_values, kind_named
 from steelyard.core.errors import InvalidValue
-from steelyard.core.kind import Kind
+from steelyard.core.kind import Kind, claim_of, kind_of
 from steelyard.core.numbers import read_choice, read_probability, write_number
-from steelyard.core.plan import SPLITS, Claim
+from steelyard.core.plan import SPLITS, Claim, Plan
 
 
 @dataclass(frozen=True, slots=True)
@@ -49,9 +50,9 @@ class Need:
 
     def sized(self, amount: float) -> Any:
         """Return the design with an amount."""
-        grammar = self.kind.grammar
-        extra = getattr(self.design, grammar.extra) if grammar.extra else None
-        return design_from(self.kind, extent_values(self.kind, amount, extra))
+        extent = self.kind.grammar.extent
+        field = next(field for field in self.kind.grammar.fields if field.attribute == extent)
+        return dataclasses.replace(self.design, **{extent: field.read(amount, field.word)})
 
 
 def need_from(
@@ -100,15 +101,34 @@ def need_from(
     """
     kind = kind_named(kind_name)
     size = read_probability(alpha, "alpha")
-    target = read_probability(power, "power")
-    if target <= size:
-        raise InvalidValue("power", "be greater than alpha", power)
+    target = _target(power, size)
     design = design_from(kind, extent_values(kind, 1, extra))
     stated = claim_from(kind, claim, side, design)
     kind.check_claim(stated, design)
     catches = _catches(kind, stated, catch, design)
     split = read_choice(split, "split", SPLITS) if stated.side == "either" else SPLITS[0]
     return Need(kind, design, stated, catches, size, target, split, whole)
+
+
+def need_of(plan: Plan, catch: Any, power: Any, alpha: float) -> Need:
+    """Return the requirement that a plan's claim, and design but for the amount, shall meet.
+
+    Parameters
+    ----------
+    plan : Plan
+    catch, power, alpha
+        See `need_from`.
+    """
+    kind, claim = kind_of(plan), claim_of(plan)
+    target, catches = _target(power, alpha), _catches(kind, claim, catch, plan.design)
+    return Need(kind, plan.design, claim, catches, alpha, target, plan.split)
+
+
+def _target(power: Any, alpha: float) -> float:
+    target = read_probability(power, "power")
+    if target <= alpha:
+        raise InvalidValue("power", "be greater than alpha", power)
+    return target
 
 
 def _catches(kind: Kind, claim: Claim, catch: Any, design: Any) -> tuple[float, ...]:
