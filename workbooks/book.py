@@ -89,9 +89,9 @@ def build_book(
     readme = add_readme(book)
     register = Register(book, planned)
     add_grid(book, register)
+    add_checks(book, register)
     steps = progress(chosen, "justifications") if progress else chosen
     titles = [add_justification(book, register, place, origin).title for place in steps]
-    add_checks(book, register)
     summary = Summary(
         len(planned), len(titles), len(problems), sum(word == AGREES for word in register.values("agrees"))
     )

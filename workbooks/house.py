@@ -130,7 +130,7 @@ class Book:
         """Return the values that a reference of `Sheet.ref` shows, row by row."""
         whole = ref if ":" in ref else f"{ref}:{ref.rpartition('!')[2]}"
         title, (left, top, right, bottom) = range_to_tuple(whole)
-        sheet = self.sheets[title]
+        sheet = self.sheets[title.replace("''", "'")]
         cells = [cell for row in sheet.raw.iter_rows(top, bottom, left, right) for cell in row]
         return [sheet.stored.get(cell.coordinate, cell.value) for cell in cells]
 

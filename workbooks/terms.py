@@ -135,4 +135,4 @@ def _written(value: Value) -> str:
     if isinstance(value, str):
         doubled = value.replace('"', '""')
         return f'"{doubled}"'
-    return "" if value is None else repr(value).removesuffix(".0")
+    return "" if value is None else repr(value).removesuffix(".0").upper()

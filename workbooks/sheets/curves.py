@@ -17,7 +17,7 @@ from steelyard.workbooks.terms import Terms, ask
 
 POINTS = 60
 _X, _POWER, _PASS = "K", "L", "M"
-_HEIGHT, _WIDTH = 6.7, 19.0  # cm
+_HEIGHT, _WIDTH = 6.7, 18.6  # cm
 
 
 def marked_rates(register: Register, place: int) -> list[float]:

@@ -56,14 +56,14 @@ HEADS = (
     Head("actual", "Actual size", 9.5),
     Head("power", "Power at catch", 9),
     Head("short", "Shortfall of power", 9.5),
-    Head("p95", "95 %", 10, "True value that passes with"),
+    Head("p95", "95 %", 10, "True value passing with"),
     Head("p50", "50 %", 10),
     Head("p10", "10 %", 10),
     Head("native", "Power by native functions", 11, "Checks"),
     Head("agrees", "Native check", 9),
     Head("check", "Remark on the plan", 32),
-    Head("catch_own", "Catch", 10, "Working columns, in the plan's unit"),
-    Head("second_own", "and catch", 10),
+    Head("catch_own", "Catch used", 10, "In the plan's unit"),
+    Head("second_own", "and catch used", 10),
 )
 PLACE = {head.key: get_column_letter(number) for number, head in enumerate(HEADS, 1)}
 REQUESTED = [head.key for head in HEADS].index("plan")  # columns of the request
