@@ -35,15 +35,17 @@ def asking(question: Callable[[Kind], Question]) -> Callable[..., Any]:
 
 def rates_grid(plan: Any, power: Any, end: Any = None) -> Any:
     """Return the grid twin of SY_RATE_FOR: one search for all cells with the same power and end."""
-    cells = np.broadcast_arrays(*(np.array(rows_of(cells), dtype=object) for cells in (plan, power, end)))
+    cells: Any = np.broadcast_arrays(
+        *(np.array(rows_of(given), dtype=object) for given in (plan, power, end))
+    )
     groups: dict[tuple[float, str | None], list[tuple[Plan, tuple[int, ...]]]] = {}
     for place in np.ndindex(cells[0].shape):
         found, goal, side = plan_or_none(cells[0][place]), cells[1][place], cells[2][place]
         if found is not None and type(goal) is float and 0 < goal < 1 and side in (None, *LIMIT_ENDS):
             groups.setdefault((goal, side), []).append((found, place))
     answers = np.full(cells[0].shape, np.nan)
-    for (goal, side), members in groups.items():
-        solved = rates_for([found for found, _ in members], [goal], side)
+    for (target, wanted), members in groups.items():
+        solved = rates_for([found for found, _ in members], [target], wanted)
         for (_, place), rate in zip(members, solved[:, 0], strict=True):
             answers[place] = rate
     return answers

@@ -36,7 +36,7 @@ class Terms:
         """Return the piece in a row, counted from 0."""
         return self.texts[row if len(self.texts) > 1 else 0]
 
-    def values(self) -> list[Value]:
+    def values(self) -> list[Any]:
         """Return the first value of each row."""
         return [row[0] for row in self.cells]
 

@@ -119,6 +119,6 @@ def _marks(sheet: Sheet, register: Register, place: int, end: float) -> list[Cur
         first = sheet.next_row
         for x, y in ends:
             sheet.add(Put(float(x), style), Put(float(y), "plain power"), column=_X)
-        areas = [sheet.ref(f"{letters}{first}", f"{letters}{first + 1}") for letters in (_X, _POWER)]
-        curves.append(Curve(name, *areas, role))
+        across, up = (sheet.ref(f"{letters}{first}", f"{letters}{first + 1}") for letters in (_X, _POWER))
+        curves.append(Curve(name, across, up, role))
     return curves

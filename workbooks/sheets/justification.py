@@ -24,7 +24,7 @@ _ALTERNATIVE = {
 }
 _PASSING = {
     "fail": "The sample does not contradict the claim. It proves neither the claim nor a faultless lot.",
-    "pass": "The sample contradicts the claim; while the claim is true it does so with the actual size at most.",
+    "pass": "The sample contradicts the claim; while that is true, it does so with the actual size at most.",
 }
 _AFTER = "The procedure for failed lots applies. No second sample is taken: the plan has only one."
 _GENERAL = (

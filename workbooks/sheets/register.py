@@ -144,7 +144,8 @@ class Register:
         return {key: f"{letters}{FIRST + place}" for key, letters in PLACE.items()}
 
     def _write_request(self) -> None:
-        first, second = (self._each(lambda planned, i=i: (*planned.catches, None, None)[i]) for i in (0, 1))
+        pairs = self._each(lambda planned: (*planned.catches, None, None)[:2])
+        first, second = ([pair[number] for pair in pairs] for number in (0, 1))
         self._input("number", self._each(lambda planned: planned.number), "index")
         self._input("name", self._each(lambda planned: planned.request.characteristic), "entry words")
         self._input("kind", self._each(lambda planned: planned.request.kind), "result")
@@ -157,11 +158,9 @@ class Register:
         self._input("side", self._each(lambda planned: planned.side), "pick", choice(tuple(SIDES.values())))
         self._input("alpha", self._each(lambda planned: planned.alpha), "input rate", _CHANCE)
         self._input("catch", first, self._rate_inputs(first))
-        pairs = self._each(lambda planned: len(planned.catches) > 1)
         styles = self._rate_inputs(second)
-        self._input(
-            "second", second, [s if pair else "result" for s, pair in zip(styles, pairs, strict=True)]
-        )
+        looks = ["result" if rate is None else style for rate, style in zip(second, styles, strict=True)]
+        self._input("second", second, looks)
         self._input("wanted", self._each(lambda planned: planned.request.power), "input rate", _CHANCE)
         self._input("extra", self._each(lambda planned: planned.extra), self._each(_extra_style))
         self._input("fixed", self._each(lambda planned: planned.request.n), "input number", _SIZE)
@@ -211,13 +210,12 @@ class Register:
 
     def _least(self, first: Terms, second: Terms) -> Terms:
         """Return the power at the rate to catch; with two of them, the lesser power."""
-        pairs = self._each(lambda planned: len(planned.catches) > 1)
-        texts = tuple(
-            f"MIN({a},{b})" if pair else a
-            for a, b, pair in zip(first.texts, second.texts, pairs, strict=True)
-        )
-        both = zip(first.values(), second.values(), pairs, strict=True)
-        return Terms(texts, [[min(a, b) if pair else a] for a, b, pair in both])
+        texts, cells = [], []
+        for place, (one, other) in enumerate(zip(first.values(), second.values(), strict=True)):
+            single = other is None
+            texts.append(first.texts[place] if single else f"MIN({first.texts[place]},{second.texts[place]})")
+            cells.append([one if single else min(one, other)])
+        return Terms(tuple(texts), cells)
 
     def _shortfall(self) -> Terms:
         texts, cells = [], []
