@@ -8,7 +8,7 @@ cell; one bad cell never spoils the others; no exception ever leaves this module
 from __future__ import annotations
 
 import functools
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from typing import Any
 
 import numpy as np
@@ -78,7 +78,7 @@ def cell(
 
 def _scalar(function: Callable[..., Any], arguments: Sequence[Argument]) -> Callable[..., Cells]:
     def one(*cells: Any) -> Cells:
-        for value in cells:
+        for value in _single(cells):
             if handed_on(value):
                 return value
         try:
@@ -89,6 +89,15 @@ def _scalar(function: Callable[..., Any], arguments: Sequence[Argument]) -> Call
             return refusal("the question is too large to compute")
 
     return one
+
+
+def _single(cells: Sequence[Any]) -> Iterator[Any]:
+    """Yield every cell, also those of ranges that are taken as a whole."""
+    for value in cells:
+        if isinstance(value, tuple):
+            yield from (cell for row in value for cell in row)
+        else:
+            yield value
 
 
 def _read(arguments: Sequence[Argument], cells: Sequence[Any]) -> list[Any]:

@@ -12,6 +12,7 @@ from steelyard.addin.plans import plan_of
 from steelyard.core.errors import InvalidValue
 from steelyard.core.numbers import read_choice, read_number, read_probability, read_whole
 from steelyard.core.plan import SIDES, SPLITS, VERDICTS, Plan
+from steelyard.core.together import RELATIONS
 
 ENDS = ("lower", "upper")
 ORDERS = ("first", "lasting")
@@ -41,13 +42,28 @@ def one_of(allowed: tuple[str, ...]) -> Any:
     return lambda value, name: read_choice(text(value, name), name, allowed)
 
 
-def plan_texts(value: Any, name: str) -> tuple[Plan, ...]:
-    """Return the plans of a whole range, blank cells left out."""
+def cells_in(value: Any) -> tuple[Any, ...]:
+    """Return the cells of a whole range, or a single cell, in reading order; blank ones are None."""
     rows = value if isinstance(value, tuple) else ((value,),)
-    plans = tuple(plan_of(cell, name) for row in rows for cell in row if cell not in (None, ""))
-    if not plans:
+    return tuple(None if cell in (None, "") else cell for row in rows for cell in row)
+
+
+def plan_cells(value: Any, name: str) -> tuple[Plan | None, ...]:
+    """Return the plans of a whole range in their places; None for blank cells."""
+    plans = tuple(None if cell is None else plan_of(cell, name) for cell in cells_in(value))
+    if not any(plans):
         raise InvalidValue(name, "hold at least one plan", None)
     return plans
+
+
+def rate_cells(value: Any, name: str) -> tuple[Any, ...]:
+    """Return the rates of a whole range as typed, in their places; None for blank cells."""
+    return tuple(None if cell is None else as_typed(cell, name) for cell in cells_in(value))
+
+
+def plan_texts(value: Any, name: str) -> tuple[Plan, ...]:
+    """Return the plans of a whole range, blank cells left out."""
+    return tuple(plan for plan in plan_cells(value, name) if plan is not None)
 
 
 Plans = Annotated[
@@ -124,5 +140,48 @@ FalseAlarms = Annotated[
     float,
     Word(
         "Share of the good items that inspection condemns; false finds per unit where defects count.", number
+    ),
+]
+Measured = Annotated[
+    int,
+    Word("Items to measure: a whole number.", lambda v, name: read_whole(as_typed(v, name), name, 1)),
+]
+MeanClaim = Annotated[Any, Word("What is claimed of the mean: mean>=500, mean<=500 or mean=500.", as_typed)]
+SigmaClaim = Annotated[
+    Any, Word("What is claimed of the standard deviation: sigma<=0.4, or the bare number.", as_typed)
+]
+Sigma = Annotated[float, Word("The known standard deviation of single values.", number)]
+PlanningSigma = Annotated[
+    float, Word("The standard deviation that power is computed with: a guess, unlike a known sigma.", number)
+]
+WorstRate = Annotated[
+    Any, Word("The rate to rule out: 1%, or for a lot also a number of defectives such as 8.", as_typed)
+]
+Allowed = Annotated[
+    int,
+    Word(
+        "Defectives that the sample may show and still pass, from 0; or a range such as 0 to 5.",
+        lambda v, name: read_whole(as_typed(v, name), name),
+    ),
+]
+PlanCells = Annotated[
+    tuple[Plan | None, ...],
+    Word("A range of plan texts, one for each characteristic.", plan_cells, whole=True),
+]
+RateCells = Annotated[
+    tuple[Any, ...],
+    Word(
+        "The true rate of each characteristic, in as many cells; or one rate for all.", rate_cells, whole=True
+    ),
+]
+Relation = Annotated[
+    str,
+    Word("independent: the characteristics are; any: safe whatever their dependence.", one_of(RELATIONS)),
+]
+Characteristics = Annotated[
+    int,
+    Word(
+        "How many characteristics are judged: a whole number.",
+        lambda v, name: read_whole(as_typed(v, name), name, 1),
     ),
 ]

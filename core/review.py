@@ -60,7 +60,7 @@ def sentences(plan: Plan) -> list[str]:
     told = [sample_sentence(plan)]
     if plan.claim is not None:
         told += [claim_sentence(plan), rule_sentence(plan), *_risks(plan)]
-        told += [text for text in (_reach(plan), _note(plan)) if text]
+        told += [text for text in (_shown(plan), _reach(plan), _note(plan)) if text]
     else:
         told.append(rule_sentence(plan))
     kind = kind_of(plan)
@@ -110,6 +110,16 @@ def _risks(plan: Plan) -> list[str]:
     return [
         f"Type I error: while the claim is true it is rejected with probability {actual} at most{nominal}."
     ]
+
+
+def _shown(plan: Plan) -> str:
+    """Return what a passing lot has shown, for plans that demonstrate something by rejecting a claim."""
+    claim = plan.claim
+    if plan.verdict != "pass" or claim is None or claim.side == "either":
+        return ""
+    parameter, confidence = kind_of(plan).parameters[0], show_rate(1.0 - size(plan))
+    bound = f"{'below' if claim.side == 'below' else 'above'} {parameter.show(claim.value, bare=True)}"
+    return f"A lot that passes has shown, with confidence {confidence}: {parameter.name} {bound}."
 
 
 def _reach(plan: Plan) -> str:
