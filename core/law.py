@@ -151,6 +151,11 @@ class CountLaw(Law):
         del columns
         return rate
 
+    def pace(self, x: Any, columns: Columns, rate: Floats) -> Floats:
+        """Return the chance, per unit, of one more event in what is inspected next, after `x` events."""
+        del x
+        return self.share(columns, rate)
+
     def leans_high(self, rate: float) -> bool:
         """Tell whether the upper tail surely falls more slowly than the lower one, at every amount."""
         del rate

@@ -20,7 +20,8 @@ from steelyard.core.need import Need
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.spans import Risk, Rows
 
-_HALVINGS = 30
+_HALVINGS = 12
+_AT_ONCE = 64  # counts to look at in one call, at the least
 _TINY = 1e-300
 _REAL_STEPS = 2.0**46  # so many steps to the largest size that can be needed, where it may be any real number
 
@@ -61,23 +62,27 @@ class Requirements:
 
     def first(self) -> Floats:
         """Return the first amounts that meet the requirements; NaN where none allowed does."""
-        spans = self._spans()
-        count = _least(self.last_counts(), lambda rows, k: (spans[0].turn(rows, k), spans[1].turn(rows, k)))
-        return self._opening(spans[0], count)
+        spans, most, last = self._spans(), self.claim.size, self.last_counts()
+
+        def ends(rows: Rows, count: Floats) -> tuple[Floats, Floats]:
+            turns = spans.turn(np.concatenate([rows, rows + most]), np.concatenate([count, count]))
+            return turns[: rows.size], turns[rows.size :]
+
+        return self._opening(spans, _least(last, ends), last)
 
     def lasting(self) -> Floats:
         """Return the amounts from which on the requirements are met for good; NaN beyond the largest."""
-        opening, closing = self._spans()
-        last = self.last_counts()
+        spans, most, last = self._spans(), self.claim.size, self.last_counts()
 
         def gaps(rows: Rows, mirrored: Floats) -> tuple[Floats, Floats]:
-            """Return the ends of a gap before a count, mirrored: so that the last gap is the least."""
+            """Return the ends of the gap before a count, mirrored: so that the last gap is the least."""
             count = last[rows] + 1 - mirrored
-            before = np.where(count > 1, closing.turn(rows, np.maximum(count - 1, 1.0)), 0.0)
-            return -opening.turn(rows, count), -before - 2
+            counts = np.concatenate([count, np.maximum(count - 1, 1.0)])
+            turns = spans.turn(np.concatenate([rows, rows + most]), counts)
+            before = np.where(count > 1, turns[rows.size :], 0.0)
+            return -turns[: rows.size], -before - 2
 
-        count = last + 1 - _least(last, gaps)
-        return self._opening(opening, np.maximum(count, 1.0))
+        return self._opening(spans, np.maximum(last + 1 - _least(last, gaps), 1.0), last)
 
     def last_counts(self) -> Floats:
         """Return critical counts behind which every span overlaps the one before.
@@ -85,12 +90,12 @@ class Requirements:
         At a rate `t` per unit between the two rates, Chernoff's bound keeps both risks at every amount from
         ``max(log(1/risk) / divergence)`` on, with the critical count `t` times the amount.
         """
-        return np.maximum(np.ceil(self.last_amounts() * self.balance()), 1.0)
+        share = self.balance()
+        return np.maximum(np.ceil(self._enough(share) * share), 1.0)
 
-    def last_amounts(self) -> Floats:
+    def _enough(self, share: Floats) -> Floats:
         """Return amounts from which on both risks are kept, by Chernoff's bound."""
-        at_claim, at_catch = self._needed(self.balance())
-        return np.maximum(at_claim, at_catch) * (1 + 1e-9) + 1
+        return np.maximum(*self._needed(share)) * (1 + 1e-9) + 1
 
     def balance(self) -> Floats:
         """Return the counts per unit at which Chernoff's bound asks the same amount for either risk."""
@@ -98,45 +103,40 @@ class Requirements:
         for _ in range(_HALVINGS):
             middle = (near + far) / 2
             at_claim, at_catch = self._needed(middle)
-            near, far = (
-                np.where(at_claim > at_catch, middle, near),
-                np.where(at_claim > at_catch, far, middle),
-            )
+            near_claim = at_claim > at_catch
+            near, far = np.where(near_claim, middle, near), np.where(near_claim, far, middle)
         return (near + far) / 2
 
     def _needed(self, share: Floats) -> tuple[Floats, Floats]:
         """Return the amounts that Chernoff's bound asks for alpha at the claim, and for the power."""
-        ways = (-np.log(self.alpha), self.claim), (-np.log1p(-self.power), self.catch)
         at_claim, at_catch = (
-            risk / np.maximum(self.law.divergence(share, self.law.share(self.columns, rate)), _TINY)
-            for risk, rate in ways
+            self.law.divergence(share, self.law.share(self.columns, rate))
+            for rate in (self.claim, self.catch)
         )
-        return at_claim, at_catch
+        size, missed = -np.log(self.alpha), -np.log1p(-self.power)
+        return size / np.maximum(at_claim, _TINY), missed / np.maximum(at_catch, _TINY)
 
-    def _spans(self) -> tuple[Risk, Risk]:
-        """Return what opens and what closes a span: the size and the power, each at its rate."""
-        step = self.steps()
+    def _spans(self) -> Risk:
+        """Return what opens the spans, and after that what closes them."""
         size, power = (self.claim, self.alpha), (self.catch, self.power)
         (first, last), end = ((power, size), "high") if self.side == "above" else ((size, power), "low")
-        return (
-            Risk(self.law, self.columns, *first, end, False, step),
-            Risk(self.law, self.columns, *last, end, True, step),
-        )
+        columns = {name: np.tile(column, 2) for name, column in self.columns.items()}
+        rate, bound = (np.concatenate(parts) for parts in zip(first, last, strict=True))
+        closing = np.repeat([False, True], self.claim.size)
+        return Risk(self.law, columns, end, rate, bound, closing, np.tile(self.steps(), 2))
 
     def steps(self) -> Floats:
         """Return the amount of one step of the search: 1, or so little that it stands for a real number."""
         if self.whole:
             return np.ones(self.claim.shape)
-        return 2.0 ** np.ceil(np.log2(self.last_amounts() / _REAL_STEPS))
+        return 2.0 ** np.ceil(np.log2(self._enough(self.balance()) / _REAL_STEPS))
 
-    def _opening(self, opening: Risk, count: Floats) -> Floats:
-        found = np.flatnonzero(count <= self.last_counts())
+    def _opening(self, spans: Risk, count: Floats, last: Floats) -> Floats:
+        """Return the amounts at which the spans of some counts open, NaN beyond the last count or amount."""
+        found = np.flatnonzero(count <= last)
         amount = np.full(count.shape, np.nan)
-        steps = opening.turn(found, count[found])
-        allowed = np.floor(self.law.largest(self.columns) / opening.step)
-        part = steps * opening.step[found]
-        amount[found] = np.where(steps <= np.broadcast_to(allowed, count.shape)[found], part, np.nan)
-        return amount
+        amount[found] = spans.turn(found, count[found]) * spans.step[found]
+        return np.where(amount <= self.law.largest(self.columns), amount, np.nan)
 
 
 def one_sided_amount(law: CountLaw, row: Columns, need: Need, lasting: bool) -> float:
@@ -158,20 +158,24 @@ def _least(last: Floats, ends: Ends) -> Floats:
         From requirements and counts to the interval's two ends, neither of which falls as the count grows.
         So all counts between `a` and `b` are settled where `a` opens after `b` closes.
     """
-    best = last + 1
-    rows = np.arange(last.size)
+    best, rows = last + 1, np.arange(last.size)
     a, b = np.ones(last.shape), np.array(last)
-    opens, closes = _look(best, rows, a, ends)[0], _look(best, rows, b, ends)[1]
+    both = _look(best, np.tile(rows, 2), np.concatenate([a, b]), ends)
+    opens, closes = both[0][: rows.size], both[1][rows.size :]
     while True:
         keep = (b - a > 1) & (opens <= closes) & (a + 1 < best[rows])
         rows, a, b, opens, closes = (part[keep] for part in (rows, a, b, opens, closes))
         if not rows.size:
             return best
-        middle = np.floor((a + b) / 2)
-        middle_opens, middle_closes = _look(best, rows, middle, ends)
-        rows = np.concatenate([rows, rows])
-        a, b = np.concatenate([a, middle]), np.concatenate([middle, b])
-        opens, closes = np.concatenate([opens, middle_opens]), np.concatenate([middle_closes, closes])
+        pieces = np.minimum(b - a, max(2, _AT_ONCE // rows.size)).astype(np.intp)
+        whole = np.repeat(np.arange(rows.size), pieces)
+        place = np.arange(whole.size) - np.repeat(np.cumsum(pieces) - pieces, pieces)
+        left, right = (
+            a[whole] + np.floor((b - a)[whole] * part / pieces[whole]) for part in (place, place + 1)
+        )
+        rows, a, b, opens, closes = rows[whole], left, right, opens[whole], closes[whole]
+        inner = np.flatnonzero(place + 1 < pieces[whole])
+        opens[inner + 1], closes[inner] = _look(best, rows[inner], b[inner], ends)
 
 
 def _look(best: Floats, rows: Rows, count: Floats, ends: Ends) -> tuple[Floats, Floats]:

@@ -29,40 +29,40 @@ _TINY = 1e-300
 
 @dataclass(frozen=True, slots=True)
 class Risk:
-    """A bound on one tail at one rate: broken by small samples, kept by all larger ones, or the reverse.
+    """Bounds on a tail: each broken by small samples and kept by all larger ones, or the reverse.
 
     Parameters
     ----------
     law : CountLaw
     columns : dict of ndarray
-        The designs' fields except the amount, each of shape ``(requirements,)``.
+        The designs' fields except the amount, each of shape ``(risks,)``.
+    end : {"high", "low"}
+        The tail: at least `k` events, or fewer than `k`.
     rate : ndarray of float
         The rate at which the tail is taken, of the same shape.
     bound : ndarray of float
         What the tail is compared with, of the same shape.
-    end : {"high", "low"}
-        The tail: at least `k` events, or fewer than `k`.
-    closing : bool
-        False: the first size is sought that keeps the bound; True: the last.
+    closing : ndarray of bool
+        False: the first size is sought that keeps the bound; True: the last. Of the same shape.
     step : ndarray of float
         Amount of one step of the search, of the same shape: 1 for whole sizes.
     """
 
     law: CountLaw
     columns: Columns
+    end: str
     rate: Floats
     bound: Floats
-    end: str
-    closing: bool
+    closing: Truth
     step: Floats
 
     def turn(self, rows: Rows, count: Floats) -> Floats:
-        """Return where the bound turns, in steps, for requirements and critical counts.
+        """Return where bounds turn, in steps.
 
         Parameters
         ----------
         rows : ndarray of int
-            Which requirements.
+            Which risks.
         count : ndarray of float
             The critical count `k` of each, at least 1.
 
@@ -74,12 +74,12 @@ class Risk:
         """
         part = self._rows(rows)
         first = _first_size(part, count, np.floor(part.law.largest(part.columns) / part.step))
-        return first - 1 if self.closing else first
+        return first - part.closing
 
     def _rows(self, rows: Rows) -> Risk:
         columns = {name: column[rows] for name, column in self.columns.items()}
-        rate, bound, step = self.rate[rows], self.bound[rows], self.step[rows]
-        return Risk(self.law, columns, rate, bound, self.end, self.closing, step)
+        parts = (part[rows] for part in (self.rate, self.bound, self.closing, self.step))
+        return Risk(self.law, columns, self.end, *parts)
 
     def passed(self, size: Floats, count: Floats) -> tuple[Truth, Floats]:
         """Tell which sizes lie at or beyond the turn, and how many steps away it seems."""
@@ -94,7 +94,7 @@ class Risk:
         if near.size:
             sign[near] = self._rows(near)._exact_sign(size[near], count[near])
         risen = sign if self.end == "high" else -sign
-        passed = risen > 0 if self.closing else risen >= 0
+        passed = np.where(self.closing, risen > 0, risen >= 0)
         return passed, self._newton(tail, columns, count, passed)
 
     def _exact_sign(self, size: Floats, count: Floats) -> NDArray[Any]:
@@ -104,9 +104,8 @@ class Risk:
 
     def _newton(self, tail: Floats, columns: Columns, count: Floats, passed: Truth) -> Floats:
         """Return Newton's step on the logarithm of the tail or its complement, whichever shall be small."""
-        speed = (
-            self.law.share(columns, self.rate) * self.step * self.law.exactly(count - 1, columns, self.rate)
-        )
+        pace = self.law.pace(count - 1, columns, self.rate)
+        speed = pace * self.step * self.law.exactly(count - 1, columns, self.rate)
         speed = speed if self.end == "high" else -speed
         small = self.bound <= 0.5
         now = np.maximum(np.where(small, tail, 1.0 - tail), _TINY)

@@ -20,11 +20,11 @@ from steelyard.core.law import CountLaw
 from steelyard.core.need import Need
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.requirements import Requirements
-from steelyard.core.splits import Truth, compare
+from steelyard.core.splits import ENDS, ONE_SIDED, Tail, Truth, compare
 
-MOST_SIZES = 50_000
+MOST_SIZES = 10_000
 _BLOCK = 64
-_NARROWINGS = 3
+_NARROWINGS = 2
 _ROUNDS = 60
 
 
@@ -64,13 +64,28 @@ def two_sided_amount(law: CountLaw, row: Columns, need: Need, lasting: bool) -> 
 def meets(law: CountLaw, row: Columns, need: Need, amounts: Floats) -> Truth:
     """Tell which amounts meet a need: with the region of its claim and alpha, the power at every catch."""
     columns = {**row, law.amount: amounts}
-    claim = np.asarray(need.claim.value)
-    tails = []
-    for end in ("low", "high"):
-        count = law.critical(columns, claim, need.alpha, end, need.split)
-        tails.append((np.where(np.isnan(count), 0.0, 1.0), end, np.nan_to_num(count)))
+    tails = region_tails(*region_ends(law, row, need, amounts))
     reached = [compare(law, columns, np.asarray(catch), tails, need.power) >= 0 for catch in need.catches]
     return np.logical_and.reduce(reached)
+
+
+def region_ends(law: CountLaw, row: Columns, need: Need, amounts: Floats) -> tuple[Floats, Floats]:
+    """Return up to which and from which count each amount rejects; NaN for an end that is empty."""
+    columns, claim = {**row, law.amount: amounts}, np.asarray(need.claim.value)
+    split = need.split if need.claim.side == "either" else ONE_SIDED
+    low, high = (
+        law.critical(columns, claim, need.alpha, end, split)
+        if end in ENDS[need.claim.side]
+        else np.full(amounts.shape, np.nan)
+        for end in ("low", "high")
+    )
+    return low, high
+
+
+def region_tails(low: Floats, high: Floats) -> list[Tail]:
+    """Return regions as weighted tails, an empty end with the weight 0."""
+    ends = {"low": low, "high": high}
+    return [(np.where(np.isnan(x), 0.0, 1.0), end, np.nan_to_num(x)) for end, x in ends.items()]
 
 
 def _between(law: CountLaw, row: Columns, need: Need, lasting: bool) -> tuple[float, float]:
