@@ -106,6 +106,8 @@ class Grammar:
         The field that says how much is inspected.
     extra : str
         The field, if any, that must be known beside it: the lot, or sigma.
+    least : int
+        The least amount that a plan can inspect.
     base : str
         The kind that this one is a form of, with further fields such as ``misses``.
     """
@@ -122,6 +124,7 @@ class Grammar:
     wording: Wording
     extent: str = "n"
     extra: str = ""
+    least: int = 1
     base: str = ""
 
 
@@ -171,6 +174,16 @@ class Kind(ABC):
         if plan.claim is not None and plan.claim.side != "either":
             return bool(plan.claim.side == "above")
         return bool(plan.rule.high is not None)
+
+    def needs(self, plan: Plan) -> int:
+        """Return how many parameters a question must give; a plan may know some, such as its sigma."""
+        del plan
+        return sum(not parameter.optional for parameter in self.parameters)
+
+    def told(self, plan: Plan) -> str:
+        """Return in words what rejects the claim; empty where the plan's text says it well enough."""
+        del plan
+        return ""
 
     def given_rule(self, rule: Reject) -> Any:
         """Return a rule of this kind from critical values given from outside."""

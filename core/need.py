@@ -102,7 +102,7 @@ def need_from(
     kind = kind_named(kind_name)
     size = read_probability(alpha, "alpha")
     target = _target(power, size)
-    design = design_from(kind, extent_values(kind, 1, extra))
+    design = design_from(kind, extent_values(kind, kind.grammar.least, extra))
     stated = claim_from(kind, claim, side, design)
     kind.check_claim(stated, design)
     catches = _catches(kind, stated, catch, design)

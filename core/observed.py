@@ -2,11 +2,15 @@
 
 from __future__ import annotations
 
+import re
 from typing import Any
 
-from steelyard.core.numbers import read_whole
+from steelyard.core.errors import InvalidValue
+from steelyard.core.numbers import read_number, read_whole
 
 MOST_COUNTED = 2_000_000_000
+_MEASURED = re.compile(r"([a-z]+)\s*=?\s*([-+]?[\d.]+(?:e[-+]?\d+)?)", re.IGNORECASE)
+_EXAMPLES = {"mean": "499.7", "s": "0.31"}
 
 
 def read_count(value: Any, most: float) -> float:
@@ -30,3 +34,36 @@ def read_count(value: Any, most: float) -> float:
     (2.0, 3.0)
     """
     return float(read_whole(value, "observed", 0, int(min(most, MOST_COUNTED))))
+
+
+def read_measured(value: Any, *names: str) -> tuple[float, ...]:
+    """Return what was measured, such as the mean and the standard deviation `s` of a sample.
+
+    Parameters
+    ----------
+    value : float, int or str
+        Text such as ``"mean 499.7 s 0.31"``; where one figure is asked for, a number will do.
+    *names : str
+        The figures asked for, ``"mean"``, ``"s"`` or both; the other one may stand in the text.
+
+    Raises
+    ------
+    InvalidValue
+        When a figure is missing or no number, or a standard deviation is not above 0.
+
+    Examples
+    --------
+    >>> read_measured("mean 499.7 s 0.31", "mean", "s"), read_measured(499.7, "mean")
+    ((499.7, 0.31), (499.7,))
+    """
+    form = " ".join(f"{name} {example}" for name, example in _EXAMPLES.items() if name in names)
+    if len(names) == 1 and not (isinstance(value, str) and value.strip()[:1].isalpha()):
+        found = {names[0]: read_number(value, "observed")}
+    else:
+        text = str(value).strip()
+        found = {name.lower(): read_number(number, name) for name, number in _MEASURED.findall(text)}
+        if _MEASURED.sub("", text).strip() or not set(names) <= set(found) <= set(_EXAMPLES):
+            raise InvalidValue("observed", f"have the form {form}", value)
+    if found.get("s", 1.0) <= 0:
+        raise InvalidValue("s", "be greater than 0", found["s"])
+    return tuple(found[name] for name in names)

@@ -17,9 +17,9 @@ from steelyard.core.plan import Plan, Reject
 
 
 def _rates(plan: Plan, rates: tuple[Any, ...]) -> list[Floats]:
-    parameters = kind_of(plan).parameters
+    kind = kind_of(plan)
+    parameters, needed = kind.parameters, kind.needs(plan)
     given = [rate for rate in rates if rate is not None]
-    needed = sum(1 for parameter in parameters if not parameter.optional)
     if not needed <= len(given) <= len(parameters):
         names = " and ".join(parameter.symbol for parameter in parameters)
         rule = f"be given for {names}" if len(given) < needed else f"be given only for {names}"

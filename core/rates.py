@@ -108,7 +108,8 @@ def _end(plan: Plan, end: str | None) -> str:
     """Return on which side of the claim the power climbs."""
     kind = kind_of(plan)
     if kind.needs(plan) > 1:
-        message = f"a plan of kind {plan.kind} has more than one parameter, so no single rate answers this"
+        names = " and ".join(parameter.symbol for parameter in kind.parameters)
+        message = f"the power of this plan depends on {names}, so no single rate answers this"
         raise NoAnswer(message)
     if claims_both_sides(plan):
         claim_of(plan)
@@ -164,6 +165,8 @@ def _ends(
 def _middle(plan: Plan) -> float:
     if plan.claim is not None:
         return float(plan.claim.value)
+    if not isinstance(plan.rule, Reject):
+        return 0.0
     ends = [value for value in (plan.rule.low, plan.rule.high) if value is not None]
     return float(ends[0])
 

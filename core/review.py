@@ -8,12 +8,13 @@ from steelyard.core.abilities import Remarking
 from steelyard.core.errors import SteelyardError
 from steelyard.core.kind import kind_of
 from steelyard.core.parameter import show_rate
-from steelyard.core.plan import Plan, Reject
+from steelyard.core.plan import Plan, same_rule
 from steelyard.core.questions import region, size
 from steelyard.core.rates import rate_for
 from steelyard.core.regions import critical_region, empty_tails
 
 _CLAIMED = {"<=": "at most", ">=": "at least", "=": "exactly"}
+_MORE = 1e-9  # relative; rounding of a measured critical value gives less
 NOT_PROOF = "Not rejecting a claim does not prove it; a sample proves no lot free of defects."
 
 
@@ -32,10 +33,10 @@ def check(plan: Plan) -> str:
         return "ok"
     actual, given = size(plan), _given_by_alpha(plan)
     notes = []
-    if given is not None and given != plan.rule:
+    if given is not None and not same_rule(given, plan.rule):
         other = region(dataclasses.replace(plan, rule=given))
         notes.append(f"size {show_rate(actual)}; alpha {show_rate(plan.alpha)} would give {other}")
-    elif actual > plan.alpha * (1 + 1e-12):
+    elif actual > plan.alpha * (1 + _MORE):
         notes.append(f"size {show_rate(actual)} exceeds alpha {show_rate(plan.alpha)}")
     notes += [str(tail) for tail in empty_tails(plan)]
     return "; ".join(notes) or "ok"
@@ -89,18 +90,8 @@ def claim_sentence(plan: Plan) -> str:
 
 def rule_sentence(plan: Plan) -> str:
     """Return the decision rule as the inspector reads it."""
-    found = kind_of(plan).grammar.wording.found
     fate, other = ("fails", "passes") if plan.verdict == "fail" else ("passes", "fails")
-    rule = plan.rule
-    if isinstance(rule, Reject):
-        ends = []
-        if rule.low is not None:
-            ends.append(f"{rule.low:g} {found} or fewer" if rule.low > 0 else f"no {found}")
-        if rule.high is not None:
-            ends.append(f"{rule.high:g} {found} or more")
-        when = ", or ".join(ends)
-    else:
-        when = region(plan)
+    when = kind_of(plan).told(plan) or region(plan)
     return f"Rule: the claim is rejected, and the lot {fate}, on {when}; otherwise the lot {other}."
 
 

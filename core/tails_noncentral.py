@@ -33,6 +33,7 @@ _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(48)
 _DROP = 42.0  # e^-42 of the peak is less than the rounding error of the sum
 _STEP = 9.0  # Phi(-9) is 1e-19
 _PEAK_ROUNDS, _END_ROUNDS = 6, 11
+_FARTHEST = 1e15
 _FAR = 1e60  # beyond, the tail is 0 or 1 and squares overflow
 _FLAT = 1e-30  # a slope of Phi that leaves it constant over all y of weight
 _CHUNK = 256  # points at a time, so that their nodes stay in the cache
@@ -45,7 +46,7 @@ def student_at_most(t: ArrayLike, df: ArrayLike, delta: ArrayLike = 0.0) -> Floa
     Parameters
     ----------
     t : array_like
-        From -1e15 to 1e15.
+        From -1e15 to 1e15, or infinite.
     df : array_like
         Degrees of freedom, whole numbers from 1.
     delta : array_like
@@ -57,13 +58,13 @@ def student_at_most(t: ArrayLike, df: ArrayLike, delta: ArrayLike = 0.0) -> Floa
     0.801888999614
     """
     t, df, delta = np.broadcast_arrays(*(np.asarray(value, dtype=float) for value in (t, df, delta)))
-    flat = [value.ravel() for value in (t, df, delta)]
+    flat = [value.ravel() for value in (np.clip(t, -_FARTHEST, _FARTHEST), df, delta)]
     found = np.empty(t.size)
     with np.errstate(all="ignore"):  # in branches that are not taken
         for start in range(0, t.size, _CHUNK):
             part = slice(start, start + _CHUNK)
             found[part] = _lower(*(value[part] for value in flat))
-    return found.reshape(t.shape)
+    return np.where(np.isinf(t), t > 0, found.reshape(t.shape))
 
 
 def student_at_least(t: ArrayLike, df: ArrayLike, delta: ArrayLike = 0.0) -> Floats:
@@ -90,7 +91,13 @@ def _lower(t: Floats, df: Floats, delta: Floats) -> Floats:
     density = np.exp(power - df * away * (1 + away / 2))
     values = special.ndtr(t * away + (t - delta)) * density
     total = ((values * _WEIGHTS).sum(axis=-1) * half).sum(axis=0)
-    return np.minimum(total * np.sqrt(df[:, 0] / np.pi) * np.exp(-_gamma_excess(df[:, 0] / 2)), 1.0)
+    return np.minimum(total * density_factor(df[:, 0]), 1.0)
+
+
+def density_factor(df: ArrayLike) -> Floats:
+    """Return the density of Y at 1; elsewhere it is this times ``y**(df - 1) exp(-df (y**2 - 1) / 2)``."""
+    df = np.asarray(df, dtype=float)
+    return np.asarray(np.sqrt(df / np.pi) * np.exp(-_gamma_excess(df / 2)))
 
 
 def _range(t: Floats, df: Floats, delta: Floats) -> tuple[Floats, Floats]:
@@ -124,7 +131,7 @@ def _peak(t: Floats, df: Floats, delta: Floats) -> Floats:
 
 
 def _log_weight(y: Floats, t: Floats, df: Floats, delta: Floats) -> Floats:
-    return special.log_ndtr(t * y - delta) + df * (np.log(y) - (y * y - 1) / 2)
+    return np.asarray(special.log_ndtr(t * y - delta) + df * (np.log(y) - (y * y - 1) / 2))
 
 
 def _slope(y: Floats, t: Floats, df: Floats, delta: Floats) -> Floats:
@@ -133,7 +140,7 @@ def _slope(y: Floats, t: Floats, df: Floats, delta: Floats) -> Floats:
 
 def _mills(z: Floats) -> Floats:
     """Return the normal density over the lower tail."""
-    return math.sqrt(2 / math.pi) / special.erfcx(-z / _ROOT_TWO)
+    return np.asarray(math.sqrt(2 / math.pi) / special.erfcx(-z / _ROOT_TWO))
 
 
 def _gamma_excess(x: Floats) -> Floats:

@@ -8,14 +8,14 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core.errors import InvalidValue
+from steelyard.core.errors import InvalidValue, NoAnswer
 from steelyard.core.kind import Kind, claim_of
 from steelyard.core.law import CountLaw, Law
 from steelyard.core.need import Need
 from steelyard.core.numbers import read_number, write_number
 from steelyard.core.observed import read_count
 from steelyard.core.parameter import Columns, Floats
-from steelyard.core.plan import Claim, Plan, Reject
+from steelyard.core.plan import Claim, Plan, Reject, same_rule
 from steelyard.core.regions import design_row, least_amount
 from steelyard.core.requirements import one_sided_amount
 from steelyard.core.splits import ENDS, ONE_SIDED
@@ -37,6 +37,11 @@ class ThresholdKind(Kind):
             columns[end] = np.array([getattr(plan.rule, end) for plan in plans], dtype=float)
         columns["pass"] = np.array([plan.verdict == "pass" for plan in plans])
         return columns
+
+    def row(self, design: Any, claim: Claim) -> Columns:
+        """Return what the law needs to know of one plan, by name."""
+        del claim
+        return design_row(self, design)
 
     def reject(self, columns: Columns, *rates: Floats) -> Floats:
         """Return P(x <= low) + P(x >= high)."""
@@ -96,11 +101,16 @@ class ThresholdKind(Kind):
     def _critical_ends(
         self, design: Any, claim: Claim, alpha: float, split: str
     ) -> tuple[float | None, float | None]:
-        row, rate = design_row(self, design), np.asarray(claim.value)
+        row, rate = self.row(design, claim), np.asarray(claim.value)
         split = split if claim.side == "either" else ONE_SIDED
         found = {end: float(self.law.critical(row, rate, alpha, end, split)) for end in ENDS[claim.side]}
         low, high = found.get("low", math.nan), found.get("high", math.nan)
         return None if math.isnan(low) else low, None if math.isnan(high) else high
+
+    def read_observed(self, value: Any, plan: Plan) -> Any:
+        """Return an observed value of the statistic."""
+        del plan
+        return read_number(value, "observed")
 
     def outcome(self, plan: Plan, observed: Any) -> bool:
         """Tell whether the statistic rejects the claim."""
@@ -111,17 +121,22 @@ class ThresholdKind(Kind):
         """Tell whether the rule is the region of the plan's alpha, or without alpha that of some level."""
         claim, rule = claim_of(plan), plan.rule
         if plan.alpha is None:
-            return self.law.nested(
-                design_row(self, plan.design), np.asarray(claim.value), rule.low, rule.high, plan.split
-            )
-        ends = self._critical_ends(plan.design, claim, plan.alpha, plan.split)
-        return all(_same(a, b) for a, b in zip(ends, (rule.low, rule.high), strict=True))
+            row, rate = self.row(plan.design, claim), np.asarray(claim.value)
+            return self.law.nested(row, rate, rule.low, rule.high, plan.split)
+        low, high = self._critical_ends(plan.design, claim, plan.alpha, plan.split)
+        return (low is not None or high is not None) and same_rule(Reject(low, high), rule)
 
     def p_value(self, plan: Plan, observed: Any) -> float:
         """Return the p-value of the statistic."""
         claim = claim_of(plan)
         rate, x = np.asarray(claim.value), np.asarray(observed)
-        return float(self.law.p_value(design_row(self, plan.design), rate, x, claim.side, plan.split))
+        return float(self.law.p_value(self.row(plan.design, claim), rate, x, claim.side, plan.split))
+
+    def limit(self, plan: Plan, observed: Any, end: str, miss: float) -> float:
+        """Refuse: a kind that inverts its test says how."""
+        del observed, end, miss
+        message = f"a plan of kind {plan.kind} has no confidence limit"
+        raise NoAnswer(message)
 
     @staticmethod
     def _possible(end: float | None, least: float, most: float) -> bool:
@@ -136,6 +151,15 @@ class CountKind(ThresholdKind):
     def read_observed(self, value: Any, plan: Plan) -> Any:
         """Return an observed count."""
         return read_count(value, self.law.support(plan.design)[1])
+
+    def told(self, plan: Plan) -> str:
+        """Return in words which counts reject the claim."""
+        found, rule, ends = self.grammar.wording.found, plan.rule, []
+        if rule.low is not None:
+            ends.append(f"{rule.low:g} {found} or fewer" if rule.low > 0 else f"no {found}")
+        if rule.high is not None:
+            ends.append(f"{rule.high:g} {found} or more")
+        return ", or ".join(ends)
 
     def limit(self, plan: Plan, observed: Any, end: str, miss: float) -> float:
         """Return an exact confidence limit of the rate."""
@@ -172,13 +196,6 @@ class CountKind(ThresholdKind):
             return InvalidValue("claim", rule, str(claim), hint)
         rule = f"be at least {least:.0f} so that some count can reject {claim} at alpha {write_number(alpha)}"
         return InvalidValue(law.amount, rule, float(row[law.amount]))
-
-
-def _same(one: float | None, other: float | None) -> bool:
-    """Compare two ends; the last digits of a measured one may differ between machines."""
-    if one is None or other is None:
-        return one is other
-    return math.isclose(one, other, rel_tol=1e-12)
 
 
 def read_reject(texts: dict[str, str], statistic: str, whole: bool) -> Reject:
