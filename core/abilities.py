@@ -4,9 +4,11 @@ from __future__ import annotations
 
 from typing import Any, Protocol, runtime_checkable
 
+from steelyard.core.endings import Endings
 from steelyard.core.errors import NoAnswer
 from steelyard.core.kind import Kind
 from steelyard.core.need import Need
+from steelyard.core.parameter import Columns, Floats
 from steelyard.core.plan import Claim, Plan
 
 
@@ -59,6 +61,25 @@ class Sizable(Protocol):
         """Return the first amount that meets a need, or the lasting one; NaN where none does."""
 
 
+@runtime_checkable
+class Averaging(Protocol):
+    """A kind whose plans say how much they inspect on average: a single plan always the same."""
+
+    def average_amount(self, columns: Columns, *rates: Floats) -> Floats:
+        """Return the average sample number, in items or units; columns and rates broadcast."""
+
+
+@runtime_checkable
+class Inspecting(Protocol):
+    """A kind whose inspection of a lot ends in known ways: of single plans one, after the whole sample."""
+
+    def endings(self, plan: Plan, rate: Floats) -> Endings:
+        """Return the ways to end and their chances, at rates of shape ``(rates,)``."""
+
+    def left(self, plan: Plan, rate: Floats, lot: float) -> Floats:
+        """Return how many defectives a lot keeps in what is not inspected, on average; none if it fails."""
+
+
 def rule_making(kind: Kind) -> RuleMaking:
     """Return the kind as one whose rules follow from a claim and alpha, or raise `NoAnswer`."""
     if isinstance(kind, RuleMaking):
@@ -85,6 +106,20 @@ def sizable(kind: Kind) -> Sizable:
     if isinstance(kind, Sizable):
         return kind
     raise _lacking(kind, "search for the smallest plan")
+
+
+def averaging(kind: Kind) -> Averaging:
+    """Return the kind as one with an average sample number; raise `NoAnswer` if it has none."""
+    if isinstance(kind, Averaging):
+        return kind
+    raise _lacking(kind, "average sample number")
+
+
+def inspecting(kind: Kind) -> Inspecting:
+    """Return the kind as one whose ways to end are known; raise `NoAnswer` if they are not."""
+    if isinstance(kind, Inspecting):
+        return kind
+    raise _lacking(kind, "way to say how the inspection of a lot ends")
 
 
 def _lacking(kind: Kind, what: str) -> NoAnswer:

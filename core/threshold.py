@@ -8,6 +8,7 @@ from typing import Any
 
 import numpy as np
 
+from steelyard.core.endings import Endings
 from steelyard.core.errors import InvalidValue, NoAnswer
 from steelyard.core.kind import Kind, claim_of
 from steelyard.core.law import CountLaw, Law
@@ -67,6 +68,12 @@ class ThresholdKind(Kind):
         below, above = (self.law.at_most(x, columns, *rates) for x in (low, high - step))
         right, beyond = (self.law.at_least(x, columns, *rates) for x in (low + step, high))
         return np.clip(np.where(above <= right, above - below, right - beyond), 0.0, 1.0)
+
+    def average_amount(self, columns: Columns, *rates: Floats) -> Floats:
+        """Return how much a plan inspects, whatever the rates."""
+        amount = columns[self.grammar.extent]
+        shape = np.broadcast_shapes(amount.shape, *(rate.shape for rate in rates))
+        return np.broadcast_to(amount, shape).astype(float)
 
     def given_rule(self, rule: Reject) -> Reject:
         """Return the rule itself; counts must be whole numbers."""
@@ -152,6 +159,19 @@ class CountKind(ThresholdKind):
         """Return an observed count."""
         return read_count(value, self.law.support(plan.design)[1])
 
+    def endings(self, plan: Plan, rate: Floats) -> Endings:
+        """Return the one way to end: after the whole sample."""
+        columns = self.columns([plan])
+        amounts = np.array([getattr(plan.design, self.law.amount)], dtype=float)
+        passing, failing = self.accept(columns, rate), self.reject(columns, rate)
+        if plan.verdict == "pass":
+            passing, failing = failing, passing
+        return Endings(amounts, passing[None], failing[None], self.average_amount(columns, rate))
+
+    def left(self, plan: Plan, rate: Floats, lot: float) -> Floats:
+        """Return the defectives that a lot from a process keeps in what is not inspected, on average."""
+        return self.endings(plan, rate).left(rate, lot)
+
     def told(self, plan: Plan) -> str:
         """Return in words which counts reject the claim."""
         found, rule, ends = self.grammar.wording.found, plan.rule, []
@@ -165,6 +185,14 @@ class CountKind(ThresholdKind):
         """Return an exact confidence limit of the rate."""
         split = plan.split if claim_of(plan).side == "either" else ONE_SIDED
         return self.law.limit(design_row(self, plan.design), observed, end, miss, split)
+
+    def algebra(self, plan: Plan) -> str | None:
+        """Return the power function as algebra, or None where there is none."""
+        return self.law.algebra(plan.design, plan.rule)
+
+    def native(self, plan: Plan, cell: str) -> str | None:
+        """Return a formula of the spreadsheet's own functions for the power at `cell`, or None."""
+        return self.law.native(plan.design, plan.rule, cell)
 
     def smallest_amount(self, need: Need, lasting: bool) -> float:
         """Return the first or the lasting amount that meets a need; NaN beyond the largest amount."""

@@ -10,13 +10,13 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core import exact, limits, tails
+from steelyard.core import algebra, exact, limits, native, tails
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
 from steelyard.core.law import CountLaw, ExactLaw
 from steelyard.core.numbers import read_number, read_whole, typed
 from steelyard.core.parameter import Columns, Floats, Parameter
-from steelyard.core.plan import Claim, split_claim
+from steelyard.core.plan import Claim, Plan, Reject, split_claim
 from steelyard.core.threshold import CountKind, threshold_fields
 
 MOST_ITEMS = 1_000_000
@@ -131,6 +131,18 @@ class HypergeometricLaw(CountLaw):
         """Return the proportion of defectives in the lot."""
         return rate / columns["lot"]
 
+    def pace(self, x: Any, columns: Columns, rate: Floats) -> Floats:
+        """Return the proportion of defectives in what is left of the lot."""
+        return np.maximum(rate - x, 0.0) / np.maximum(columns["lot"] - columns["n"], 1.0)
+
+    def algebra(self, design: Any, rule: Reject) -> str:
+        """Return the power as a function of D."""
+        return algebra.lot_power(design.lot, design.n, rule)
+
+    def native(self, design: Any, rule: Reject, cell: str) -> str:
+        """Return a formula for the power at the number of defectives in a cell."""
+        return native.lot_native(design.lot, design.n, rule, cell)
+
 
 class HypergeometricKind(CountKind):
     """Single plans for a finite lot."""
@@ -163,6 +175,17 @@ class HypergeometricKind(CountKind):
         extra="lot",
         **threshold_fields("x", whole=True),
     )
+
+    def left(self, plan: Plan, rate: Floats, lot: float) -> Floats:
+        """Return D times the chance that the lot passes and one certain defective is not in the sample.
+
+        The others then are ``D - 1`` defectives in a lot with one item less.
+        """
+        if plan.design.n == lot:
+            return np.zeros(rate.shape)
+        others = {**self.columns([plan]), "lot": np.array([lot - 1])}
+        passing = self.passing(others, np.maximum(rate - 1, 0))
+        return np.asarray(rate * (1 - plan.design.n / lot) * passing)
 
     def read_claim(self, text: str, design: Any) -> Claim:
         """Return the claim on D; ``D<=8`` names a count, ``p<=1%`` a proportion of the lot."""
