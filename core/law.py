@@ -13,6 +13,7 @@ import numpy as np
 from steelyard.core import limits, splits
 from steelyard.core.errors import InvalidValue
 from steelyard.core.parameter import Columns, Floats
+from steelyard.core.plan import Reject
 from steelyard.core.splits import ONE_SIDED
 
 _TINY = 1e-300
@@ -142,6 +143,19 @@ class CountLaw(Law):
     def exact(self, row: Mapping[str, Any], rate: Fraction) -> ExactLaw:
         """Return the law of one design, its fields given by name, at a decimal rate."""
 
+    def valley(self, columns: Columns, low: float, high: float) -> float:
+        """Return where a region of two ends has the least power; NaN where that is not known.
+
+        Parameters
+        ----------
+        columns : dict
+            The fields of one design.
+        low, high : float
+            The region: counts of at most `low` and of at least `high`.
+        """
+        del columns, low, high
+        return math.nan
+
     @abstractmethod
     def largest(self, columns: Columns) -> Any:
         """Return the greatest amount that a plan may inspect."""
@@ -198,6 +212,16 @@ class CountLaw(Law):
         outer = [x for x in (low, high) if x is not None]
         p = self.p_value(columns, rate, np.array([*outer, *inner], dtype=float), "either", split)
         return bool(p[: len(outer)].max() < p[len(outer) :].min() * (1 - splits.NEAR))
+
+    def algebra(self, design: Any, rule: Reject) -> str | None:
+        """Return the power of a rule as algebra, or None where there is none."""
+        del design, rule
+        return None
+
+    def native(self, design: Any, rule: Reject, cell: str) -> str | None:
+        """Return a formula of the spreadsheet's own functions for the power at `cell`, or None."""
+        del design, rule, cell
+        return None
 
     @abstractmethod
     def limit(self, row: Mapping[str, Any], x: float, end: str, miss: float, split: str) -> float:

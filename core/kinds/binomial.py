@@ -9,12 +9,13 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core import exact, inverses, tails
+from steelyard.core import algebra, exact, inverses, native, tails
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
 from steelyard.core.law import CountLaw, ExactLaw, RateLaw, running_means
 from steelyard.core.numbers import read_whole
 from steelyard.core.parameter import Columns, Floats, Parameter
+from steelyard.core.plan import Reject
 from steelyard.core.threshold import CountKind, threshold_fields
 
 MOST_ITEMS = 10_000_000
@@ -66,6 +67,14 @@ class BinomialLaw(RateLaw):
         del rate
         return float(columns["n"]) / 4
 
+    def valley(self, columns: Columns, low: float, high: float) -> float:
+        """Return the p at which, of all items but one, `low` and ``high - 1`` defectives are equally probable.
+
+        Only with these numbers among the others does it matter what the one item is.
+        """
+        others = {"n": columns["n"] - 1}
+        return float(self.even_rate(low, np.array([high - 1]), others)[0])
+
     def leans_high(self, rate: float) -> bool:
         """Tell whether defectives are no more frequent than good items."""
         return rate <= 0.5
@@ -74,6 +83,14 @@ class BinomialLaw(RateLaw):
         """Return the most items of one plan."""
         del columns
         return MOST_ITEMS
+
+    def algebra(self, design: Any, rule: Reject) -> str:
+        """Return the power as a function of p."""
+        return algebra.binomial_power(design.n, rule)
+
+    def native(self, design: Any, rule: Reject, cell: str) -> str:
+        """Return a formula for the power at the defect rate in a cell."""
+        return native.binomial_native(design.n, rule, cell)
 
 
 class BinomialKind(CountKind):

@@ -17,6 +17,7 @@ from steelyard.core.law import CountLaw, ExactLaw
 from steelyard.core.numbers import read_number, read_whole, typed
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.plan import Claim, Plan, Reject, split_claim
+from steelyard.core.splits import Truth, first_whole
 from steelyard.core.threshold import CountKind, threshold_fields
 
 MOST_ITEMS = 1_000_000
@@ -122,6 +123,19 @@ class HypergeometricLaw(CountLaw):
         """Return a limit for D, a whole number."""
         reach = (x, x + float(row["lot"] - row["n"]))
         return limits.lot_limit(self, row, x, end, miss, split, reach)
+
+    def valley(self, columns: Columns, low: float, high: float) -> float:
+        """Return the first D from which one more defective raises the power.
+
+        It matters only where all items but that one hold `low` or ``high - 1`` defectives in the sample.
+        """
+        others = {"lot": columns["lot"] - 1, "n": columns["n"] - 1}
+
+        def rises(defectives: Floats) -> Truth:
+            gain, loss = (self.exactly(x, others, defectives) for x in (high - 1, low))
+            return np.asarray(gain >= loss)
+
+        return float(first_whole(rises, np.asarray(high - 1)))
 
     def largest(self, columns: Columns) -> Any:
         """Return the lot."""

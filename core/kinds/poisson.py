@@ -10,13 +10,13 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core import exact, inverses, tails
+from steelyard.core import algebra, exact, inverses, native, tails
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import REQUIRED, Field, Grammar, Wording, register
 from steelyard.core.law import CountLaw, ExactLaw, UnboundedCountLaw, running_means
 from steelyard.core.numbers import read_number, typed
 from steelyard.core.parameter import Columns, Floats, Parameter
-from steelyard.core.plan import Claim
+from steelyard.core.plan import Claim, Reject
 from steelyard.core.threshold import CountKind, threshold_fields
 
 MOST_UNITS = 1e9
@@ -67,10 +67,22 @@ class PoissonLaw(UnboundedCountLaw):
         """Return the mean."""
         return float(columns["units"]) * rate
 
+    def valley(self, columns: Columns, low: float, high: float) -> float:
+        """Return the rate at which the counts just outside the two ends are equally probable."""
+        return float(self.even_rate(low, np.array([high - 1]), columns)[0])
+
     def largest(self, columns: Columns) -> Any:
         """Return the most units of one plan."""
         del columns
         return MOST_UNITS
+
+    def algebra(self, design: Any, rule: Reject) -> str:
+        """Return the power as a function of the rate."""
+        return algebra.poisson_power(design.units, rule)
+
+    def native(self, design: Any, rule: Reject, cell: str) -> str:
+        """Return a formula for the power at the defects per unit in a cell."""
+        return native.poisson_native(design.units, rule, cell)
 
 
 class PoissonKind(CountKind):

@@ -1,0 +1,81 @@
+"""Powers as formulas of a spreadsheet's own functions, so that anybody can check a plan without this package.
+
+Small upper tails are lost in ``1 - BINOM.DIST(...)``; therefore every upper tail is the lower tail of what
+was not found (good items), or for Poisson counts the gamma distribution. Newer functions carry the prefix
+``_xlfn.`` that files need. Where a function refuses a value or gives an error at the ends of the range, an
+``IF`` stands before it.
+"""
+
+from __future__ import annotations
+
+import re
+
+from steelyard.core.numbers import write_number
+from steelyard.core.plan import Reject
+
+_PLAIN = re.compile(r"('[^']+'!|\w+!)?\$?[A-Za-z]{1,3}\$?\d+")
+
+
+def binomial_native(n: int, rule: Reject, cell: str) -> str:
+    """Return the power for the defect rate in a cell.
+
+    Examples
+    --------
+    >>> binomial_native(50, Reject(None, 4), "B2")
+    '_xlfn.BINOM.DIST(46,50,1-B2,TRUE)'
+    """
+    rate = _operand(cell)
+    tails = []
+    if rule.low is not None:
+        tails.append(f"_xlfn.BINOM.DIST({_whole(rule.low)},{n},{rate},TRUE)")
+    if rule.high is not None:
+        tails.append(f"_xlfn.BINOM.DIST({_whole(n - rule.high)},{n},1-{rate},TRUE)")
+    return "+".join(tails)
+
+
+def poisson_native(units: float, rule: Reject, cell: str) -> str:
+    """Return the power for the defects per unit in a cell.
+
+    Examples
+    --------
+    >>> poisson_native(120, Reject(None, 11), "B2")
+    '_xlfn.GAMMA.DIST(120*B2,11,1,TRUE)'
+    """
+    rate = _operand(cell)
+    mean = f"{write_number(units)}*{rate}"
+    tails = []
+    if rule.low is not None:
+        tails.append(f"IF({rate}=0,1,_xlfn.POISSON.DIST({_whole(rule.low)},{mean},TRUE))")
+    if rule.high is not None:
+        tails.append(f"_xlfn.GAMMA.DIST({mean},{_whole(rule.high)},1,TRUE)")
+    return "+".join(tails)
+
+
+def lot_native(lot: int, n: int, rule: Reject, cell: str) -> str:
+    """Return the power for the number of defectives D in a cell.
+
+    Examples
+    --------
+    >>> lot_native(60, 32, Reject(None, 1), "B2")
+    'IF(B2<1,0,IF(60-B2<=31,1,_xlfn.HYPGEOM.DIST(31,32,60-B2,60,TRUE)))'
+    """
+    defectives = _operand(cell)
+    tails = []
+    if rule.low is not None:
+        low = int(rule.low)
+        chance = f"_xlfn.HYPGEOM.DIST({low},{n},{defectives},{lot},TRUE)"
+        tails.append(f"IF({defectives}<={low},1,IF({defectives}>{low + lot - n},0,{chance}))")
+    if rule.high is not None:
+        high = int(rule.high)
+        chance = f"_xlfn.HYPGEOM.DIST({n - high},{n},{lot}-{defectives},{lot},TRUE)"
+        tails.append(f"IF({defectives}<{high},0,IF({lot}-{defectives}<={n - high},1,{chance}))")
+    return "+".join(tails)
+
+
+def _operand(cell: str) -> str:
+    """Return a reference as it is, and any other expression in brackets."""
+    return cell if _PLAIN.fullmatch(cell) else f"({cell})"
+
+
+def _whole(count: float) -> str:
+    return str(int(count))
