@@ -19,6 +19,7 @@ examples:
   steelyard demo                                 build the plan book of the demo list
   steelyard template -o requests.xlsx            write an empty request list to fill in
   steelyard build requests.xlsx -o book.xlsx     build a plan book from a request list
+  steelyard share book.xlsx -o copy.xlsx         write a copy that needs no add-in
   steelyard functions SY_POWER                   what a cell function takes and gives
 
 exit codes:
@@ -113,6 +114,23 @@ COMMANDS = (
                 "--justify", metavar="A,B,C", help="characteristics that get a justification sheet, or: all"
             ),
         ),
+    ),
+    Command(
+        "refresh",
+        "recompute the stored values of a book that was edited without a spreadsheet program",
+        "steelyard refresh book.xlsx",
+        "commands.refresh",
+        (
+            BOOK,
+            takes("-o", "--output", metavar="FILE", help="file to write (default: the workbook itself)"),
+        ),
+    ),
+    Command(
+        "share",
+        "write a copy that needs no add-in: values instead of SY formulas",
+        "steelyard share book.xlsx -o copy.xlsx",
+        "commands.share",
+        (BOOK, output()),
     ),
     Command(
         "functions",

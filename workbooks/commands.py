@@ -79,6 +79,33 @@ def _names(text: str | None) -> str | list[str] | None:
     return [name.strip() for name in text.split(",") if name.strip()]
 
 
+def refresh(options: argparse.Namespace) -> int:
+    """Recompute stored values; every changed cell is a line on stdout, every formula left is told."""
+    from steelyard.workbooks.progress import progress
+    from steelyard.workbooks.refresh import refresh_book
+
+    source = Path(options.book)
+    target = Path(options.output) if options.output else None
+    done = refresh_book(source, target, progress)
+    for change in done.changes:
+        print(change.cell, *("" if value is None else value for value in (change.old, change.new)), sep="\t")
+    for cell, reason in done.unfollowed.items():
+        print(f"steelyard: {source.name}: {cell} was left as it is: it {reason}", file=sys.stderr)
+    print(done, file=sys.stderr)
+    if target is not None:
+        print(f"wrote {target}", file=sys.stderr)
+    return 2 if done.unfollowed else 0
+
+
+def share(options: argparse.Namespace) -> int:
+    """Write a share copy."""
+    from steelyard.workbooks.share import share_book
+
+    print(share_book(Path(options.book), Path(options.output)), file=sys.stderr)
+    print(options.output)
+    return 0
+
+
 def functions(options: argparse.Namespace) -> int:
     """Print the catalogue, or one entry with an example."""
     from steelyard.addin import CATALOGUE

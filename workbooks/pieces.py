@@ -10,6 +10,12 @@ from steelyard.workbooks.checks import Check
 Value = float | int | str | None
 
 
+class Fault(str):
+    """An error value of a cell, such as ``#N/A``."""
+
+    __slots__ = ()
+
+
 @dataclass(frozen=True, slots=True)
 class Put:
     """A text or a number. A text that starts with ``=`` stays a text.

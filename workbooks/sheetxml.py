@@ -1,7 +1,7 @@
-"""The XML inside workbooks: finding cells and patching them, and nothing else of their bytes.
+"""The XML of sheets: finding cells and patching them, and nothing else of their bytes.
 
-The only module that touches XML. A parser finds the places, and only those bytes change, so that whatever
-else a part holds survives.
+Only this module, `packagexml` (relations, content types, the list of sheets) and `xmlbytes` below them touch
+XML.
 """
 
 from __future__ import annotations
@@ -9,15 +9,27 @@ from __future__ import annotations
 from collections.abc import Container, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
-from xml.parsers import expat
 from xml.sax.saxutils import escape, quoteattr
 
+from openpyxl.utils import get_column_letter
 from openpyxl.worksheet.formula import ArrayFormula
 
 from steelyard.core.errors import SteelyardError
-from steelyard.workbooks.pieces import Value
+from steelyard.workbooks.pieces import Fault, Value
+from steelyard.workbooks.styles import FONT, SIZE
+from steelyard.workbooks.xmlbytes import Edit, end_of, parser, run, splice, start_tag
 
-Edit = tuple[int, int, bytes]
+
+class _Every:
+    """Contains everything."""
+
+    def __contains__(self, _: object) -> bool:
+        return True
+
+
+EVERY: Container[str] = _Every()
+
+_BOLD = f'<rPr><b/><sz val="{SIZE}"/><rFont val="{FONT}"/></rPr>'
 
 
 @dataclass(slots=True)
@@ -41,54 +53,109 @@ def find_cells(xml: bytes, wanted: Container[str] | None = None) -> list[CellXml
     Raises
     ------
     SteelyardError
-        For XML that is damaged, holds a document type, or is not written in UTF-8.
+        For XML that is damaged, holds a document type, is not written in UTF-8, or does not say where its
+        cells are.
     """
     found: list[CellXml] = []
     cell: CellXml | None = None
     texts: list[str] = []
     prefix = ""
+    phonetic = False
 
     def start(tag: str, attributes: dict[str, str]) -> None:
-        nonlocal cell, prefix
+        nonlocal cell, prefix, phonetic
         if tag == prefix + "c":
             ref = attributes.get("r", "")
+            if not ref:
+                message = (
+                    "the workbook leaves out where its cells are: save it with a spreadsheet program first"
+                )
+                raise SteelyardError(message)
             if wanted is None or ref in wanted:
-                cell = CellXml(ref, attributes, parser.CurrentByteIndex, prefix=prefix)
+                cell = CellXml(ref, attributes, reader.CurrentByteIndex, prefix=prefix)
         elif cell is not None:
             if tag == prefix + "f":
-                cell.formula_attributes, cell.formula_place = attributes, (parser.CurrentByteIndex, 0)
+                cell.formula_attributes, cell.formula_place = attributes, (reader.CurrentByteIndex, 0)
+            phonetic = phonetic or tag == prefix + "rPh"
             texts.clear()
-            parser.CharacterDataHandler = texts.append
+            reader.CharacterDataHandler = texts.append
         elif tag.endswith("worksheet"):
             prefix = tag.removesuffix("worksheet")
 
     def end(tag: str) -> None:
-        nonlocal cell
+        nonlocal cell, phonetic
         if cell is None:
             return
         if tag == prefix + "f":
             cell.formula = "".join(texts)
-            cell.formula_place = (cell.formula_place[0], _end(tag, xml, parser.CurrentByteIndex))
-        elif tag in (prefix + "v", prefix + "t"):
+            cell.formula_place = (cell.formula_place[0], end_of(tag, xml, reader.CurrentByteIndex))
+        elif tag in (prefix + "v", prefix + "t") and not phonetic:
             cell.value += "".join(texts)
+        elif tag == prefix + "rPh":
+            phonetic = False
         elif tag == prefix + "c":
-            cell.stop = _end(tag, xml, parser.CurrentByteIndex)
+            cell.stop = end_of(tag, xml, reader.CurrentByteIndex)
             if wanted is not None or cell.formula is not None:
                 found.append(cell)
-            cell, parser.CharacterDataHandler = None, None
+            cell, reader.CharacterDataHandler = None, None
 
-    parser = _parser(start, end)
-    _run(parser, xml)
+    reader = parser(start, end)
+    run(reader, xml)
     return found
+
+
+def stored_value(cell: CellXml, strings: Sequence[str]) -> Value:
+    """Return what a cell shows; an error is a `Fault`, a cell without a value None.
+
+    Parameters
+    ----------
+    cell : CellXml
+        From `find_cells`.
+    strings : sequence of str
+        The workbook's shared strings.
+    """
+    kind = cell.attributes.get("t", "n")
+    if kind in ("str", "inlineStr"):
+        return cell.value
+    if not cell.value:
+        return None
+    match kind:
+        case "n":
+            return float(cell.value)
+        case "s":
+            return strings[int(cell.value)]
+        case "b":
+            return cell.value == "1"
+        case "e":
+            return Fault(cell.value)
+    return cell.value
 
 
 def render_cell(cell: CellXml, value: Value, xml: bytes, formula: bool = True) -> bytes:
     """Return a cell's XML with another value, with or without its formula."""
     kept = xml[slice(*cell.formula_place)].decode() if formula and cell.formula is not None else ""
     kind, body = _content(value, kept, cell.prefix)
-    attributes = {name: text for name, text in cell.attributes.items() if name != "t"}
-    written = "".join(f" {name}={quoteattr(text)}" for name, text in attributes.items())
-    return f"<{cell.prefix}c{written}{kind}>{body}</{cell.prefix}c>".encode()
+    attributes = {name: text for name, text in cell.attributes.items() if name not in ("t", "vm")}
+    written = start_tag(f"{cell.prefix}c", attributes, "").decode()
+    return f"{written}{kind}>{body}</{cell.prefix}c>".encode()
+
+
+def freeze_cell(cell: CellXml, xml: bytes) -> Edit:
+    """Return the edit that turns a formula into the value that is stored beside it, digit for digit.
+
+    An empty text becomes the formula ``=""``: stored as a text it would be no text any more where Calc reads
+    it, and formulas that ask ISTEXT would change their minds. What marks a dynamic array goes too.
+    """
+    attributes = {name: text for name, text in cell.attributes.items() if name not in ("cm", "vm")}
+    if attributes.get("t") != "str":
+        first, last = cell.formula_place
+        inside = xml[xml.index(b">", cell.start) + 1 : first] + xml[last : cell.stop]
+        return cell.start, cell.stop, start_tag(f"{cell.prefix}c", attributes, ">") + inside
+    formula = "" if cell.value else f'<{cell.prefix}f>""</{cell.prefix}f>'
+    kind, body = _content(cell.value, formula, cell.prefix)
+    del attributes["t"]
+    written = start_tag(f"{cell.prefix}c", attributes, "").decode()
+    return cell.start, cell.stop, f"{written}{kind}>{body}</{cell.prefix}c>".encode()
 
 
 def _content(value: Value, formula: str, prefix: str = "") -> tuple[str, str]:
@@ -98,6 +165,8 @@ def _content(value: Value, formula: str, prefix: str = "") -> tuple[str, str]:
     """
     if isinstance(value, str):
         text = escape(value)
+        if isinstance(value, Fault):
+            return ' t="e"', f"{formula}<{prefix}v>{text}</{prefix}v>"
         if formula:
             return ' t="str"', f"{formula}<{prefix}v>{text}</{prefix}v>"
         return (
@@ -106,6 +175,8 @@ def _content(value: Value, formula: str, prefix: str = "") -> tuple[str, str]:
         )
     if value is None:
         return "", formula
+    if isinstance(value, bool):
+        return ' t="b"', f"{formula}<{prefix}v>{value:d}</{prefix}v>"
     number = float.__repr__(value) if isinstance(value, float) else int.__repr__(value)
     return "", f"{formula}<{prefix}v>{number}</{prefix}v>"
 
@@ -154,19 +225,61 @@ def _cell_xml(cell: Any, stored: Mapping[str, Value]) -> str:
     return f'<c r="{ref}" s="{cell.style_id}"{kind}>{body}</c>'
 
 
+def plain_sheet(
+    headings: Sequence[str], rows: Iterable[Sequence[Value]], widths: Sequence[float], namespace: str
+) -> bytes:
+    """Return a worksheet of texts and numbers that needs no style of its book.
+
+    Parameters
+    ----------
+    headings : sequence of str
+        First row, in bold type, which stays in sight.
+    rows : iterable of sequence
+        Cells from the first column on.
+    widths : sequence of float
+        Of the columns.
+    namespace : str
+        Main namespace of the book: the strict form of the format has another than the usual one.
+    """
+    columns = "".join(
+        f'<col min="{place}" max="{place}" width="{width}" customWidth="1"/>'
+        for place, width in enumerate(widths, 1)
+    )
+    heads = [(' t="inlineStr"', f"<is><r>{_BOLD}<t>{escape(text)}</t></r></is>") for text in headings]
+    written = [_row_xml(1, heads)]
+    written += [_row_xml(n, [_content(value, "") for value in cells]) for n, cells in enumerate(rows, 2)]
+    return (
+        '<?xml version="1.0" encoding="UTF-8" standalone="yes"?>\n'
+        f"<worksheet xmlns={quoteattr(namespace)}>"
+        '<sheetPr><pageSetUpPr fitToPage="1"/></sheetPr>'
+        '<sheetViews><sheetView workbookViewId="0">'
+        '<pane ySplit="1" topLeftCell="A2" activePane="bottomLeft" state="frozen"/></sheetView></sheetViews>'
+        f"<cols>{columns}</cols><sheetData>{''.join(written)}</sheetData>"
+        '<pageSetup orientation="landscape" fitToHeight="0"/></worksheet>'
+    ).encode()
+
+
+def _row_xml(number: int, contents: Iterable[tuple[str, str]]) -> str:
+    cells = [
+        f'<c r="{get_column_letter(place)}{number}"{kind}>{body}</c>'
+        for place, (kind, body) in enumerate(contents, 1)
+    ]
+    return f'<row r="{number}">{"".join(cells)}</row>'
+
+
 def fill_rows(xml: bytes, rows: bytes) -> bytes:
     """Return a sheet's XML with its empty ``sheetData`` filled."""
     places: list[int] = []
 
     def note(tag: str, _: object = None) -> None:
         if tag == "sheetData":
-            places.append(parser.CurrentByteIndex)
+            places.append(reader.CurrentByteIndex)
 
-    parser = _parser(note, note)
-    _run(parser, xml)
+    reader = parser(note, note)
+    run(reader, xml)
     start, end = places
     whole = b"<sheetData>" + rows + b"</sheetData>"
-    return splice(xml, [(start, _end("sheetData", xml, end), whole)])
+    return splice(xml, [(start, end_of("sheetData", xml, end), whole)])
 
 
 def describe(xml: bytes, texts: Sequence[str]) -> bytes:
@@ -176,77 +289,9 @@ def describe(xml: bytes, texts: Sequence[str]) -> bytes:
 
     def start(tag: str, attributes: dict[str, str]) -> None:
         if tag.endswith("cNvPr") and remaining and "descr" not in attributes:
-            place = parser.CurrentByteIndex + len(tag) + 1
+            place = reader.CurrentByteIndex + len(tag) + 1
             edits.append((place, place, f" descr={quoteattr(remaining.pop(0))}".encode()))
 
-    parser = _parser(start)
-    _run(parser, xml)
+    reader = parser(start)
+    run(reader, xml)
     return splice(xml, edits)
-
-
-def splice(data: bytes, edits: Iterable[Edit]) -> bytes:
-    """Return bytes with the given places replaced; all others are kept.
-
-    Examples
-    --------
-    >>> splice(b"power 0.9", [(6, 9, b"0.95")])
-    b'power 0.95'
-    """
-    chunks, done = [], 0
-    for start, stop, new in sorted(edits):
-        chunks += [data[done:start], new]
-        done = stop
-    return b"".join([*chunks, data[done:]])
-
-
-def sheet_parts(parts: Mapping[str, bytes]) -> dict[str, str]:
-    """Return sheet titles and the names of their parts, in the order of the tabs."""
-    targets: dict[str, str] = {}
-    sheets: dict[str, str] = {}
-
-    def relation(tag: str, attributes: dict[str, str]) -> None:
-        if tag.endswith("Relationship"):
-            target = attributes["Target"]
-            targets[attributes["Id"]] = target[1:] if target.startswith("/") else f"xl/{target}"
-
-    def sheet(tag: str, attributes: dict[str, str]) -> None:
-        if tag.rpartition(":")[2] == "sheet":
-            key = next(value for name, value in attributes.items() if name.endswith(":id"))
-            sheets[attributes["name"]] = key
-
-    _run(_parser(relation), parts["xl/_rels/workbook.xml.rels"])
-    _run(_parser(sheet), parts["xl/workbook.xml"])
-    return {title: targets[key] for title, key in sheets.items()}
-
-
-def _end(tag: str, xml: bytes, place: int) -> int:
-    """Return where an element ends: expat points at its end tag or, if it has none, behind the element."""
-    return xml.index(b">", place) + 1 if xml.startswith(b"</" + tag.encode(), place) else place
-
-
-def _parser(start: Any, end: Any = None) -> expat.XMLParserType:
-    parser = expat.ParserCreate()
-    parser.buffer_text = True
-    parser.StartElementHandler, parser.EndElementHandler = start, end
-    parser.StartDoctypeDeclHandler = _no_doctype
-    parser.XmlDeclHandler = _only_utf8
-    return parser
-
-
-def _no_doctype(*_: Any) -> None:
-    message = "the workbook is damaged: a part declares a document type"
-    raise SteelyardError(message)
-
-
-def _only_utf8(_version: str, encoding: str | None, _standalone: int) -> None:
-    if encoding is not None and encoding.lower() not in ("utf-8", "us-ascii"):
-        message = f"the workbook must be written in UTF-8, but a part says {encoding}"
-        raise SteelyardError(message)
-
-
-def _run(parser: expat.XMLParserType, xml: bytes) -> None:
-    try:
-        parser.Parse(xml, True)
-    except expat.ExpatError as error:
-        message = f"the workbook is damaged: {error}"
-        raise SteelyardError(message) from None

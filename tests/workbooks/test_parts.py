@@ -17,7 +17,8 @@ from steelyard.workbooks.parts import (
     save,
     write_parts,
 )
-from steelyard.workbooks.sheetxml import find_cells, render_cell, sheet_parts, splice, store_values
+from steelyard.workbooks.sheetxml import find_cells, render_cell, store_values
+from steelyard.workbooks.xmlbytes import splice
 
 
 def example():
@@ -95,24 +96,6 @@ def test_parts_survive_reading_and_writing(tmp_path):
     write_parts(copy, parts)
     assert list(read_parts(copy).items()) == list(parts.items())
     assert copy.read_bytes() == original.read_bytes()
-
-
-def test_sheets_are_found_by_their_titles(tmp_path):
-    example().save(tmp_path / "a.xlsx")
-    found = sheet_parts(read_parts(tmp_path / "a.xlsx"))
-    assert found == {"Plan & more": "xl/worksheets/sheet1.xml", "Second": "xl/worksheets/sheet2.xml"}
-
-
-def test_sheets_are_found_whatever_their_parts_are_called():
-    parts = {
-        "xl/workbook.xml": b'<x:workbook xmlns:x="m" xmlns:q="r"><x:sheets>'
-        b'<x:sheet name="B" sheetId="2" q:id="r7"/><x:sheet name="A" sheetId="1" q:id="r1"/>'
-        b"</x:sheets></x:workbook>",
-        "xl/_rels/workbook.xml.rels": b"<Relationships>"
-        b'<Relationship Id="r1" Type="t" Target="sheets/one.xml"/>'
-        b'<Relationship Id="r7" Type="t" Target="/other/two.xml"/></Relationships>',
-    }
-    assert sheet_parts(parts) == {"B": "other/two.xml", "A": "xl/sheets/one.xml"}
 
 
 # Refusals, before anything is unpacked
@@ -245,7 +228,8 @@ def test_a_formula_can_be_left_out():
         (b'<!DOCTYPE w [<!ENTITY a "b">]><worksheet>&a;</worksheet>', "a part declares a document type"),
         ('<?xml version="1.0" encoding="UTF-16"?><worksheet/>'.encode("utf-16"), "must be written in UTF-8"),
         (b'<?xml version="1.0" encoding="latin-1"?><worksheet/>', "must be written in UTF-8, but .* latin-1"),
-        (b"<worksheet><c></worksheet>", "is damaged: mismatched tag"),
+        (b'<worksheet><c r="A1"></worksheet>', "is damaged: mismatched tag"),
+        (b"<worksheet><c/></worksheet>", "leaves out where its cells are"),
         (b"", "is damaged: no element found"),
     ],
 )
