@@ -6,7 +6,7 @@ from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
 from steelyard.addin.grid import asking, rates_grid
 from steelyard.addin.words import CellName, Confidence, End, Observed, PlanRange, Plans, Rates, Second, Target
-from steelyard.core import evidence, questions, rates
+from steelyard.core import evidence, questions, rates, rivals
 from steelyard.core.errors import NoAnswer
 from steelyard.core.kind import kind_of
 from steelyard.core.text import write_plan
@@ -122,7 +122,7 @@ def SY_LIMIT(plan: Plans, observed: Observed, end: End, confidence: Confidence |
 )
 def SY_BEST(plans: PlanRange, rate: Rates) -> Cells:
     """Return the text of the most powerful plan."""
-    return write_plan(rates.best(plans, rate))
+    return write_plan(rivals.best(plans, rate))
 
 
 @cell(
@@ -132,7 +132,7 @@ def SY_BEST(plans: PlanRange, rate: Rates) -> Cells:
 )
 def SY_CROSSING(plan_a: Plans, plan_b: Plans) -> Cells:
     """Return the rates at which two power curves cross."""
-    found = rates.crossing(plan_a, plan_b)
+    found = rivals.crossing(plan_a, plan_b)
     return found[0] if len(found) == 1 else [[rate] for rate in found]
 
 

@@ -1,4 +1,4 @@
-"""From a power back to rates: where a plan's power reaches a target, and where two plans' curves cross.
+"""From a power back to rates: where a plan's power reaches a target.
 
 The search halves the range of floating-point numbers between two ends, so it ends at neighbouring numbers
 at any scale, from ppm to thousands, and needs nothing of a kind but that its power is monotone there.
@@ -6,6 +6,7 @@ at any scale, from ppm to thousands, and needs nothing of a kind but that its po
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Sequence
 
 import numpy as np
@@ -13,16 +14,18 @@ from numpy.typing import NDArray
 
 from steelyard.core.errors import InvalidValue, NoAnswer
 from steelyard.core.kind import Kind, claim_of, kind_of
-from steelyard.core.numbers import write_number
+from steelyard.core.numbers import read_choice, read_probability, typed, write_number
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.plan import Plan, Reject
-from steelyard.core.questions import power, size
+from steelyard.core.questions import power
+from steelyard.core.regions import design_row
+from steelyard.core.splits import NEAR, compare
+from steelyard.core.threshold import CountKind
+from steelyard.core.two_sided import region_tails
 
 _DOUBLINGS, _HALVINGS = 80, 64
 _FAR, _NEAR_NOTHING = 2.0**30, 2.0**-30
-_UPWARDS, _DOWNWARDS = "upper", "lower"
-_SMALL = 10.0 ** np.arange(-9, -2)
-_GRID = np.concatenate([_SMALL, np.arange(0.01, 1, 0.01), 1 - _SMALL[::-1]])
+UPWARDS, DOWNWARDS = "upper", "lower"
 
 Truth = NDArray[np.bool_]
 
@@ -59,9 +62,10 @@ def rate_for(plan: Plan, target: float, end: str | None = None) -> float:
     >>> round(rate_for(plan, 0.9), 6)
     0.128756
     """
-    end = _end(plan, end)
-    if claims_both_sides(plan) and target <= (least := size(plan)):
-        raise InvalidValue("power", f"be greater than the plan's size {least:.6g}", target)
+    end, target = _end(plan, end), read_probability(target, "power")
+    if claims_both_sides(plan) and target <= (least := power(plan, _anchor(plan))):
+        where = "size" if plan.claim else "least power"
+        raise InvalidValue("power", f"be greater than the plan's {where} {least:.6g}", target)
     found = float(rates_for([plan], [target], end)[0, 0])
     if np.isnan(found):
         message = f"the power reaches {write_number(target)} at no rate on this side"
@@ -107,15 +111,15 @@ def claims_both_sides(plan: Plan) -> bool:
 def _end(plan: Plan, end: str | None) -> str:
     """Return on which side of the claim the power climbs."""
     kind = kind_of(plan)
-    if kind.needs(plan) > 1:
+    if kind.takes(plan)[0] > 1:
         names = " and ".join(parameter.symbol for parameter in kind.parameters)
         message = f"the power of this plan depends on {names}, so no single rate answers this"
         raise NoAnswer(message)
     if claims_both_sides(plan):
-        claim_of(plan)
         if end is None:
             raise InvalidValue("end", "be lower or upper for a plan that rejects at both ends", None)
-        return end
+        _anchor(plan)
+        return read_choice(end, "end", (DOWNWARDS, UPWARDS))
     own = _climb(plan)
     if end not in (None, own):
         raise InvalidValue("end", f"be {own}: the plan rejects nothing at the other end", end)
@@ -123,15 +127,24 @@ def _end(plan: Plan, end: str | None) -> str:
 
 
 def _climb(plan: Plan) -> str:
-    return _UPWARDS if kind_of(plan).rises(plan) else _DOWNWARDS
+    return UPWARDS if kind_of(plan).rises(plan) else DOWNWARDS
 
 
 def _solve(plans: Sequence[Plan], targets: Floats, end: str, both: bool) -> Floats:
     kind = kind_of(plans[0])
     columns = {name: values[:, None] for name, values in kind.columns(plans).items()}
 
+    missed = np.array([[float(1 - typed(target)) for target in targets[0]]])
+    high = targets > 0.5  # there the chance of missing tells more digits
+
     def reached(rates: Floats) -> Truth:
-        return np.asarray(kind.reject(columns, rates) >= targets)
+        found = kind.reject(columns, rates)
+        hit = np.where(high, kind.accept(columns, rates) <= missed if high.any() else False, found >= targets)
+        close = np.abs(found - targets) <= NEAR * targets
+        if isinstance(kind, CountKind) and kind.parameters[0].whole and close.any():
+            tails = region_tails(columns["low"], columns["high"])
+            hit = compare(kind.law, columns, rates, tails, targets) >= 0
+        return hit
 
     shape = np.broadcast_shapes((len(plans), 1), targets.shape)
     anchors = np.array([[_anchor(plan)] for plan in plans]) if both else None
@@ -139,11 +152,17 @@ def _solve(plans: Sequence[Plan], targets: Floats, end: str, both: bool) -> Floa
     inside, outside = (np.broadcast_to(edge, shape).astype(float) for edge in (inside, outside))
     outside = _reach(kind, reached, inside, outside)
     fine = reached(outside) & (~reached(inside) | (not both))
-    found = _halve(reached, inside, outside, whole=kind.parameters[0].whole)
+    found = halve(reached, inside, outside, whole=kind.parameters[0].whole)
     return np.where(fine, found, np.nan)
 
 
 def _anchor(plan: Plan) -> float:
+    """Return a rate between the two at which a power is reached: the claim, or where the power is least."""
+    kind = kind_of(plan)
+    if plan.claim is None and isinstance(kind, CountKind):
+        valley = kind.law.valley(design_row(kind, plan.design), plan.rule.low, plan.rule.high)
+        if not math.isnan(valley):
+            return valley
     return float(claim_of(plan).value)
 
 
@@ -156,9 +175,9 @@ def _ends(
     middle = np.array([[_middle(plan)] for plan in plans])
     if parameter.lower_open:  # a standard deviation or a life of 0 is none
         lower = middle * _NEAR_NOTHING
-    start, outside = (lower, upper) if end == _UPWARDS else (upper, lower)
+    start, outside = (lower, upper) if end == UPWARDS else (upper, lower)
     far = np.maximum(1.0, np.abs(middle)) * _FAR  # on the claim's own side, where the power is least
-    start = np.where(np.isfinite(start), start, middle - far if end == _UPWARDS else middle + far)
+    start = np.where(np.isfinite(start), start, middle - far if end == UPWARDS else middle + far)
     return start if anchors is None else anchors, np.asarray(outside, dtype=float)
 
 
@@ -186,12 +205,12 @@ def _reach(kind: Kind, reached: Callable[[Floats], Truth], inside: Floats, outsi
     return far
 
 
-def _halve(reached: Callable[[Floats], Truth], inside: Floats, outside: Floats, whole: bool) -> Floats:
+def halve(reached: Callable[[Floats], Truth], inside: Floats, outside: Floats, whole: bool) -> Floats:
     """Return the rates nearest to `inside` at which the target is reached, by halving the numbers between."""
     order, value = (_as_whole, _as_float) if whole else (_order, _value)
     near, far = order(inside), order(outside)
     for _ in range(_HALVINGS):
-        middle = near + (far - near) // 2
+        middle = (near & far) + ((near ^ far) >> 1)  # their mean; a sum would pass 64 bits across zero
         hit = reached(value(middle))
         far, near = np.where(hit, middle, far), np.where(hit, near, middle)
         if (np.abs(far - near) <= 1).all():
@@ -216,88 +235,3 @@ def _order(values: Floats) -> NDArray[np.int64]:
 def _value(places: NDArray[np.int64]) -> Floats:
     bits = np.where(places < 0, np.int64(-(2**63)) - places, places)
     return bits.view(np.float64)
-
-
-def best(plans: Sequence[Plan], rate: object) -> Plan:
-    """Return the most powerful plan at a rate; of equals the one that inspects less, then the first.
-
-    Parameters
-    ----------
-    plans : sequence of Plan
-        All about the same parameter.
-    rate : float, int or str
-        As typed.
-
-    Raises
-    ------
-    InvalidValue
-        When the plans' parameters differ.
-    """
-    _same_parameter(plans)
-    return max(plans, key=lambda plan: (power(plan, rate), -_extent(plan)))
-
-
-def _extent(plan: Plan) -> float:
-    value = getattr(plan.design, kind_of(plan).grammar.extent, 0.0)
-    return float(value) if isinstance(value, int | float) else 0.0
-
-
-def crossing(plan_a: Plan, plan_b: Plan) -> list[float]:
-    """Return the rates at which the power curves of two plans cross, in rising order.
-
-    The curves are compared at the rates where either reaches powers from 1e-9 to 1 - 1e-9, so the search
-    looks closely where they bend; each change of sign is then halved down to neighbouring numbers. In a
-    finite lot the rate is the first whole number of defectives at which the order has changed.
-
-    Raises
-    ------
-    InvalidValue
-        When the plans' parameters differ.
-    NoAnswer
-        When one plan is at least as powerful throughout.
-
-    Examples
-    --------
-    >>> from steelyard.core.text import read_plan
-    >>> plans = [read_plan(f"binomial | {text}") for text in ("n 50 | reject x>=4", "n 20 | reject x>=2")]
-    >>> [round(rate, 4) for rate in crossing(*plans)]
-    [0.0567]
-    """
-    plans = (plan_a, plan_b)
-    _same_parameter(plans)
-    whole = kind_of(plan_a).parameters[0].whole
-    grid = np.unique(np.concatenate([_landmarks(plan) for plan in plans]))
-    signs = _ahead(plans, grid)
-    kept = signs != 0
-    grid, signs = grid[kept], signs[kept]
-    turns = np.flatnonzero(signs[1:] != signs[:-1])
-    if not turns.size:
-        message = "the two power curves do not cross: one is at least as high throughout"
-        raise NoAnswer(message)
-    before = signs[turns]
-    found = _halve(lambda rates: _ahead(plans, rates) == -before, grid[turns], grid[turns + 1], whole)
-    return [float(rate) for rate in found]
-
-
-def _landmarks(plan: Plan) -> Floats:
-    ends = (_DOWNWARDS, _UPWARDS) if claims_both_sides(plan) else (None,)
-    found = np.concatenate([rates_for([plan], list(_GRID), end)[0] for end in ends])
-    return found[np.isfinite(found)]
-
-
-def _ahead(plans: Sequence[Plan], rates: Floats) -> Floats:
-    """Return the sign of the first plan's power minus the second's, from whichever tail is small."""
-    kinds = [kind_of(plan) for plan in plans]
-    columns = [kind.columns([plan]) for kind, plan in zip(kinds, plans, strict=True)]
-    safe = [kind.parameters[0].convert(rates, own) for kind, own in zip(kinds, columns, strict=True)]
-    first, second = (kind.reject(own, rate) for kind, own, rate in zip(kinds, columns, safe, strict=True))
-    missed, let = (kind.accept(own, rate) for kind, own, rate in zip(kinds, columns, safe, strict=True))
-    difference = np.where(first < 0.5, first - second, let - missed)
-    size_of_it = np.where(first < 0.5, first + second, let + missed)
-    return np.where(np.abs(difference) <= 1e-12 * size_of_it, 0.0, np.sign(difference))
-
-
-def _same_parameter(plans: Sequence[Plan]) -> None:
-    symbols = list(dict.fromkeys(kind_of(plan).parameters[0].symbol for plan in plans))
-    if len(symbols) > 1:
-        raise InvalidValue("plans", "be about the same parameter", " and ".join(symbols))

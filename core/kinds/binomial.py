@@ -68,7 +68,7 @@ class BinomialLaw(RateLaw):
         return float(columns["n"]) / 4
 
     def valley(self, columns: Columns, low: float, high: float) -> float:
-        """Return the p at which, of all items but one, `low` and ``high - 1`` defectives are equally probable.
+        """Return the p at which, of all items but one, `low` and ``high - 1`` defectives are equally likely.
 
         Only with these numbers among the others does it matter what the one item is.
         """
