@@ -185,3 +185,8 @@ Characteristics = Annotated[
         lambda v, name: read_whole(as_typed(v, name), name, 1),
     ),
 ]
+Correlation = Annotated[
+    float,
+    Word("Intraclass correlation of the items in a cluster, from 0 (independent) to below 1.", number),
+]
+Cluster = Annotated[float, Word("Items (or units) in a cluster.", number)]

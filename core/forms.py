@@ -7,14 +7,45 @@ what they then amount to, and which counts would keep alpha, the questions answe
 from __future__ import annotations
 
 import dataclasses
+from collections.abc import Callable
 from typing import Any
 
 from steelyard.core.errors import InvalidValue, NoAnswer
-from steelyard.core.kind import KINDS, claim_of, kind_of
+from steelyard.core.kind import KINDS, Field, Grammar, Wording, claim_of, kind_of
 from steelyard.core.need import need_of
 from steelyard.core.plan import Plan
 from steelyard.core.regions import make_plan
 from steelyard.core.smallest import plan_for
+
+
+def form_of(
+    grammar: Grammar, form: str, design: Callable[..., Any], fields: tuple[Field, ...], wording: Wording
+) -> Grammar:
+    """Return the grammar of a form of a kind.
+
+    Parameters
+    ----------
+    grammar : Grammar
+        Of the kind itself.
+    form : str
+        The word before the kind's name, e.g. ``"inspected"``.
+    design : type
+        The design with the form's fields.
+    fields : tuple of Field
+        What the form adds; the first one must be written, as the mark of the form.
+    wording : Wording
+    """
+    place = grammar.order.index("split" if "split" in grammar.order else grammar.rules[0])
+    return dataclasses.replace(
+        grammar,
+        kind=f"{form} {grammar.kind}",
+        base=grammar.kind,
+        marker=fields[0].word,
+        design=design,
+        fields=(*grammar.fields, *fields),
+        order=(*grammar.order[:place], *(field.word for field in fields), *grammar.order[place:]),
+        wording=wording,
+    )
 
 
 def plain(plan: Plan) -> Plan:
@@ -30,8 +61,7 @@ def plain(plan: Plan) -> Plan:
     if not base:
         return plan
     grammar = KINDS[base].grammar
-    fields = {field.attribute: getattr(plan.design, field.attribute) for field in grammar.fields}
-    return dataclasses.replace(plan, kind=base, design=grammar.design(**fields))
+    return dataclasses.replace(plan, kind=base, design=grammar.design(**_fields(plan, grammar)))
 
 
 def with_fields(plan: Plan, marker: str, **values: Any) -> Plan:
@@ -40,11 +70,11 @@ def with_fields(plan: Plan, marker: str, **values: Any) -> Plan:
     Parameters
     ----------
     plan : Plan
-        Of a kind that has the form; fields of another form are given up.
+        Of a kind that has the form, or of that form already: then with other values.
     marker : str
         The field's word, e.g. ``"misses"``.
     **values
-        The form's fields, by their attributes.
+        The form's fields, by their attributes, as typed.
 
     Raises
     ------
@@ -60,20 +90,28 @@ def with_fields(plan: Plan, marker: str, **values: Any) -> Plan:
     >>> write_plan(with_fields(plan, "misses", misses=0.1, false_alarms=0.01))
     'binomial | n 50 | claim p<=0.02 | misses 0.1 | false-alarms 0.01 | reject x>=4'
     """
-    base = plain(plan)
+    own = kind_of(plan).grammar
+    base = plain(plan) if own.marker == marker else plan
     for kind in KINDS.values():
         grammar = kind.grammar
         if grammar.base == base.kind and grammar.marker == marker:
-            fields = {name: getattr(base.design, name) for name in _attributes(base)}
-            changed = dataclasses.replace(base, kind=grammar.kind, design=grammar.design(**fields, **values))
+            added = {
+                f.attribute: f.read(values[f.attribute], f.word)
+                for f in grammar.fields
+                if f.attribute in values
+            }
+            design = grammar.design(**_fields(base), **added)
+            changed = dataclasses.replace(base, kind=grammar.kind, design=design)
             kind.verify(changed)
             return changed
     message = f"a plan of kind {base.kind} has no form with the field {marker}"
     raise NoAnswer(message)
 
 
-def _attributes(plan: Plan) -> list[str]:
-    return [field.attribute for field in kind_of(plan).grammar.fields]
+def _fields(plan: Plan, grammar: Grammar | None = None) -> dict[str, Any]:
+    """Return the values of a plan's design by name: all of them, or those that another grammar has."""
+    fields = (grammar or kind_of(plan).grammar).fields
+    return {field.attribute: getattr(plan.design, field.attribute) for field in fields}
 
 
 def keeping_alpha(plan: Plan) -> Plan:

@@ -18,6 +18,7 @@ from typing import Any
 import numpy as np
 
 from steelyard.core.errors import InvalidValue
+from steelyard.core.forms import form_of
 from steelyard.core.kind import REQUIRED, Field, Grammar
 from steelyard.core.law import CountLaw, ExactLaw, RateLaw
 from steelyard.core.numbers import read_number, typed
@@ -153,8 +154,6 @@ def inspected_grammar(grammar: Grammar, design: Callable[..., Any], errors: str)
     errors : str
         A sentence about them at the bench, with ``{misses}`` and ``{false_alarms}``.
     """
-    order, rule = grammar.order, grammar.rules[0]
-    place = order.index("split" if "split" in order else rule)
     wording = dataclasses.replace(
         grammar.wording,
         title=f"{grammar.wording.title}, with misses and false alarms",
@@ -162,13 +161,4 @@ def inspected_grammar(grammar: Grammar, design: Callable[..., Any], errors: str)
         found=f"found {grammar.wording.found}",
         assumptions=(*grammar.wording.assumptions[:-1], KNOWN_ERRORS),
     )
-    return dataclasses.replace(
-        grammar,
-        kind=f"inspected {grammar.kind}",
-        base=grammar.kind,
-        marker=FIELDS[0].word,
-        design=design,
-        fields=(*grammar.fields, *FIELDS),
-        order=(*order[:place], *(field.word for field in FIELDS), *order[place:]),
-        wording=wording,
-    )
+    return form_of(grammar, "inspected", design, FIELDS, wording)

@@ -110,6 +110,35 @@ def lot_limit(
     raise AssertionError("unreachable: the far end is possible")
 
 
+def bisected_limit(
+    law: CountLaw, row: Row, x: float, end: str, miss: float, split: str, greatest_rate: float
+) -> float:
+    """Return a limit for a rate whose tails are monotone, but have no simple slope.
+
+    Parameters are those of `rate_limit`, and with them
+
+    greatest_rate : float
+        The end of the rates, which may be infinite.
+    """
+    columns, (own, _, _) = dict(row), _OWN[end]
+    if end == "lower" and x == 0:
+        return 0.0
+    if end == "upper" and x == law.most(columns):
+        return greatest_rate
+
+    def beyond(rate: float) -> bool:
+        at, count = np.asarray(rate), np.asarray(x)
+        possible = weigh(law, columns, at, tails_of(law, columns, at, count, own, split)) > miss
+        return bool(possible) == (end == "lower")
+
+    low, high = 0.0, min(greatest_rate, 1.0)
+    while not beyond(high):
+        low, high = high, 2 * high
+    while low < (middle := (low + high) / 2) < high:
+        low, high = (low, middle) if beyond(middle) else (middle, high)
+    return high if end == "lower" else low
+
+
 def _first(predicate: Callable[[Floats], Truth], last: float) -> float:
     """Return the first whole number from 0 to `last` where a monotone predicate is true, as it is at `last`.
 

@@ -89,10 +89,11 @@ def stirling(count: Floats) -> Floats:
     """Return ``log(count!) - count log(count) + count``, which is 0 at zero and grows like its logarithm."""
     value = _TABLE[np.minimum(count, _TABLE.size - 1).astype(np.intp)]
     large = count >= _TABLE.size
-    return np.where(large, _stirling_series(np.maximum(count, 1.0)), value) if large.any() else value
+    return np.where(large, stirling_series(np.maximum(count, 1.0)), value) if large.any() else value
 
 
-def _stirling_series(count: Floats) -> Floats:
+def stirling_series(count: Floats) -> Floats:
+    """Return the same for any real number from 16 on."""
     w = 1.0 / (count * count)
     series = (1 / 12 - w * (1 / 360 - w * (1 / 1260 - w * (1 / 1680 - w / 1188)))) / count
     return series + 0.5 * np.log(count) + _HALF_LOG_TWO_PI
@@ -100,7 +101,7 @@ def _stirling_series(count: Floats) -> Floats:
 
 def _stirling_table(size: int, exact: int = 16) -> Floats:
     small = [math.log(math.factorial(k) * math.exp(k) / k**k) for k in range(exact)]
-    return np.concatenate((small, _stirling_series(np.arange(exact, size, dtype=np.float64))))
+    return np.concatenate((small, stirling_series(np.arange(exact, size, dtype=np.float64))))
 
 
 _TABLE = _stirling_table(4096)

@@ -114,7 +114,7 @@ def test_plans_without_this_form_refuse_it() -> None:
         read_plan(ITEMS), "misses", misses=0.3
     )  # other errors take the place of the first ones
     assert write_plan(plan) == ITEMS.replace("misses 0.1 | false-alarms 0.01", "misses 0.3")
-    with pytest.raises(NoAnswer, match="a plan of kind binomial has no form with the field guesses"):
+    with pytest.raises(NoAnswer, match="a plan of kind inspected binomial has no form with the field guesses"):
         with_fields(plan, "guesses")
     with pytest.raises(InvalidValue, match="alpha must be written in the plan"):
         keeping_alpha(read_plan("binomial | n 50 | claim p<=0.02 | reject x>=4"))
