@@ -33,8 +33,10 @@ from steelyard.core import limits
 from steelyard.core import tails_clustered as tails
 from steelyard.core.exact import PoissonExact
 from steelyard.core.law import CountLaw, ExactLaw
-from steelyard.core.numbers import typed
+from steelyard.core.native import operand, poisson_native
+from steelyard.core.numbers import typed, write_number
 from steelyard.core.parameter import Columns, Floats
+from steelyard.core.plan import Reject
 from steelyard.core.tabulated import TabulatedLaw, WeightedCounts, digits_of
 
 MOST_ITEMS = 2_000
@@ -136,6 +138,7 @@ class ClusteredDefectsLaw(CountLaw):
     """
 
     statistic, amount, divisible = "x", "units", True
+    fields = ("units", "cluster", "correlation")
 
     def __init__(self, at_once: float = 0.0) -> None:
         self.at_once = at_once
@@ -166,6 +169,21 @@ class ClusteredDefectsLaw(CountLaw):
     def limit(self, row: Mapping[str, Any], x: float, end: str, miss: float, split: str) -> float:
         """Return a limit by bisection."""
         return limits.bisected_limit(self, row, x, end, miss, split, math.inf)
+
+    def native(self, design: Any, rule: Reject, cell: str) -> str | None:
+        """Return a formula for the power, by the beta distribution."""
+        more = float(excess({name: np.asarray(getattr(design, name)) for name in self.fields}))
+        if more == 0:
+            return poisson_native(design.units, rule, cell)
+        rate, spread = operand(cell), write_number(more)
+        shape, tails = f"{write_number(design.units)}*{rate}/{spread}", []
+        if rule.low is not None:
+            chance = f"_xlfn.BETA.DIST(1/(1+{spread}),{shape},{rule.low + 1:.0f},TRUE)"
+            tails.append(f"IF({rate}=0,1,{chance})")
+        if rule.high is not None:
+            chance = f"_xlfn.BETA.DIST({spread}/(1+{spread}),{rule.high:.0f},{shape},TRUE)"
+            tails.append(f"IF({rate}=0,0,{chance})")
+        return "+".join(tails)
 
     def divergence(self, share: Floats, expected: Floats) -> Floats:
         """Return Chernoff's exponent of a negative binomial count per unit."""

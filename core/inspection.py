@@ -11,18 +11,22 @@ that it condemns; where defects are counted, the false finds per unit.
 from __future__ import annotations
 
 import dataclasses
+import re
 from collections.abc import Callable, Mapping
 from fractions import Fraction
 from typing import Any
 
 import numpy as np
 
+from steelyard.core.algebra import LONGEST
 from steelyard.core.errors import InvalidValue
 from steelyard.core.forms import form_of
 from steelyard.core.kind import REQUIRED, Field, Grammar
 from steelyard.core.law import CountLaw, ExactLaw, RateLaw
-from steelyard.core.numbers import read_number, typed
+from steelyard.core.native import operand
+from steelyard.core.numbers import read_number, typed, write_number
 from steelyard.core.parameter import Columns, Floats
+from steelyard.core.plan import Reject
 
 Found = Callable[[Any, Any, Any], Any]
 
@@ -54,9 +58,15 @@ def true_rate(found: Found, rate: float, misses: float, false_alarms: float) -> 
     >>> true_rate(found_per_item, 0.0278, 0.1, 0.01)
     0.02
     """
+    none, slope = line_of(found, misses, false_alarms)
+    return float((typed(rate) - none) / slope)
+
+
+def line_of(found: Found, misses: float, false_alarms: float) -> tuple[Fraction, Fraction]:
+    """Return what is found at the true rate 0, and how much more for each unit of the true rate."""
     errors = typed(misses), typed(false_alarms)
     none = found(Fraction(0), *errors)
-    return float((typed(rate) - none) / (found(Fraction(1), *errors) - none))
+    return none, found(Fraction(1), *errors) - none
 
 
 def check_shares(misses: float, false_alarms: float) -> None:
@@ -89,11 +99,13 @@ class InspectedLaw(CountLaw):
     law : RateLaw
         The law of a count that is found without errors.
     found : callable
-        From the true rate, misses and false alarms to the rate at which `law` holds.
+        From the true rate, misses and false alarms to the rate at which `law` holds: a straight line.
+    symbol : str
+        How `law` writes its rate.
     """
 
-    def __init__(self, law: RateLaw, found: Found) -> None:
-        self.law, self.found = law, found
+    def __init__(self, law: RateLaw, found: Found, symbol: str) -> None:
+        self.law, self.found, self.symbol = law, found, symbol
         self.statistic, self.amount, self.divisible = law.statistic, law.amount, law.divisible
 
     def _found(self, columns: Columns, rate: Floats) -> Floats:
@@ -132,6 +144,25 @@ class InspectedLaw(CountLaw):
     def most(self, columns: Columns) -> Any:
         """Return the most that can be found."""
         return self.law.most(columns)
+
+    def algebra(self, design: Any, rule: Reject) -> str | None:
+        """Return the power as a function of the finds' rate f, and this as one of the true rate."""
+        power = self.law.algebra(design, rule)
+        if power is None:
+            return None
+        none, slope = self._line(design)
+        power = re.sub(r"\b" + self.symbol + r"\b", "f", power)
+        text = f"{power}, with f = {none}{slope} {self.symbol}"
+        return text if len(text) <= LONGEST else None
+
+    def native(self, design: Any, rule: Reject, cell: str) -> str | None:
+        """Return the formula of a perfect inspection, at the rate that is found."""
+        none, slope = self._line(design)
+        return self.law.native(design, rule, f"{none}{slope}*{operand(cell)}")
+
+    def _line(self, design: Any) -> tuple[str, str]:
+        none, slope = line_of(self.found, design.misses, design.false_alarms)
+        return f"{write_number(float(none))}+" if none else "", write_number(float(slope))
 
     def limit(self, row: Mapping[str, Any], x: float, end: str, miss: float, split: str) -> float:
         """Return the limit of what is found, traced back to the true rate and clipped to its range."""

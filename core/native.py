@@ -24,7 +24,7 @@ def binomial_native(n: int, rule: Reject, cell: str) -> str:
     >>> binomial_native(50, Reject(None, 4), "B2")
     '_xlfn.BINOM.DIST(46,50,1-B2,TRUE)'
     """
-    rate = _operand(cell)
+    rate = operand(cell)
     tails = []
     if rule.low is not None:
         tails.append(f"_xlfn.BINOM.DIST({_whole(rule.low)},{n},{rate},TRUE)")
@@ -41,7 +41,7 @@ def poisson_native(units: float, rule: Reject, cell: str) -> str:
     >>> poisson_native(120, Reject(None, 11), "B2")
     '_xlfn.GAMMA.DIST(120*B2,11,1,TRUE)'
     """
-    rate = _operand(cell)
+    rate = operand(cell)
     mean = f"{write_number(units)}*{rate}"
     tails = []
     if rule.low is not None:
@@ -59,7 +59,7 @@ def lot_native(lot: int, n: int, rule: Reject, cell: str) -> str:
     >>> lot_native(60, 32, Reject(None, 1), "B2")
     'IF(B2<1,0,IF(60-B2<=31,1,_xlfn.HYPGEOM.DIST(31,32,60-B2,60,TRUE)))'
     """
-    defectives = _operand(cell)
+    defectives = operand(cell)
     tails = []
     if rule.low is not None:
         low = int(rule.low)
@@ -72,7 +72,7 @@ def lot_native(lot: int, n: int, rule: Reject, cell: str) -> str:
     return "+".join(tails)
 
 
-def _operand(cell: str) -> str:
+def operand(cell: str) -> str:
     """Return a reference as it is, and any other expression in brackets."""
     return cell if _PLAIN.fullmatch(cell) else f"({cell})"
 

@@ -173,14 +173,14 @@ class _Remarks:
 class InspectedBinomialKind(_Remarks, BinomialKind):
     """Single plans for the rate of defectives, with imperfect inspection."""
 
-    law = InspectedLaw(BinomialLaw(), found_per_item)
+    law = InspectedLaw(BinomialLaw(), found_per_item, "p")
     grammar = inspected_grammar(BinomialKind.grammar, InspectedItems, _OF_ITEMS)
 
 
 class InspectedPoissonKind(_Remarks, PoissonKind):
     """Single plans for defects per unit, with imperfect inspection."""
 
-    law = InspectedLaw(PoissonLaw(), found_per_unit)
+    law = InspectedLaw(PoissonLaw(), found_per_unit, "rate")
     grammar = inspected_grammar(PoissonKind.grammar, InspectedExtent, _OF_DEFECTS)
 
 

@@ -321,3 +321,14 @@ def test_the_power_of_the_truth_is_asked_for() -> None:
     rate = rate_for(plan, 0.9)
     assert power(plan, rate) == pytest.approx(0.9, rel=1e-12)
     assert rate * 0.9 + (1 - rate) * 0.01 == pytest.approx(rate_for(plain(plan), 0.9), rel=1e-12)
+
+
+def test_native_formulas_and_algebra_go_by_what_is_found() -> None:
+    plan = read_plan("binomial | n 13 | misses 0.1 | false-alarms 0.01 | reject x>=2")
+    assert kind_of(plan).native(plan, "B2") == "_xlfn.BINOM.DIST(11,13,1-(0.01+0.89*B2),TRUE)"
+    assert kind_of(plan).algebra(plan) == "1 - (1-f)^13 - 13 f (1-f)^12, with f = 0.01 + 0.89 p"
+    plan = read_plan("poisson | units 120 | misses 0.2 | reject x>=3")
+    assert kind_of(plan).native(plan, "B2") == "_xlfn.GAMMA.DIST(120*(0.8*B2),3,1,TRUE)"
+    assert kind_of(plan).algebra(plan) == "1 - exp(-120 f) (1 + 120 f + (120 f)^2/2), with f = 0.8 rate"
+    lot = read_plan(LOT)
+    assert kind_of(lot).native(lot, "B2") is None is kind_of(lot).algebra(lot)
