@@ -1,8 +1,10 @@
 """Power from the spreadsheet's own functions, so that anybody can check a plan without Steelyard.
 
-The formulas take sample size and critical counts from cells and follow when these change. Upper tails are
-lower tails of the items that are not counted, because 1 minus a lower tail loses small probabilities; for
-defects per unit they are a gamma distribution.
+Unlike those of SY_NATIVE, the formulas here take sample size and critical counts from cells, and follow when
+these change. Upper tails are lower tails of the items that are not counted, because 1 minus a lower tail
+loses small probabilities; for defects per unit they are a gamma distribution.
+
+Kinds of plan that do not count have the formula of SY_NATIVE, with the numbers of the plan as it was built.
 """
 
 from __future__ import annotations
@@ -15,9 +17,10 @@ import numpy as np
 
 from steelyard.core.kind import kind_of
 from steelyard.core.law import CountLaw
-from steelyard.core.parameter import Columns
+from steelyard.core.parameter import Floats
 from steelyard.core.plan import Plan, Reject
-from steelyard.core.threshold import ThresholdKind
+from steelyard.core.questions import power
+from steelyard.core.threshold import CountKind
 
 
 @dataclass(frozen=True, slots=True)
@@ -32,7 +35,7 @@ class Tails:
 TAILS = {
     "binomial": Tails("BINOM.DIST({x},{n},{rate},TRUE)", "BINOM.DIST({n}-{x},{n},1-{rate},TRUE)"),
     "poisson": Tails(
-        "POISSON.DIST({x},{units}*{rate},TRUE)", "IF({rate}=0,0,GAMMA.DIST({units}*{rate},{x},1,TRUE))"
+        "IF({rate}=0,1,POISSON.DIST({x},{units}*{rate},TRUE))", "GAMMA.DIST({units}*{rate},{x},1,TRUE)"
     ),
     "hypergeometric": Tails(
         "IF({x}>=MIN({n},{rate}),1,IF({x}<{n}+{rate}-{lot},0,HYPGEOM.DIST({x},{n},{rate},{lot},TRUE)))",
@@ -40,6 +43,11 @@ TAILS = {
         "HYPGEOM.DIST({n}-{x},{n},{lot}-{rate},{lot},TRUE)))",
     ),
 }
+
+
+def follows(plan: Plan) -> bool:
+    """Tell whether a plan's native formula follows the cells of its critical counts."""
+    return plan.kind in TAILS
 
 
 def power_formula(kind: str, low: str, high: str, rate: str, **design: str) -> str:
@@ -56,37 +64,62 @@ def power_formula(kind: str, low: str, high: str, rate: str, **design: str) -> s
     return f"IF(ISTEXT({low}),0,{lower})+IF(ISTEXT({high}),0,{upper})"
 
 
-def power_values(plan: Plan, rates: Sequence[float]) -> list[float]:
-    """Return what those formulas give, summed count by count and not by the tail functions of `SY_POWER`.
+def power_values(plans: Sequence[Plan], rates: Sequence[Sequence[float]]) -> list[list[float]]:
+    """Return what the formulas give; counts are summed one by one, not by the tail functions of `SY_POWER`.
 
     Parameters
     ----------
-    plan : Plan
-        Of a kind that counts.
-    rates : sequence of float
-        In the parameter's own unit.
+    plans : sequence of Plan
+    rates : sequence of sequence of float
+        For each plan the rates, in the parameter's own unit.
 
     Examples
     --------
     >>> from steelyard.core.text import read_plan
-    >>> round(power_values(read_plan("binomial | n 50 | reject x>=4"), [0.1])[0], 4)
+    >>> [[value]] = power_values([read_plan("binomial | n 50 | reject x>=4")], [[0.1]])
+    >>> round(value, 4)
     0.7497
     """
-    kind = kind_of(plan)
-    assert isinstance(kind, ThresholdKind)
-    assert isinstance(kind.law, CountLaw)
-    return [_power(kind.law, kind.columns([plan]), plan.rule, float(rate)) for rate in rates]
+    answers: list[list[float]] = [[] for _ in plans]
+    groups: dict[str, list[int]] = {}
+    for place, plan in enumerate(plans):
+        if not rates[place]:
+            continue
+        if follows(plan):
+            groups.setdefault(plan.kind, []).append(place)
+        else:
+            answers[place] = [power(plan, rate) for rate in rates[place]]
+    for places in groups.values():
+        summed = _summed([plans[place] for place in places], [rates[place] for place in places])
+        for place, values in zip(places, summed, strict=True):
+            answers[place] = values
+    return answers
 
 
-def _power(law: CountLaw, columns: Columns, rule: Reject, rate: float) -> float:
-    mean = float((law.share(columns, np.array([rate])) * columns[law.amount])[0])
-    reach = (
-        12 * math.sqrt(mean) + 60
-    )  # what lies farther from both the mean and the critical count is nothing
-    most = float(np.max(law.most(columns)))
+def _summed(plans: Sequence[Plan], rates: Sequence[Sequence[float]]) -> list[list[float]]:
+    """Return the powers of plans of one kind, from the point probabilities of all of them in one call."""
+    kind = kind_of(plans[0])
+    assert isinstance(kind, CountKind)
+    owner = np.repeat(np.arange(len(plans)), [len(line) for line in rates])
+    columns = {name: values[owner] for name, values in kind.columns(plans).items()}
+    given = np.concatenate([np.asarray(line, dtype=float) for line in rates])
+    law: CountLaw = kind.law
+    means = law.share(columns, given) * columns[law.amount]
+    most = np.broadcast_to(law.most(columns), given.shape)
+    counts = [_counts(plans[i].rule, means[at], most[at]) for at, i in enumerate(owner)]
+    sizes = [len(line) for line in counts]
+    spread = {name: np.repeat(values, sizes) for name, values in columns.items()}
+    points = law.exactly(np.concatenate(counts), spread, np.repeat(given, sizes))
+    sums = np.minimum(np.add.reduceat(points, np.cumsum([0, *sizes[:-1]])), 1.0)
+    return [[float(value) for value in sums[owner == place]] for place in range(len(plans))]
+
+
+def _counts(rule: Reject, mean: float, most: float) -> Floats:
+    """Return the counts that reject, without those too far from both the mean and the rule to matter."""
+    reach = 12 * math.sqrt(mean) + 60
     counts = []
     if rule.low is not None:
-        counts.append(np.arange(max(0, math.floor(min(rule.low, mean) - reach)), rule.low + 1))
+        counts.append(np.arange(max(0.0, math.floor(min(rule.low, mean) - reach)), rule.low + 1))
     if rule.high is not None:
         counts.append(np.arange(rule.high, min(most, max(rule.high, mean) + reach) + 1))
-    return min(1.0, float(law.exactly(np.concatenate(counts), columns, np.array([rate])).sum()))
+    return np.concatenate(counts)

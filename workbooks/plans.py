@@ -21,6 +21,7 @@ from steelyard.core.plan import SPLITS, VERDICTS, Claim, Plan, split_claim
 from steelyard.core.regions import make_plan
 from steelyard.core.smallest import plan_for, smallest_sizes
 from steelyard.core.text import write_plan
+from steelyard.core.threshold import CountKind
 from steelyard.workbooks.columns import COLUMNS
 from steelyard.workbooks.requests import Problem, Request
 
@@ -80,8 +81,13 @@ class Planned:
     @property
     def extra(self) -> float | None:
         """The lot, or sigma, where the kind needs one."""
-        word = self.kind.grammar.extra
-        return getattr(self.request, word) if word else None
+        column = _extra_column(self.kind)
+        return getattr(self.request, column) if column else None
+
+    @property
+    def native(self) -> bool:
+        """Whether the spreadsheet's own functions can give the power."""
+        return self.kind.native(self.plan, "A1") is not None
 
 
 def plan_requests(requests: Sequence[Request]) -> tuple[list[Planned], list[Problem]]:
@@ -131,8 +137,8 @@ def _ask(request: Request) -> _Asked:
     with _blamed_on("kind", request):
         kind = kind_named(request.kind)
     extra, alpha = _extra(kind, request), request.alpha or ALPHA
-    with _blamed_on("n", request):  # where the size is sought, 1 stands in for it
-        design = design_from(kind, extent_values(kind, request.n or 1, extra))
+    with _blamed_on("n", request):  # where the size is sought, the least one stands in for it
+        design = design_from(kind, extent_values(kind, request.n or kind.grammar.least, extra))
     with _blamed_on("claim", request):
         claim = claim_from(kind, request.claim, request.side, design)
         kind.check_claim(claim, design)
@@ -141,7 +147,7 @@ def _ask(request: Request) -> _Asked:
 
 def _extra(kind: Kind, request: Request) -> float | None:
     """Return the lot or sigma, and refuse the one that the kind has no use for."""
-    wanted = kind.grammar.extra
+    wanted = _extra_column(kind)
     for column in ("lot", "sigma"):
         value = getattr(request, column)
         if value is not None and column != wanted:
@@ -149,6 +155,11 @@ def _extra(kind: Kind, request: Request) -> float | None:
     if wanted and getattr(request, wanted) is None:
         raise _Refused(Problem(request.row, wanted, None, f"given for a plan of kind {request.kind}"))
     return getattr(request, wanted) if wanted else None
+
+
+def _extra_column(kind: Kind) -> str:
+    """Return the column that holds the one number that a kind needs beside the size."""
+    return kind.grammar.extra if kind.grammar.extra in ("", "lot") else "sigma"
 
 
 def _need(kind: Kind, request: Request, claim: Claim, alpha: float, extra: float | None) -> Need | None:
@@ -169,7 +180,7 @@ def _amounts(asked: Sequence[_Asked]) -> list[float]:
     amounts = [one.request.n or math.nan for one in asked]
     groups: dict[tuple[str, str], list[int]] = {}
     for place, one in enumerate(asked):
-        if one.sought and one.claim.side != "either":
+        if one.sought and one.claim.side != "either" and isinstance(one.kind, CountKind):
             groups.setdefault((one.request.kind, one.claim.side), []).append(place)
     for (kind, side), places in groups.items():
         for place, amount in zip(

@@ -15,21 +15,15 @@ from steelyard.workbooks.house import Book
 from steelyard.workbooks.measure import line_count, text_width
 from steelyard.workbooks.plans import plan_requests
 from steelyard.workbooks.requests import Request
-from steelyard.workbooks.sheets.curves import table_rates
-from steelyard.workbooks.sheets.grid import MOST_CURVES, add_grid, blocks
+from steelyard.workbooks.sheets.grid import MOST_CURVES, STEPS, add_grid, blocks
 from steelyard.workbooks.sheets.register import Register
-from steelyard.workbooks.sheets.scales import nice, rate_axis
+from steelyard.workbooks.sheets.scales import marks, nice, rate_axis, scale_of, table_values
 from steelyard.workbooks.terms import across, ask, column, literal
 
 
 @pytest.fixture(scope="module")
 def stored(tmp_path_factory):
     return Stored(build(tmp_path_factory.mktemp("sheets") / "demo.xlsx"))
-
-
-@pytest.fixture(scope="module")
-def register():
-    return Register(Book("Example"), demo())
 
 
 def requests(count, **fields):
@@ -92,21 +86,47 @@ def test_constants_are_written_for_the_file():
 def test_summed_point_probabilities_agree_with_the_tail_functions(text, rates):
     plan = read_plan(text)
     expected = [power(plan, rate) for rate in rates]
-    assert native.power_values(plan, rates) == pytest.approx(expected, rel=1e-11, abs=1e-300)
+    assert native.power_values([plan], [rates])[0] == pytest.approx(expected, rel=1e-11, abs=1e-300)
 
 
 # The power grid
 
 
-def test_a_block_holds_one_parameter_and_like_scales(register):
-    for block in blocks(register):
-        members = [register.planned[place] for place in block.places]
+def test_a_block_holds_one_parameter_and_like_scales():
+    for block in blocks(demo()):
+        members = [demo()[place] for place in block.places]
         assert len({member.kind.parameters[0].symbol for member in members}) == 1
+        assert len(block.rates) <= STEPS + 1
         assert all(rate <= (member.extra or rate) for member in members for rate in block.rates)
-        needed = max(max((*member.own_catches, member.plan.claim.value)) for member in members)
-        assert block.rates[-1] >= min(needed, members[0].extra or needed) * 0.99
-    places = [place for block in blocks(register) for place in block.places]
+        assert all(block.rates[-1] >= max(marks(member)) * 0.99 for member in members if not member.extra)
+    places = [place for block in blocks(demo()) for place in block.places]
     assert sorted(places) == list(range(len(demo())))
+
+
+def measured(**fields):
+    options = {
+        "characteristic": "Wall",
+        "kind": "normal",
+        "claim": "mean>=0.9",
+        "catch": "0.85",
+        "power": 0.9,
+    }
+    (planned,), _ = plan_requests([Request(2, **(options | {"sigma": 0.04} | fields))])
+    return planned
+
+
+def test_a_mean_is_shown_around_its_claim():
+    (block,) = blocks([measured(), measured(claim="mean>=0.91")])
+    assert 0.75 < block.rates[0] < 0.85
+    assert 0.91 < block.rates[-1] < 1.0
+    assert len(blocks([measured(), measured(claim="mean>=9", catch="8.5")])) == 2
+
+
+def test_scales_keep_to_what_is_possible():
+    (planned,), _ = plan_requests([Request(2, "Tiny lot", "hypergeometric", "0", 0.05, "1", 0.5, lot=4)])
+    assert table_values(planned, 8) == [0.0, 1.0, 2.0]
+    spread = measured(kind="spread", claim="0.1", catch="0.2", sigma=None)
+    assert min(scale_of(spread, 1.3).values(20)) > 0
 
 
 @given(st.floats(1e-9, 1e6))
@@ -118,7 +138,12 @@ def test_round_numbers_are_the_next_larger(size):
 
 @pytest.mark.parametrize(("end", "digits"), [(0.4, "0%"), (0.04, "0.0%"), (0.0004, "0.000%")])
 def test_axis_labels_have_the_decimals_they_need(end, digits):
-    assert rate_axis("rate", end, percent=True).digits == digits
+    assert rate_axis("rate", 0, end, percent=True).digits == digits
+
+
+def test_axes_begin_and_end_at_labels():
+    axis = rate_axis("mean", 0.8125, 0.9375, percent=False)
+    assert (axis.low, axis.high, axis.digits) == (0.8, 0.94, "General")
 
 
 def test_more_plans_than_curves_are_chosen_by_cells():
@@ -133,12 +158,12 @@ def test_more_plans_than_curves_are_chosen_by_cells():
 # Justifications
 
 
-def test_tables_of_true_values_hold_claim_and_catch(register):
-    for place, planned in enumerate(demo()):
-        rates = table_rates(register, place, 8)
-        assert len(rates) == len(set(rates)) == 8
-        assert rates == sorted(rates)
-        assert {planned.plan.claim.value, *planned.own_catches} <= set(rates)
+@pytest.mark.parametrize("planned", demo(), ids=lambda planned: planned.request.characteristic)
+def test_tables_of_true_values_hold_claim_and_catch(planned):
+    values = table_values(planned, 8)
+    assert 6 <= len(values) <= 8
+    assert values == sorted(set(values))
+    assert set(marks(planned)) <= set(values)
 
 
 MUST_SAY = """\

@@ -2,13 +2,17 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+from typing import Any
+
 from openpyxl.utils import get_column_letter
 
 from steelyard.workbooks import native
 from steelyard.workbooks.house import Book, Live, Piece, Put, Sheet
 from steelyard.workbooks.sheets import rows
-from steelyard.workbooks.sheets.register import AGREES, DIFFERS, Register
-from steelyard.workbooks.terms import across, ask
+from steelyard.workbooks.sheets.register import AGREES, DIFFERS, NONE, Register
+from steelyard.workbooks.sheets.scales import check_values
+from steelyard.workbooks.terms import Terms, ask
 
 TITLE = "Checks"
 FIRST = 8
@@ -21,23 +25,12 @@ _WORST, _VERDICT = _LETTERS[-2:]
 _WIDTHS = [5.0, 27.0, *[9.0] * RATES, *[13.0] * (2 * RATES), 12.0, 9.0]
 
 
-def check_rates(register: Register, place: int) -> list[float]:
-    """Return true values to check a plan at: around its claim and what it must catch."""
-    planned = register.planned[place]
-    assert planned.plan.claim is not None
-    claim, catch = planned.plan.claim.value, register.value("catch_own", place)
-    upper = float(planned.extra or 0) if rows.in_lots(planned) else planned.kind.parameters[0].upper
-    far = float(catch) if catch is not None else 2 * claim
-    wanted = [claim / 2, claim, (claim + far) / 2, far, 1.5 * max(claim, far)]
-    digits = [f"{min(rate, upper):.6g}" for rate in wanted]
-    return [float(round(float(text))) if rows.in_lots(planned) else float(text) for text in digits]
-
-
 def add_checks(book: Book, register: Register) -> Sheet:
     """Add the sheet and return it."""
     sheet = book.sheet(TITLE, dict(zip(_LETTERS, _WIDTHS, strict=True)))
-    lines = [_line(book.host, register, place) for place in range(len(register.planned))]
-    count, last = len(lines), FIRST + len(lines) - 1
+    lines = _lines(book.host, register)
+    last = FIRST + len(lines) - 1
+    count = sum(isinstance(line[-1], Live) for line in lines)
     agreeing = sum(line[-1].shown == AGREES for line in lines if isinstance(line[-1], Live))
     verdicts = f"${_VERDICT}${FIRST}:${_VERDICT}${last}"
     sheet.add(Put("Checks", "title"))
@@ -57,7 +50,7 @@ def add_checks(book: Book, register: Register) -> Sheet:
     texts = ("No.", "Characteristic", *numbers, "Largest relative difference", "Verdict")
     sheet.add(*(Put(text, "heading") for text in texts))
     sheet.rows(lines)
-    sheet.flag(verdicts.replace("$", ""), f'={_VERDICT}{FIRST}<>"{AGREES}"')
+    sheet.flag(verdicts.replace("$", ""), f'={_VERDICT}{FIRST}="{DIFFERS}"')
     sheet.flag(f"C{top}", f'=COUNTIF({verdicts},"{AGREES}")<{count}')
     sheet.freeze(f"C{FIRST}")
     sheet.protect()
@@ -65,23 +58,39 @@ def add_checks(book: Book, register: Register) -> Sheet:
     return sheet
 
 
-def _line(host: str, register: Register, place: int) -> list[Piece]:
-    """Return one plan's row."""
-    planned, row, points = register.planned[place], FIRST + place, check_rates(register, place)
-    rates, ours, theirs = (f"{letters[0]}{row}:{letters[-1]}{row}" for letters in (_RATES, _OURS, _THEIRS))
-    power = ask(host, "POWER", register.term("plan", place), across(rates, points))
-    natively = native.power_values(planned.plan, points)
-    worst = max(abs(a - b) / (abs(a) + 1e-290) for a, b in zip(power.cells[0], natively, strict=True))
-    verdict = AGREES if worst <= ALLOWED else DIFFERS
+def _lines(host: str, register: Register) -> list[list[Piece]]:
+    """Return the rows of all plans; add-in and native formulas are each computed in one go."""
+    planned = register.planned
+    points = [check_values(one) for one in planned]
+    areas = [f"{_RATES[0]}{FIRST + place}:{_RATES[-1]}{FIRST + place}" for place in range(len(planned))]
+    power = ask(host, "POWER", register.column("plan"), Terms(tuple(areas), points))
+    summed = native.power_values([one.plan for one in planned], points)
+    lines = []
+    for place, (array, theirs) in enumerate(zip(power.arrays("result exact"), summed, strict=True)):
+        known = [
+            register.term("number", place).lives("index")[0],
+            register.term("name", place).lives("result")[0],
+        ]
+        style = f"input {rows.rate_style(planned[place])}"
+        given = [Put(rate, style) for rate in points[place]]
+        lines.append([*known, *given, array, *_judged(register, place, power.cells[place], theirs)])
+    return lines
+
+
+def _judged(register: Register, place: int, ours: Sequence[Any], theirs: Sequence[float]) -> list[Piece]:
+    """Return the native formulas of one plan, the largest difference and the verdict."""
+    row = FIRST + place
+    formulas = [register.native(place, f"{letters}{row}") for letters in _RATES]
+    if not formulas[0]:
+        return [*[Put(None, "native")] * RATES, Put(None, "result"), Put(NONE, "verdict")]
+    here, there = (f"{letters[0]}{row}:{letters[-1]}{row}" for letters in (_OURS, _THEIRS))
+    worst = max(abs(a - b) / (abs(a) + 1e-290) for a, b in zip(ours, theirs, strict=True))
     return [
-        *register.term("number", place).lives("index"),
-        *register.term("name", place).lives("result"),
-        *(Put(rate, f"input {rows.rate_style(planned)}") for rate in points),
-        *power.arrays("result exact"),
-        *(
-            Live(f"={register.native(place, f'{letters}{row}')}", value, "native exact")
-            for letters, value in zip(_RATES, natively, strict=True)
+        *(Live(f"={text}", value, "native exact") for text, value in zip(formulas, theirs, strict=True)),
+        Live(f"=SUMPRODUCT(MAX(ABS({here}-{there})/(ABS({here})+1E-290)))", worst, "result tiny"),
+        Live(
+            f'=IF({_WORST}{row}<=$C$4,"{AGREES}","{DIFFERS}")',
+            AGREES if worst <= ALLOWED else DIFFERS,
+            "verdict",
         ),
-        Live(f"=SUMPRODUCT(MAX(ABS({ours}-{theirs})/(ABS({ours})+1E-290)))", worst, "result tiny"),
-        Live(f'=IF({_WORST}{row}<=$C$4,"{AGREES}","{DIFFERS}")', verdict, "verdict"),
     ]

@@ -2,73 +2,63 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
 from openpyxl.utils import get_column_letter
 
 from steelyard.workbooks.charts import Axis, Curve, curve_chart
-from steelyard.workbooks.house import Book, Put, Sheet, between
+from steelyard.workbooks.house import Book, Live, Put, Sheet, Value, between
+from steelyard.workbooks.plans import Planned
 from steelyard.workbooks.sheets import paper, rows
 from steelyard.workbooks.sheets.register import Register
-from steelyard.workbooks.sheets.scales import clean, nice, rate_axis
-from steelyard.workbooks.terms import Terms, across, ask, column
+from steelyard.workbooks.sheets.scales import Scale, common, rate_axis, scale_of
+from steelyard.workbooks.terms import across, ask, column
 
 TITLE = "Power grid"
 STEPS = 20
 MOST_CURVES = 12
 
 _SPREAD = 4  # plans whose scales differ by more stand in another block
-_LEFT, _RIGHT = get_column_letter(4), get_column_letter(4 + STEPS)
+_FIRST_RATE = 4  # the column of the first true value
+_LEFT, _RIGHT = get_column_letter(_FIRST_RATE), get_column_letter(_FIRST_RATE + STEPS)
 
 
 @dataclass(frozen=True, slots=True)
 class Block:
-    """Characteristics (places in the register) that share an axis of `STEPS` steps from 0."""
+    """Characteristics (places in the register) that share an axis of true values."""
 
     places: tuple[int, ...]
-    step: float
+    rates: tuple[float, ...]
 
     @property
-    def rates(self) -> list[float]:
-        """The true values across."""
-        return [clean(self.step * i) for i in range(STEPS + 1)]
+    def right(self) -> str:
+        """The column of the last true value."""
+        return get_column_letter(_FIRST_RATE + len(self.rates) - 1)
 
 
-def blocks(register: Register) -> list[Block]:
+def blocks(planned: Sequence[Planned]) -> list[Block]:
     """Group the characteristics by parameter and scale, in the register's order."""
     found: list[Block] = []
-    symbols = [planned.kind.parameters[0].symbol for planned in register.planned]
+    symbols = [one.kind.parameters[0].symbol for one in planned]
     for symbol in dict.fromkeys(symbols):
-        places = [place for place, other in enumerate(symbols) if other == symbol]
-        reach = {place: _reach(register, place) for place in places}
+        scales = {place: scale_of(planned[place], 1.3) for place, own in enumerate(symbols) if own == symbol}
         groups: list[list[int]] = []
-        for place in sorted(places, key=reach.__getitem__):
-            if groups and reach[place] <= _SPREAD * reach[groups[-1][0]]:
+        for place in sorted(scales, key=lambda place: scales[place].high):
+            if groups and _alike([scales[other] for other in (*groups[-1], place)]):
                 groups[-1].append(place)
             else:
                 groups.append([place])
-        found += [_block(register, sorted(group), max(reach[place] for place in group)) for group in groups]
+        for group in groups:
+            rates = common([scales[place] for place in group]).values(STEPS - 1)
+            found.append(Block(tuple(sorted(group)), tuple(rates)))
     return found
 
 
-def _reach(register: Register, place: int) -> float:
-    """Return the largest true value that matters to a plan: its claim, or what it must catch."""
-    claim = register.planned[place].plan.claim
-    given = [register.value(key, place) for key in ("catch_own", "second_own")]
-    return max([float(rate) for rate in (*given, claim and claim.value) if rate], default=1.0)
-
-
-def _block(register: Register, places: Sequence[int], reach: float) -> Block:
-    members = [register.planned[place] for place in places]
-    if rows.in_lots(members[0]):
-        most = min(int(planned.extra or 0) for planned in members)
-        step = float(max(1, min(math.ceil(nice(1.3 * reach / STEPS)), most // STEPS)))
-    else:
-        upper = members[0].kind.parameters[0].upper
-        step = min(nice(1.3 * reach / STEPS), upper / STEPS)
-    return Block(tuple(places), step)
+def _alike(scales: Sequence[Scale]) -> bool:
+    """Tell whether one axis shows them all well."""
+    whole = max(scale.high for scale in scales) - min(scale.low for scale in scales)
+    return whole <= _SPREAD * min(scale.high - scale.low for scale in scales)
 
 
 def add_grid(book: Book, register: Register) -> Sheet:
@@ -85,7 +75,7 @@ def add_grid(book: Book, register: Register) -> Sheet:
             12,
         )
     )
-    for number, block in enumerate(blocks(register)):
+    for number, block in enumerate(blocks(register.planned)):
         sheet.skip()
         if number:
             paper.break_here(sheet)
@@ -99,60 +89,54 @@ def add_grid(book: Book, register: Register) -> Sheet:
 
 def _add_block(sheet: Sheet, register: Register, block: Block) -> None:
     first = register.planned[block.places[0]]
-    parameter, style = first.kind.parameters[0], rows.rate_style(first)
-    name, rates = f"{parameter.name}, {parameter.symbol}", block.rates
-    upper = min(parameter.upper, 1e9)
-    check = between(parameter.lower, upper, "True value", parameter.unit, whole=rows.in_lots(first))
-    sheet.add(Put(f"True {name}, from 0 to {_shown(rates[-1], style)}", "section"))
+    parameter, style, rates = first.kind.parameters[0], rows.rate_style(first), block.rates
+    name = f"true {parameter.name}, {parameter.symbol}"
+    span = " to ".join(
+        f"{100 * rate:.6g} %" if style == "rate" else f"{rate:.6g}" for rate in (rates[0], rates[-1])
+    )
+    sheet.add(Put(f"{name[0].upper()}{name[1:]}, from {span}", "section"))
+    lower, upper = max(parameter.lower, -1e9), min(parameter.upper, 1e9)
+    check = between(lower, upper, "True value", parameter.unit, whole=rows.in_lots(first))
     head = sheet.add(
         *(Put(text, "heading") for text in ("No.", "Characteristic", "Plan")),
         *(Put(rate, f"input {style}", check=check) for rate in rates),
     )
     plans = column("$C", head + 1, [register.value("plan", place) for place in block.places])
-    power = ask(sheet.book.host, "POWER", plans, across(f"${_LEFT}${head}:${_RIGHT}${head}", rates))
+    power = ask(sheet.book.host, "POWER", plans, across(f"${_LEFT}${head}:${block.right}${head}", rates))
     for place, array in zip(block.places, power.arrays("result power"), strict=True):
         looks = (("number", "index"), ("name", "result"), ("plan", "edit"))
         sheet.add(*(register.term(key, place).lives(look)[0] for key, look in looks), array)
-    sheet.colour_scale(f"{_LEFT}{head + 1}:{_RIGHT}{sheet.next_row - 1}")
+    sheet.colour_scale(f"{_LEFT}{head + 1}:{block.right}{sheet.next_row - 1}")
     drawn = range(head + 1, sheet.next_row)
     if len(drawn) > MOST_CURVES:
-        drawn = _choose(sheet, drawn, register, block, power)
-    _add_chart(sheet, name, style, head, drawn, rates[-1])
+        shown = [[register.value(key, place) for key in ("name", "plan")] for place in block.places]
+        drawn = _choose(
+            sheet, drawn, [[*texts, *line] for texts, line in zip(shown, power.cells, strict=True)]
+        )
+    x = sheet.ref(f"{_LEFT}{head}", f"{block.right}{head}")
+    curves = [
+        Curve(sheet.ref(f"B{row}"), x, sheet.ref(f"{_LEFT}{row}", f"{block.right}{row}")) for row in drawn
+    ]
+    sheet.skip()
+    axes = rate_axis(name, rates[0], rates[-1], style == "rate"), Axis("power: chance of rejecting", 1.0)
+    chart = curve_chart("Power by the true value", *axes, curves, 42.5, 13.0)
+    sheet.chart(chart, f"Power of {len(curves)} plans from 0 to 100 %, by the {name}, from {span}.")
 
 
-def _shown(rate: float, style: str) -> str:
-    return f"{100 * rate:.6g} %" if style == "rate" else f"{rate:g}"
-
-
-def _choose(sheet: Sheet, table: range, register: Register, block: Block, power: Terms) -> range:
+def _choose(sheet: Sheet, table: range, cells: Sequence[Sequence[Value]]) -> range:
     """Write the rows that the chart draws, each chosen by its place in the table above; return them."""
     sheet.skip()
     sheet.add(Put("Curves that the chart draws: choose each by its place in the table above.", "note", 12))
-    first = sheet.next_row
-    check = between(1, len(table), "Curve", "The row's place in the table above.", whole=True)
+    first, check = (
+        sheet.next_row,
+        between(1, len(table), "Curve", "The row's place in the table.", whole=True),
+    )
+    letters = [get_column_letter(2 + number) for number in range(len(cells[0]))]
+    looks = ["result", "cell", *["result power"] * (len(letters) - 2)]
     for pick in range(MOST_CURVES):
-        shown = [register.value("name", block.places[pick]), register.value("plan", block.places[pick])]
-        cells = [
-            Terms((f"INDEX({letters}${table[0]}:{letters}${table[-1]},$A{sheet.next_row})",), [[value]])
-            for letters, value in zip(
-                map(get_column_letter, range(2, 5 + STEPS)), [*shown, *power.cells[pick]], strict=True
-            )
+        lives = [
+            Live(f"=INDEX({own}${table[0]}:{own}${table[-1]},$A{sheet.next_row})", value, look)
+            for own, value, look in zip(letters, cells[pick], looks, strict=True)
         ]
-        looks = ["result", "cell", *["result power"] * (STEPS + 1)]
-        lives = [cell.lives(look)[0] for cell, look in zip(cells, looks, strict=True)]
         sheet.add(Put(pick + 1, "input count", check=check), *lives)
     return range(first, sheet.next_row)
-
-
-def _add_chart(sheet: Sheet, name: str, style: str, head: int, drawn: range, end: float) -> None:
-    x = sheet.ref(f"{_LEFT}{head}", f"{_RIGHT}{head}")
-    curves = [Curve(sheet.ref(f"B{row}"), x, sheet.ref(f"{_LEFT}{row}", f"{_RIGHT}{row}")) for row in drawn]
-    axis = rate_axis(f"true {name}", end, percent=style == "rate")
-    sheet.skip()
-    chart = curve_chart(
-        "Power by the true value", axis, Axis("power: chance of rejecting", 1.0), curves, 42.5, 13.0
-    )
-    sheet.chart(
-        chart,
-        f"Power of {len(curves)} plans from 0 to 100 %, by the true {name}, from 0 to {_shown(end, style)}.",
-    )

@@ -4,11 +4,14 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
+from openpyxl.utils import get_column_letter
+
 from steelyard.core import VERSION
 from steelyard.workbooks.house import Book, Live, Put, Sheet, choice
 from steelyard.workbooks.sheets import paper, rows
-from steelyard.workbooks.sheets.curves import add_curves, table_rates
+from steelyard.workbooks.sheets.curves import add_curves
 from steelyard.workbooks.sheets.register import Register
+from steelyard.workbooks.sheets.scales import table_values
 from steelyard.workbooks.terms import Terms, across, ask, literal
 
 LAST = "I"
@@ -79,6 +82,7 @@ class _Page:
         self.host = sheet.book.host
         self.plan = register.term("plan", place)
         self.size = register.term("actual", place)
+        self.first_rate = ""
         self.explained = ask(self.host, "EXPLAIN", self.plan)
         self.style = rows.rate_style(self.planned)
         self.parameter = self.planned.kind.parameters[0]
@@ -107,7 +111,7 @@ class _Page:
     def claim_and_risks(self) -> None:
         """Write the hypotheses and the risks of both errors."""
         self._section("2  Claim and risks")
-        name = self.parameter.name.capitalize()
+        name = self.parameter.name[0].upper() + self.parameter.name[1:]
         self._line("Claim (null hypothesis)", self._sentence(2))
         alternatives = {side: f"{name} {text}." for side, text in _ALTERNATIVE.items()}
         self._line("Alternative", self._by_word("side", alternatives))
@@ -150,24 +154,25 @@ class _Page:
     def performance(self) -> None:
         """Write the table and the curve."""
         self._section("4  What the plan does")
-        sheet, rates = self.sheet, table_rates(self.register, self.place, VALUES)
-        spread = across(f"B{sheet.next_row}:{LAST}{sheet.next_row}", rates)
+        sheet, rates = self.sheet, table_values(self.planned, VALUES)
+        self.first_rate = f"B{sheet.next_row}"
+        spread = across(f"{self.first_rate}:{get_column_letter(1 + len(rates))}{sheet.next_row}", rates)
         sheet.add(
             Put(f"True {self.parameter.name}", "label"), *(Put(rate, f"input {self.style}") for rate in rates)
         )
         for label, name in (("Power: claim rejected", "POWER"), ("Chance to pass", "ACCEPTANCE")):
             sheet.add(Put(label, "label"), *ask(self.host, name, self.plan, spread).arrays("result power"))
         sheet.add(None, *(Put(text, "heading", 2) for text in ("95 %", "50 %", "10 %", "5 %")))
-        last = self.register.passing("p05", self.place)
+        passing = self.register.passing("p05", self.place)
         accepted = [
             self._link(key, f"result {rows.result_style(self.planned)}", 2) for key in ("p95", "p50", "p10")
         ]
         sheet.add(
             Put("Passes with this chance", "label"),
             *accepted,
-            _wide(last, f"result {rows.result_style(self.planned)}", 2),
+            _wide(passing, f"result {rows.result_style(self.planned)}", 2),
         )
-        add_curves(sheet, self.register, self.place, rates[-1])
+        add_curves(sheet, self.register, self.place)
 
     def native_check(self) -> None:
         """Write the same number from the spreadsheet's own functions."""
@@ -178,8 +183,10 @@ class _Page:
         self.sheet.add(
             Put("At the rate to catch", "label"), *(self._link(key, look, 2) for key, look in looks)
         )
-        formula = ask(self.host, "NATIVE", self.plan, literal("rate"))
-        self._line("Formula, by the rate", _wide(formula, "text", VALUES))
+        native = ask(self.host, "NATIVE", self.plan, literal(self.first_rate))
+        formula = f'=SUBSTITUTE({native.texts[0]},",",", ")'  # with blanks, at which the text can break
+        shown = str(native.cells[0][0]).replace(",", ", ")
+        self._line(f"Formula for {self.first_rate}", Live(formula, shown, "text", VALUES))
 
     def assumptions(self) -> None:
         """Write what must hold, each with a box to tick and room for the evidence."""

@@ -43,7 +43,7 @@ HEADS = (
     Head("catch", "Catch", 9),
     Head("second", "and catch", 9),
     Head("wanted", "Power wanted", 8.5),
-    Head("extra", "Lot", 8),
+    Head("extra", "Lot, or sigma", 8),
     Head("fixed", "Size, if fixed", 8.5),
     Head("verdict", "Verdict on rejecting", 10),
     Head("split", "Split", 8.5),
@@ -108,6 +108,10 @@ class Register:
     def value(self, key: str, place: int) -> Any:
         """Return what that cell shows."""
         return self._terms[key].cells[place][0]
+
+    def column(self, key: str) -> Terms:
+        """Return the cells of all characteristics, likewise."""
+        return column(f"${PLACE[key]}$", FIRST, self.values(key), TITLE)
 
     def values(self, key: str) -> list[Any]:
         """Return what a column shows."""
@@ -183,7 +187,8 @@ class Register:
         self._live("size", ask(host, "FIELD", plans, words), "result number")
         for key, end, missing in (("low", "lower", "above"), ("high", "upper", "below")):
             critical = _critical(ask(host, "CRITICAL", plans, literal(end)), self._terms["side"], missing)
-            self._live(key, critical, "index count")
+            whole = [not isinstance(value, float) or value.is_integer() for value in critical.values()]
+            self._live(key, critical, ["index count" if count else "index value" for count in whole])
 
     def _write_risks(self) -> None:
         host, plans = self.book.host, self._terms["plan"]
@@ -230,18 +235,25 @@ class Register:
         return Terms(tuple(texts), cells)
 
     def _write_checks(self) -> None:
+        plans, rates = [one.plan for one in self.planned], [one.own_catches for one in self.planned]
         texts, cells = [], []
-        for place, planned in enumerate(self.planned):
-            at = self._at(place)
-            keys = ("catch_own", "second_own")[: max(1, len(planned.catches))]
-            formulas = [rows.native_formula(planned, at, at[key]) for key in keys]
-            least = formulas[0] if len(formulas) == 1 else f"MIN({','.join(formulas)})"
-            texts.append(f'IF({at["catch_own"]}="","",{least})')
-            rates = [self.value(key, place) for key in keys if planned.catches]
-            cells.append([min(native.power_values(planned.plan, rates), default=None)])
+        for place, values in enumerate(native.power_values(plans, rates)):
+            texts.append(self._least_natively(place))
+            known = self.planned[place].native
+            cells.append([min(values, default=None) if known else NONE])
         natively = self._live("native", Terms(tuple(texts), cells), "native power")
         self._live("agrees", agreement(self._terms["power"], natively), "verdict")
         self._live("check", ask(self.book.host, "CHECK", self._terms["plan"]), "cell")
+
+    def _least_natively(self, place: int) -> str:
+        """Return the native formula at the rate to catch; with two of them, of the lesser power."""
+        planned, at = self.planned[place], self._at(place)
+        keys = ("catch_own", "second_own")[: max(1, len(planned.catches))]
+        formulas = [rows.native_formula(planned, at, at[key]) for key in keys]
+        if not formulas[0]:
+            return literal(NONE).texts[0]
+        least = formulas[0] if len(formulas) == 1 else f"MIN({','.join(formulas)})"
+        return f'IF({at["catch_own"]}="","",{least})'
 
     def _lay_out(self) -> Sheet:
         sheet = self.book.sheet(TITLE, {PLACE[head.key]: head.width for head in HEADS})
@@ -276,7 +288,7 @@ def _unit(planned: Planned) -> str:
 
 
 def _extra_style(planned: Planned) -> str:
-    return "input count" if planned.kind.grammar.extra else "result"
+    return "input number" if planned.kind.grammar.extra else "result"
 
 
 def _critical(terms: Terms, sides: Terms, missing: str) -> Terms:
@@ -309,7 +321,7 @@ def agreement(ours: Terms, theirs: Terms, allowed: float = 1e-9) -> Terms:
     """Return whether two numbers agree to a relative difference, in each row."""
     bound = f"{allowed!r}".upper()
     texts = tuple(
-        f'IF(ISNUMBER({a}),IF(ABS({a}-{b})<={bound}*MAX(ABS({a}),1E-290),"{AGREES}","{DIFFERS}"),"")'
+        f'IF(OR(ISTEXT({a}),ISTEXT({b})),"",IF(ABS({a}-{b})<={bound}*MAX(ABS({a}),1E-290),"{AGREES}","{DIFFERS}"))'
         for a, b in zip(ours.texts, theirs.texts, strict=True)
     )
     return Terms(
@@ -318,6 +330,6 @@ def agreement(ours: Terms, theirs: Terms, allowed: float = 1e-9) -> Terms:
 
 
 def _agree(ours: Any, theirs: Any, allowed: float) -> str | None:
-    if not isinstance(ours, float):
+    if not isinstance(ours, float) or not isinstance(theirs, float):
         return None
     return AGREES if abs(ours - theirs) <= allowed * max(abs(ours), 1e-290) else DIFFERS

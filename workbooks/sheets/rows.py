@@ -43,7 +43,8 @@ def plan_formula(planned: Planned, at: Cells, host: str) -> str:
         catch = f'SUBSTITUTE({catch}&" and "&{at["second"]},",",".")'
     smallest = [at["kind"], at["claim"], at["alpha"], catch, at["wanted"], at["side"], '"first"', at["extra"]]
     smallest += [at["split"], at["verdict"]]
-    given = {**at, "n": at["fixed"], "units": at["fixed"], "lot": at["extra"], "sigma": at["extra"]}
+    given = {**at, **dict.fromkeys(("n", "units"), at["fixed"])}
+    given |= dict.fromkeys(("lot", "sigma", "planning_sigma"), at["extra"])
     entry = CATALOGUE[f"SY_{planned.plan.kind.upper()}"]
     of_size = [given[argument.name] for argument in entry.arguments]
     return f'IF({at["fixed"]}="",{_call("SY_SMALLEST", smallest, host)},{_call(entry.name, of_size, host)})'
@@ -69,7 +70,9 @@ def own_catch_formula(planned: Planned, number: int, cell: str, at: Cells) -> st
 
 
 def native_formula(planned: Planned, at: Cells, rate: str) -> str:
-    """Return the power at the rate in a cell, by the spreadsheet's own functions."""
+    """Return the power at the rate in a cell by the spreadsheet's own functions; empty if there is none."""
+    if not native.follows(planned.plan):
+        return planned.kind.native(planned.plan, rate) or ""
     grammar = planned.kind.grammar
     design = {grammar.extent: at["size"]} | ({grammar.extra: at["extra"]} if grammar.extra else {})
     return native.power_formula(grammar.kind, at["low"], at["high"], rate, **design)
