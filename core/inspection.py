@@ -150,19 +150,20 @@ class InspectedLaw(CountLaw):
         power = self.law.algebra(design, rule)
         if power is None:
             return None
-        none, slope = self._line(design)
+        line = " + ".join(self._line(design))
         power = re.sub(r"\b" + self.symbol + r"\b", "f", power)
-        text = f"{power}, with f = {none}{slope} {self.symbol}"
+        text = f"{power}, with f = {line} {self.symbol}"
         return text if len(text) <= LONGEST else None
 
     def native(self, design: Any, rule: Reject, cell: str) -> str | None:
         """Return the formula of a perfect inspection, at the rate that is found."""
-        none, slope = self._line(design)
-        return self.law.native(design, rule, f"{none}{slope}*{operand(cell)}")
+        line = "+".join(self._line(design))
+        return self.law.native(design, rule, f"{line}*{operand(cell)}")
 
-    def _line(self, design: Any) -> tuple[str, str]:
-        none, slope = line_of(self.found, design.misses, design.false_alarms)
-        return f"{write_number(float(none))}+" if none else "", write_number(float(slope))
+    def _line(self, design: Any) -> list[str]:
+        """Return what is found at the rate 0, if anything, and the slope."""
+        parts = line_of(self.found, design.misses, design.false_alarms)
+        return [write_number(float(part)) for part in parts if part]
 
     def limit(self, row: Mapping[str, Any], x: float, end: str, miss: float, split: str) -> float:
         """Return the limit of what is found, traced back to the true rate and clipped to its range."""

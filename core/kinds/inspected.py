@@ -159,8 +159,8 @@ def _exact(lot: int, defectives: int, n: int, misses: Fraction, false_alarms: Fr
     return WeightedCounts(digits_of(total * defective**least, n + 1, width))
 
 
-class _Remarks:
-    """What a report must say of inspection that errs."""
+class _Erring:
+    """What all kinds with imperfect inspection have in common."""
 
     def remarks(self, plan: Plan) -> list[str]:
         """Return what the same counts would mean if inspection were perfect."""
@@ -170,21 +170,21 @@ class _Remarks:
         return [f"With perfect inspection a true claim would be rejected with probability {perfect} at most."]
 
 
-class InspectedBinomialKind(_Remarks, BinomialKind):
+class InspectedBinomialKind(_Erring, BinomialKind):
     """Single plans for the rate of defectives, with imperfect inspection."""
 
     law = InspectedLaw(BinomialLaw(), found_per_item, "p")
     grammar = inspected_grammar(BinomialKind.grammar, InspectedItems, _OF_ITEMS)
 
 
-class InspectedPoissonKind(_Remarks, PoissonKind):
+class InspectedPoissonKind(_Erring, PoissonKind):
     """Single plans for defects per unit, with imperfect inspection."""
 
     law = InspectedLaw(PoissonLaw(), found_per_unit, "rate")
     grammar = inspected_grammar(PoissonKind.grammar, InspectedExtent, _OF_DEFECTS)
 
 
-class InspectedHypergeometricKind(_Remarks, HypergeometricKind):
+class InspectedHypergeometricKind(_Erring, HypergeometricKind):
     """Single plans for a finite lot, with imperfect inspection."""
 
     law = InspectedLotLaw()

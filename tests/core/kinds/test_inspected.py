@@ -22,6 +22,7 @@ from steelyard.core.kind import kind_of
 from steelyard.core.kinds.inspected import InspectedLotSample
 from steelyard.core.law import CountLaw
 from steelyard.core.numbers import typed
+from steelyard.core.outgoing import outgoing
 from steelyard.core.plan import Claim, Plan
 from steelyard.core.questions import not_rejected, power, size
 from steelyard.core.rates import rate_for
@@ -114,7 +115,7 @@ def test_plans_without_this_form_refuse_it() -> None:
         read_plan(ITEMS), "misses", misses=0.3
     )  # other errors take the place of the first ones
     assert write_plan(plan) == ITEMS.replace("misses 0.1 | false-alarms 0.01", "misses 0.3")
-    with pytest.raises(NoAnswer, match="a plan of kind inspected binomial has no form with the field guesses"):
+    with pytest.raises(NoAnswer, match="kind inspected binomial has no form with the field guesses"):
         with_fields(plan, "guesses")
     with pytest.raises(InvalidValue, match="alpha must be written in the plan"):
         keeping_alpha(read_plan("binomial | n 50 | claim p<=0.02 | reject x>=4"))
@@ -332,3 +333,9 @@ def test_native_formulas_and_algebra_go_by_what_is_found() -> None:
     assert kind_of(plan).algebra(plan) == "1 - exp(-120 f) (1 + 120 f + (120 f)^2/2), with f = 0.8 rate"
     lot = read_plan(LOT)
     assert kind_of(lot).native(lot, "B2") is None is kind_of(lot).algebra(lot)
+
+
+def test_outgoing_quality_is_refused_because_missed_defectives_stay() -> None:
+    for text, rate, lot in ((ITEMS, 0.02, 800), (DEFECTS, 0.05, 800), (LOT, 16, None)):
+        with pytest.raises(NoAnswer, match="outgoing quality is known for inspection without errors"):
+            outgoing(read_plan(text), rate, lot)
