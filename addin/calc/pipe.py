@@ -2,19 +2,22 @@
 
 This module runs inside LibreOffice's own Python: standard library only, syntax of Python 3.8.
 
-Calc stands still while a function runs, so every wait has an end. Writing to a stopped process blocks
-just as reading does, and ``select`` does not work on the pipes of Windows: one helper thread does both,
-and the caller waits for it on a queue. A worker that died is started again and asked once more (functions
-are pure); one that gives no answer in time is killed. After such a failure the other cells of the same
-recalculation are answered at once, for 10,000 cells with a time-out each would take days.
+Calc stands still while a function runs, so every wait has an end. Writing to a stopped process blocks just
+as reading does, and ``select`` does not work on the pipes of Windows: so the caller simply writes and reads,
+and a watching thread kills a worker that is late, which ends both. That costs a call nothing; handing it
+to a helper thread and back would double its time.
+
+A worker that died is started again and asked once more (functions are pure); one that was late is not.
+After such a failure the other cells of the same recalculation are answered at once, for 10,000 cells with
+a time-out each would take days.
 """
 
 from __future__ import annotations
 
 import contextlib
 import json
+import math
 import os
-import queue
 import signal
 import subprocess
 import threading
@@ -51,6 +54,10 @@ class DiedError(Exception):
     """The worker ended before it answered."""
 
 
+class LateError(Exception):
+    """The worker was killed because it did not answer in time."""
+
+
 def _refuse(text: str) -> NoReturn:
     """Refuse ``NaN`` and ``Infinity``: Python's reader would take them, a cell must not."""
     raise ValueError(text)
@@ -61,9 +68,17 @@ _encode = json.JSONEncoder(allow_nan=False, separators=(",", ":")).encode
 
 
 class Process:
-    """A running worker with the helper thread that talks to it."""
+    """A running worker, and the thread that watches how long it takes.
 
-    def __init__(self, interpreter: str) -> None:
+    Parameters
+    ----------
+    interpreter : str
+        The Python that Steelyard is installed for.
+    tick : float
+        Seconds between two looks of the watching thread.
+    """
+
+    def __init__(self, interpreter: str, tick: float) -> None:
         environment = {name: value for name, value in os.environ.items() if name not in _FOREIGN}
         environment.update(dict.fromkeys(_THREADS, "1"))
         self._process = subprocess.Popen(
@@ -76,51 +91,49 @@ class Process:
             creationflags=getattr(subprocess, "CREATE_NO_WINDOW", 0),
             start_new_session=os.name == "posix",
         )
-        self.pid = self._process.pid
-        self._requests: queue.SimpleQueue[bytes | None] = queue.SimpleQueue()
-        self._answers: queue.SimpleQueue[bytes] = queue.SimpleQueue()
-        threading.Thread(target=self._talk, daemon=True).start()
+        self._deadline = math.inf
+        self._late = False
+        self._ended = threading.Event()
+        threading.Thread(target=self._watch, args=(tick,), daemon=True).start()
 
-    def _talk(self) -> None:
-        """Write a line, read a line, until the worker or its owner gives up; runs in the helper thread."""
+    def ask(self, request: bytes, deadline: float) -> bytes:
+        """Send a request, if it is not empty, and return the next line; raise `DiedError` or `LateError`."""
         stdin, stdout = self._process.stdin, self._process.stdout
         assert stdin is not None and stdout is not None
+        line = b""
+        self._late = False
+        self._deadline = deadline
         with contextlib.suppress(OSError):
+            stdin.write(request)
+            stdin.flush()
             line = stdout.readline(_LONGEST_LINE)
-            while line:
-                self._answers.put(line)
-                request = self._requests.get()
-                if request is None:
-                    break
-                stdin.write(request)
-                stdin.flush()
-                line = stdout.readline(_LONGEST_LINE)
-        self._answers.put(b"")
-        for stream in (stdin, stdout):
-            with contextlib.suppress(OSError):
-                stream.close()
-        self._process.wait()
-
-    def receive(self, deadline: float) -> bytes:
-        """Wait for the next line until the deadline; raise `DiedError` or ``queue.Empty``."""
-        line = self._answers.get(timeout=max(0.0, deadline - time.monotonic()))
+        self._deadline = math.inf
         if not line:
-            raise DiedError
+            raise LateError if self._late else DiedError
         return line
 
-    def ask(self, line: bytes, deadline: float) -> bytes:
-        """Send one line and wait for its answer."""
-        self._requests.put(line)
-        return self.receive(deadline)
+    def end(self) -> None:
+        """Kill the process and forget it."""
+        self._kill()
+        self._ended.set()
 
-    def kill(self) -> None:
-        """End the process at once, with any process it started itself."""
+    def _watch(self, tick: float) -> None:
+        while not self._ended.wait(tick):
+            if time.monotonic() > self._deadline:
+                self._late = True
+                self._kill()
+        # Only now may its number be given to another process: nobody kills it any more.
+        self._process.wait()
+        for stream in (self._process.stdin, self._process.stdout):
+            with contextlib.suppress(OSError):
+                stream.close()  # type: ignore[union-attr]
+
+    def _kill(self) -> None:
         with contextlib.suppress(OSError):
             if os.name == "posix":
-                os.killpg(self.pid, signal.SIGKILL)
+                os.killpg(self._process.pid, signal.SIGKILL)  # with any process it started itself
             else:
                 self._process.kill()
-        self._requests.put(None)
 
 
 class Worker:
@@ -190,7 +203,7 @@ class Worker:
                 return self._result(self._running(deadline).ask(request, deadline))
         except DiedError:
             message = "the helper process ended twice while it computed this cell (out of memory?)"
-        except queue.Empty:
+        except LateError:
             message = f"no answer within {self._timeout:g} s, so the helper process was ended"
         message += f". {_AGAIN}"
         raise NoAnswerError(message)
@@ -199,7 +212,7 @@ class Worker:
         """Return the running worker; start one if there is none."""
         if self._process is None:
             try:
-                self._process = Process(self._interpreter)
+                self._process = Process(self._interpreter, self._timeout / 20)
             except (OSError, ValueError):
                 message = f"Python was not found at {_end_of(self._interpreter)}. {_RECONNECT}"
                 raise NoAnswerError(message) from None
@@ -209,7 +222,7 @@ class Worker:
     def _greet(self, process: Process, deadline: float) -> None:
         """Read the worker's first line and compare versions."""
         try:
-            line = process.receive(deadline)
+            line = process.ask(b"", deadline)
         except DiedError:
             message = (
                 f"{_end_of(self._interpreter)} could not start Steelyard. To see why, run: steelyard doctor."
@@ -247,7 +260,7 @@ class Worker:
 
     def _stop(self) -> None:
         if self._process is not None:
-            self._process.kill()
+            self._process.end()
             self._process = None
 
 

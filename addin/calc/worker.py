@@ -2,18 +2,18 @@
 
 A request is ``[number, name, arguments]``, its answer ``[number, result]``, in ASCII; the first line of all
 says which version speaks. Arguments are data: a name is looked up in the catalogue, nothing is evaluated.
-The process listens nowhere; it reads from the pipe its parent holds and ends when that pipe closes, at once
-even in the middle of a computation.
+The process listens nowhere; it reads from the pipe its parent holds and ends when that pipe closes: at once,
+even in the middle of a computation (on Windows after it).
 """
 
 from __future__ import annotations
 
 import json
 import os
-import queue
+import select
 import sys
 import threading
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable
 from typing import Any, BinaryIO
 
 from steelyard.addin.calc.pipe import MAX_CELLS, PROTOCOL
@@ -35,11 +35,12 @@ def main(output: int) -> None:
     from steelyard.addin import call
     from steelyard.core import VERSION
 
+    threading.Thread(target=leave_with_parent, daemon=True).start()
     with os.fdopen(output, "wb") as pipe:
-        serve(_lines(sys.stdin.buffer), pipe, call, VERSION)
+        serve(sys.stdin.buffer, pipe, call, VERSION)
 
 
-def serve(requests: Iterator[bytes], pipe: BinaryIO, answer: Answer, version: str) -> None:
+def serve(requests: Iterable[bytes], pipe: BinaryIO, answer: Answer, version: str) -> None:
     """Greet, then answer every request in turn."""
     _send(pipe, _encode({"steelyard": version, "protocol": PROTOCOL}))
     for line in requests:
@@ -65,15 +66,10 @@ def _send(pipe: BinaryIO, text: str) -> None:
     pipe.flush()
 
 
-def _lines(stream: BinaryIO) -> Iterator[bytes]:
-    """Yield the requests; a reader of its own notices even during a computation that the parent is gone."""
-    waiting: queue.SimpleQueue[bytes] = queue.SimpleQueue()
-
-    def read() -> None:
-        for line in stream:
-            waiting.put(line)
+def leave_with_parent() -> None:
+    """Wait until the other end of standard input is closed, and end the process whatever it does."""
+    if hasattr(select, "poll"):
+        hangup = select.poll()
+        hangup.register(sys.stdin.fileno(), 0)  # no event asked for: a hang-up is always told
+        hangup.poll()
         os._exit(0)
-
-    threading.Thread(target=read, daemon=True).start()
-    while True:
-        yield waiting.get()

@@ -37,7 +37,7 @@ if mode == "good":
 if mode in ("fragile", "scanty"):
     import resource
     from steelyard.addin import call
-    from steelyard.addin.calc.worker import _lines, serve
+    from steelyard.addin.calc.worker import serve
     answered = []
     def fragile(name, args):
         answered.append(name)
@@ -47,7 +47,7 @@ if mode in ("fragile", "scanty"):
     def scanty(name, args):
         resource.setrlimit(resource.RLIMIT_AS, (1 << 30, 1 << 30))
         return bytearray(1 << 31)
-    serve(_lines(sys.stdin.buffer), sys.stdout.buffer, {"fragile": fragile, "scanty": scanty}[mode], VERSION)
+    serve(sys.stdin.buffer, sys.stdout.buffer, {"fragile": fragile, "scanty": scanty}[mode], VERSION)
 say({"steelyard": "9.9.9", "protocol": 1} if mode == "other" else HELLO)
 sys.stdin.readline()
 if mode == "rubbish":

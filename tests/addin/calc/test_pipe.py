@@ -52,7 +52,7 @@ def test_a_worker_that_died_is_started_again_and_asked_once_more(stand_in: Maker
     program = stand_in(ECHO)
     calls = worker(program)
     calls.call("power", [[1]])
-    calls._process._process.kill()
+    calls._process._kill()
     assert calls.call("power", [[2]]) == [[2]]
     assert len(program.starts) == 2
 
@@ -156,18 +156,11 @@ def test_the_environment_of_libreoffice_does_not_reach_the_worker(
     assert worker(program).call("power", [1]) == [[None, None, None, "1"]]
 
 
-def test_the_worker_ends_with_its_parent(stand_in: Maker) -> None:
-    process = pipe.Process(stand_in(ECHO).path)
-    process.receive(time.monotonic() + 10)
-    process._requests.put(None)  # what closing the pipe does
-    assert process._process.wait(10) == 0
-
-
-def test_a_killed_worker_is_gone(stand_in: Maker) -> None:
-    process = pipe.Process(stand_in(STOPS).path)
-    process.receive(time.monotonic() + 10)
-    process.kill()
-    assert process._process.wait(10) == -signal.SIGKILL
+def test_a_late_worker_is_gone(stand_in: Maker) -> None:
+    calls = worker(stand_in(STOPS), timeout=1)
+    process = calls._running(time.monotonic() + 10)._process
+    assert calls.call("power", [1]).startswith("SY: no answer within 1 s")
+    assert process.wait(10) == -signal.SIGKILL
 
 
 FOLDER = Path(inspect.getfile(calc)).parent
