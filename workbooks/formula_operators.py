@@ -66,7 +66,7 @@ def _nearly(a: float, b: float) -> bool:
 
 def _plus(a: Any, b: Any) -> float:
     left, right = number(a), number(b)
-    return 0.0 if _nearly(left, -right) else _finite(left + right)
+    return 0.0 if _nearly(left, -right) else finite(left + right)
 
 
 def _minus(a: Any, b: Any) -> float:
@@ -76,20 +76,21 @@ def _minus(a: Any, b: Any) -> float:
 def _divided(a: Any, b: Any) -> float:
     if not number(b):
         raise Raised("#DIV/0!")
-    return _finite(number(a) / number(b))
+    return finite(number(a) / number(b))
 
 
 def _power(a: Any, b: Any) -> float:
     base, exponent = number(a), number(b)
-    if base < 0 or base == exponent == 0:
+    if (base < 0 and exponent % 1) or base == exponent == 0:
         give_up("takes a power that not every program answers alike")
     try:
-        return _finite(base**exponent)
+        return finite(base**exponent)
     except (OverflowError, ZeroDivisionError):
         raise Raised("#NUM!") from None
 
 
-def _finite(value: float) -> float:
+def finite(value: float) -> float:
+    """Return a number, unless it is beyond all floats."""
     if not math.isfinite(value):
         raise Raised("#NUM!")
     return value
@@ -129,7 +130,7 @@ OPERATIONS: dict[tuple[str, int], Callable[..., Value]] = {
     ("%", 1): lambda a: number(a) / 100,  # as both programs compute it, whatever the digits typed
     ("+", 2): _plus,
     ("-", 2): _minus,
-    ("*", 2): lambda a, b: _finite(number(a) * number(b)),
+    ("*", 2): lambda a, b: finite(number(a) * number(b)),
     ("/", 2): _divided,
     ("^", 2): _power,
     ("&", 2): lambda a, b: text(a) + text(b),

@@ -14,7 +14,16 @@ from typing import Any, Protocol
 
 from steelyard.addin import CATALOGUE
 from steelyard.addin.cells import ERRORS
-from steelyard.workbooks.formula_operators import OPERATIONS, Raised, general, give_up, number, text, truth
+from steelyard.workbooks.formula_operators import (
+    OPERATIONS,
+    Raised,
+    finite,
+    general,
+    give_up,
+    number,
+    text,
+    truth,
+)
 from steelyard.workbooks.formula_tree import Area, Call, Literal, Name, Operation, Rows, Tree
 from steelyard.workbooks.pieces import Fault, Value
 
@@ -193,7 +202,7 @@ def _numbers(tree: Tree | None, cells: Cells) -> Iterator[float]:
 def _rounded(rounding: str) -> Callable[[Any, Any], float]:
     def to_digits(value: Any, digits: Any) -> float:
         step = Decimal(1).scaleb(-int(number(digits)))
-        return float(Decimal(general(number(value))).quantize(step, rounding, _DIGITS))
+        return finite(float(Decimal(general(number(value))).quantize(step, rounding, _DIGITS)))
 
     return to_digits
 

@@ -9,6 +9,7 @@ formulas are all the spreadsheet's own (a share copy, a record) is saved with ``
 from __future__ import annotations
 
 import os
+import shutil
 import zipfile
 from collections.abc import Callable, Iterator, Mapping, Sequence
 from contextlib import contextmanager
@@ -136,6 +137,8 @@ def replacing(path: Path) -> Iterator[IO[bytes]]:
     try:
         with temporary.open("wb") as file:
             yield file
+        if path.exists():
+            shutil.copymode(path, temporary)  # a book that others may not read stays so
         temporary.replace(path)
     except OSError as error:
         hint = " (is it open in a spreadsheet program?)" if isinstance(error, PermissionError) else ""
