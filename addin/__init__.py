@@ -6,7 +6,18 @@ spreadsheet hands over and returns a number, a text, or rows of these; refusals 
 
 from __future__ import annotations
 
-from steelyard.addin import ask, clustered, demonstration, explain, inspected, make, measured, together
+from steelyard.addin import (
+    ask,
+    clustered,
+    demonstration,
+    explain,
+    inspected,
+    lots,
+    make,
+    measured,
+    staged,
+    together,
+)
 from steelyard.addin.catalogue import CATALOGUE, Cells
 from steelyard.addin.cells import refusal
 
@@ -29,4 +40,4 @@ def call(name: str, arguments: list[Cells]) -> Cells:
     return entry.function(*arguments)
 
 
-del ask, clustered, demonstration, explain, inspected, make, measured, together
+del ask, clustered, demonstration, explain, inspected, lots, make, measured, staged, together

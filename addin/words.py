@@ -10,8 +10,10 @@ from typing import Annotated, Any
 from steelyard.addin.catalogue import Word
 from steelyard.addin.plans import plan_of
 from steelyard.core.errors import InvalidValue
-from steelyard.core.numbers import read_choice, read_number, read_probability, read_whole
+from steelyard.core.numbers import read_choice, read_number, read_probability, read_whole, write_number
+from steelyard.core.outgoing import FOUND
 from steelyard.core.plan import SIDES, SPLITS, VERDICTS, Plan
+from steelyard.core.stages import STOPS
 from steelyard.core.together import RELATIONS
 
 ENDS = ("lower", "upper")
@@ -54,6 +56,20 @@ def plan_cells(value: Any, name: str) -> tuple[Plan | None, ...]:
     if not any(plans):
         raise InvalidValue(name, "hold at least one plan", None)
     return plans
+
+
+def stage_cells(value: Any, name: str) -> Any:
+    """Return the cells of a whole range as a list of stages; a blank one before others means none."""
+    cells = [as_typed(cell, name) for cell in cells_in(value)]
+    while cells and cells[-1] is None:
+        cells.pop()
+    if not cells:
+        raise InvalidValue(name, "hold at least one number", None)
+    if len(cells) == 1:
+        return cells[0]
+    return " then ".join(
+        "none" if cell is None else cell if isinstance(cell, str) else write_number(cell) for cell in cells
+    )
 
 
 def rate_cells(value: Any, name: str) -> tuple[Any, ...]:
@@ -190,3 +206,39 @@ Correlation = Annotated[
     Word("Intraclass correlation of the items in a cluster, from 0 (independent) to below 1.", number),
 ]
 Cluster = Annotated[float, Word("Items (or units) in a cluster.", number)]
+StageSizes = Annotated[
+    Any, Word("How much each stage inspects: 50 then 50, or a range.", stage_cells, whole=True)
+]
+StageAccepts = Annotated[
+    Any,
+    Word(
+        "Acceptance number after each stage, for all found so far: 1 then 4; none where it can't pass yet.",
+        stage_cells,
+        whole=True,
+    ),
+]
+StageRejects = Annotated[
+    Any,
+    Word(
+        "Rejection number after each stage, for all found so far: 4 then 5; none where it can't fail yet.",
+        stage_cells,
+        whole=True,
+    ),
+]
+Stop = Annotated[
+    str,
+    Word(
+        "When inspection stops: stage-end, on-reject (as soon as the lot must fail) or on-decision.",
+        one_of(STOPS),
+    ),
+]
+StageRatio = Annotated[
+    float, Word("The second stage as a multiple of the first: 1 or 2. Blank: the better one.", number)
+]
+RectifiedLot = Annotated[
+    Any, Word("Items, or units, in the lot. A plan for a finite lot knows its own.", as_typed)
+]
+Found = Annotated[
+    str,
+    Word("What happens to defectives that are found: replaced by good items, or removed.", one_of(FOUND)),
+]

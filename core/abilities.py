@@ -2,7 +2,10 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any, Protocol, runtime_checkable
+
+import numpy as np
 
 from steelyard.core.endings import Endings
 from steelyard.core.errors import NoAnswer
@@ -115,11 +118,23 @@ def averaging(kind: Kind) -> Averaging:
     raise _lacking(kind, "average sample number")
 
 
-def inspecting(kind: Kind) -> Inspecting:
-    """Return the kind as one whose ways to end are known; raise `NoAnswer` if they are not."""
+def average_or_nothing(kind: Kind) -> Callable[..., Floats]:
+    """Return the vectorised average sample of a kind; NaN everywhere where it has none."""
+    if isinstance(kind, Averaging):
+        return kind.average_amount
+
+    def nothing(columns: Columns, *rates: Floats) -> Floats:
+        shapes = [array.shape for array in (*columns.values(), *rates)]
+        return np.full(np.broadcast_shapes(*shapes), np.nan)
+
+    return nothing
+
+
+def inspecting(kind: Kind, what: str) -> Inspecting:
+    """Return the kind as one whose ways to end are known; raise `NoAnswer`, naming `what` it lacks."""
     if isinstance(kind, Inspecting):
         return kind
-    raise _lacking(kind, "way to say how the inspection of a lot ends")
+    raise _lacking(kind, what)
 
 
 def _lacking(kind: Kind, what: str) -> NoAnswer:

@@ -25,7 +25,7 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core.abilities import averaging, inspecting
+from steelyard.core.abilities import Inspecting, averaging, inspecting
 from steelyard.core.endings import Endings
 from steelyard.core.errors import InvalidValue, NoAnswer
 from steelyard.core.kind import kind_of
@@ -33,6 +33,7 @@ from steelyard.core.numbers import read_choice, read_number
 from steelyard.core.parameter import Floats, Parameter
 from steelyard.core.plan import Plan
 
+_WHAT = "average outgoing quality or total inspected"
 FOUND = ("replaced", "removed")
 MOST_IN_LOT = 1e12
 _TOLERANCE = 1e-6  # what other maxima are certified not to exceed the one found by
@@ -70,7 +71,7 @@ def average_sample(plan: Plan, *rates: Any) -> float:
 def endings(plan: Plan, rate: Any) -> Endings:
     """Return the ways in which a plan may end, at one rate."""
     kind = kind_of(plan)
-    return inspecting(kind).endings(plan, _read(plan, rate))
+    return inspecting(kind, "known ways to end").endings(plan, _read(plan, rate))
 
 
 def total_inspected(plan: Plan, rate: Any, lot: Any = None) -> float:
@@ -93,7 +94,7 @@ def total_inspected(plan: Plan, rate: Any, lot: Any = None) -> float:
     return float(rectified.total(_read(plan, rate))[0])
 
 
-def outgoing(plan: Plan, rate: Any, lot: Any = None, found: str = "replaced") -> float:
+def outgoing(plan: Plan, rate: Any, lot: Any = None, defectives: str = "replaced") -> float:
     """Return the average outgoing quality: the share of defectives, or defects per unit.
 
     Parameters
@@ -103,7 +104,7 @@ def outgoing(plan: Plan, rate: Any, lot: Any = None, found: str = "replaced") ->
         The incoming rate.
     lot : float, int or str, optional
         See `total_inspected`.
-    found : {"replaced", "removed"}
+    defectives : {"replaced", "removed"}
         What happens to the defectives that inspection finds.
 
     Examples
@@ -112,11 +113,11 @@ def outgoing(plan: Plan, rate: Any, lot: Any = None, found: str = "replaced") ->
     >>> round(outgoing(read_plan("hypergeometric | lot 200 | n 50 | reject x>=2"), 8), 5)
     0.01316
     """
-    rectified = Rectified.of(plan, lot, found)
+    rectified = Rectified.of(plan, lot, defectives)
     return float(rectified.quality(_read(plan, rate))[0])
 
 
-def outgoing_limit(plan: Plan, lot: Any = None, found: str = "replaced") -> tuple[float, float]:
+def outgoing_limit(plan: Plan, lot: Any = None, defectives: str = "replaced") -> tuple[float, float]:
     """Return the average outgoing quality limit, and the incoming rate at which it is reached.
 
     The limit is the greatest outgoing rate over all incoming rates. The search is global: the higher the
@@ -130,7 +131,7 @@ def outgoing_limit(plan: Plan, lot: Any = None, found: str = "replaced") -> tupl
     >>> round(limit, 6), round(rate, 5)
     (0.037219, 0.05608)
     """
-    rectified = Rectified.of(plan, lot, found)
+    rectified = Rectified.of(plan, lot, defectives)
     return rectified.maximum()
 
 
@@ -143,15 +144,15 @@ class Rectified:
     plan : Plan
     lot : float
         Items, or units, in the lot.
-    found : {"replaced", "removed"}
+    defectives : {"replaced", "removed"}
     """
 
     plan: Plan
     lot: float
-    found: str
+    defectives: str
 
     @classmethod
-    def of(cls, plan: Plan, lot: Any = None, found: str = "replaced") -> Rectified:
+    def of(cls, plan: Plan, lot: Any = None, defectives: str = "replaced") -> Rectified:
         """Return the plan with a lot from what people type.
 
         Raises
@@ -161,25 +162,27 @@ class Rectified:
         NoAnswer
             When the plan errs in what it finds, or does not fail on many defectives.
         """
-        kind, found = kind_of(plan), read_choice(found, "found", FOUND)
-        ways = inspecting(kind).endings(plan, np.zeros(1))
+        kind, defectives = kind_of(plan), read_choice(defectives, "defectives", FOUND)
+        ways = inspecting(kind, _WHAT).endings(plan, np.zeros(1))
         if kind.grammar.base:
             message = f"outgoing quality is known for inspection without errors, not for {kind.grammar.kind}"
             raise NoAnswer(message)
         if kind.rises(plan) != (plan.verdict == "fail") or (plan.claim and plan.claim.side == "either"):
             message = "outgoing quality needs a plan that fails the lot on many defectives, and only then"
             raise NoAnswer(message)
-        if found == "removed" and math.isinf(kind.parameters[0].upper) and not kind.parameters[0].whole:
-            raise InvalidValue("found", "be replaced where defects are counted: they are corrected", found)
-        return cls(plan, _lot(plan, lot, float(ways.amounts[-1])), found)
+        if defectives == "removed" and math.isinf(kind.parameters[0].upper) and not kind.parameters[0].whole:
+            raise InvalidValue(
+                "defectives", "be replaced where defects are counted: they are corrected", defectives
+            )
+        return cls(plan, _lot(plan, lot, float(ways.amounts[-1])), defectives)
 
     def total(self, rate: Floats) -> Floats:
         """Return the average total inspected."""
-        return inspecting(kind_of(self.plan)).endings(self.plan, rate).total(self.lot)
+        return self._kind.endings(self.plan, rate).total(self.lot)
 
     def quality(self, rate: Floats) -> Floats:
         """Return the average outgoing quality."""
-        return self._quality(rate, inspecting(kind_of(self.plan)).left(self.plan, rate, self.lot))
+        return self._quality(rate, self._kind.left(self.plan, rate, self.lot))
 
     def maximum(self) -> tuple[float, float]:
         """Return the highest outgoing quality and the rate where it lies."""
@@ -200,11 +203,15 @@ class Rectified:
         return (best, where) if whole else self._polished(where)
 
     @property
+    def _kind(self) -> Inspecting:
+        return inspecting(kind_of(self.plan), _WHAT)
+
+    @property
     def _parameter(self) -> Parameter:
         return kind_of(self.plan).parameters[0]
 
     def _quality(self, rate: Floats, left: Floats) -> Floats:
-        if self.found == "replaced":
+        if self.defectives == "replaced":
             return left / self.lot
         remaining = self.lot - rate * self._per_rate + left  # the size of a lot that leaves
         return np.divide(left, remaining, out=np.zeros(left.shape), where=remaining > 0)
@@ -216,7 +223,7 @@ class Rectified:
 
     def _kept(self, rate: Floats) -> Floats:
         """Return how many defectives a lot keeps per unit of the rate: the fewer, the higher the rate."""
-        left = inspecting(kind_of(self.plan)).left(self.plan, rate, self.lot)
+        left = self._kind.left(self.plan, rate, self.lot)
         return np.divide(left, rate, out=np.full(rate.shape, self._per_rate), where=rate > 0)
 
     def _grid(self) -> Floats:

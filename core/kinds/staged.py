@@ -11,9 +11,10 @@ from steelyard.core.kind import REQUIRED, Field, register
 from steelyard.core.kinds.binomial import BinomialKind
 from steelyard.core.kinds.hypergeometric import HypergeometricKind
 from steelyard.core.kinds.poisson import PoissonKind
+from steelyard.core.native import binomial_native, lot_native, operand, poisson_native
 from steelyard.core.numbers import read_whole, write_number
 from steelyard.core.parameter import Columns, Floats
-from steelyard.core.plan import Plan
+from steelyard.core.plan import Plan, Reject
 from steelyard.core.staged import StagedKind, stage_fields
 from steelyard.core.stages import LotStages, Stages, UnitStages, read_amounts, read_sizes
 from steelyard.core.walk import Course, Look, LotCourse, along
@@ -28,8 +29,8 @@ class FormulaKind(StagedKind):
     """
 
     @abstractmethod
-    def term(self, count: str, stage: Sequence[float], before: str) -> str:
-        """Return the chance of a count in a stage as algebra; `before` is what the first stage found."""
+    def term(self, plan: Plan, count: str, stage: int) -> str:
+        """Return the chance of a count in the first or second stage (0 or 1); the first has found k."""
 
     @abstractmethod
     def formula(self, plan: Plan, cell: str, counts: Sequence[int]) -> str:
@@ -41,11 +42,12 @@ class FormulaKind(StagedKind):
         if len(sizes) > 2:
             return None
         text, (first, *second) = "1", self.looks(plan)
+        once = self.term(plan, "k", 0)
         if first.accept >= 0:
-            text += f" - sum(k=0..{first.accept}) {self.term('k', sizes[:1], '')}"
+            text += f" - sum({once}, k=0..{first.accept})"
         for last in second:
-            text += f" - sum(k={first.accept + 1}..{first.reject - 1}) {self.term('k', sizes[:1], '')}"
-            text += f" sum(j=0..{last.accept}-k) {self.term('j', sizes, 'k')}"
+            twice = f"sum({self.term(plan, 'j', 1)}, j=0..{last.accept}-k)"
+            text += f" - sum({once} {twice}, k={first.accept + 1}..{first.reject - 1})"
         return text if len(text) <= _LONGEST else None
 
     def native(self, plan: Plan, cell: str) -> str | None:
@@ -63,41 +65,42 @@ class FormulaKind(StagedKind):
 class StagedBinomialKind(FormulaKind):
     """Plans in stages for items from a process."""
 
-    def term(self, count: str, stage: Sequence[float], before: str) -> str:
+    def term(self, plan: Plan, count: str, stage: int) -> str:
         """Return the chance of a count in a stage."""
-        del before
-        n = write_number(stage[-1])
+        n = plan.design.stages[stage]
         return f"C({n},{count}) p^{count} (1-p)^({n}-{count})"
 
     def formula(self, plan: Plan, cell: str, counts: Sequence[int]) -> str:
         """Return upper tails as lower tails of the good items."""
-        (n, *second), looks = plan.design.stages, self.looks(plan)
-        text = f"_xlfn.BINOM.DIST({n - looks[0].reject},{n},1-{cell},TRUE)" if looks[0].reject <= n else "0"
+        (n, *second), looks, rate = plan.design.stages, self.looks(plan), operand(cell)
+        text = binomial_native(n, Reject(None, looks[0].reject), cell) if looks[0].reject <= n else "0"
         if counts:
             good = array([second[0] - looks[1].reject + k for k in counts])
-            text += f"+SUMPRODUCT(_xlfn.BINOM.DIST({array(counts)},{n},{cell},FALSE),"
-            text += f"_xlfn.BINOM.DIST({good},{second[0]},1-{cell},TRUE))"
+            text += f"+SUMPRODUCT(_xlfn.BINOM.DIST({array(counts)},{n},{rate},FALSE),"
+            text += f"_xlfn.BINOM.DIST({good},{second[0]},1-{rate},TRUE))"
         return text
 
 
 class StagedPoissonKind(FormulaKind):
     """Plans in stages for defects per unit."""
 
-    def term(self, count: str, stage: Sequence[float], before: str) -> str:
+    def term(self, plan: Plan, count: str, stage: int) -> str:
         """Return the chance of a count in a stage."""
-        del before
-        mean = f"{write_number(stage[-1])} rate"
+        mean = f"{write_number(plan.design.stages[stage])} rate"
         return f"exp(-{mean}) ({mean})^{count}/{count}!"
 
     def formula(self, plan: Plan, cell: str, counts: Sequence[int]) -> str:
         """Return upper tails as a gamma distribution."""
-        means, looks = [f"{write_number(size)}*{cell}" for size in plan.design.stages], self.looks(plan)
-        text = f"_xlfn.GAMMA.DIST({means[0]},{looks[0].reject},1,TRUE)"
-        if counts:
-            more = array([looks[1].reject - k for k in counts])
-            text += f"+SUMPRODUCT(_xlfn.POISSON.DIST({array(counts)},{means[0]},FALSE),"
-            text += f"_xlfn.GAMMA.DIST({means[1]},{more},1,TRUE))"
-        return f"IF({cell}=0,0,{text})"
+        sizes, looks, rate = plan.design.stages, self.looks(plan), operand(cell)
+        text = poisson_native(sizes[0], Reject(None, looks[0].reject), cell)
+        if not counts:
+            return text
+        means, more = (
+            [f"{write_number(size)}*{rate}" for size in sizes],
+            [looks[1].reject - k for k in counts],
+        )
+        text += f"+SUMPRODUCT(_xlfn.POISSON.DIST({array(counts)},{means[0]},FALSE),"
+        return f"IF({rate}=0,0,{text}_xlfn.GAMMA.DIST({means[1]},{array(more)},1,TRUE)))"
 
 
 class StagedLotKind(FormulaKind):
@@ -117,35 +120,30 @@ class StagedLotKind(FormulaKind):
         course = LotCourse(lot, rate)
         return np.asarray(along(self.all_looks(plan), course, course.left).sum(axis=0))
 
-    def term(self, count: str, stage: Sequence[float], before: str) -> str:
-        """Return the chance of a count in a stage, with N items in the lot."""
-        n = write_number(stage[-1])
-        if not before:
-            return f"C(D,{count}) C(N-D,{n}-{count})/C(N,{n})"
-        rest = f"N-{write_number(stage[0])}"
-        return f"C(D-{before},{count}) C({rest}-D+{before},{n}-{count})/C({rest},{n})"
+    def term(self, plan: Plan, count: str, stage: int) -> str:
+        """Return the chance of a count in a stage."""
+        lot, sizes = plan.design.lot, plan.design.stages
+        if stage == 0:
+            return f"C(D,{count}) C({lot}-D,{sizes[0]}-{count})/C({lot},{sizes[0]})"
+        rest, n = lot - sizes[0], sizes[1]
+        return f"C(D-k,{count}) C({rest}-D+k,{n}-{count})/C({rest},{n})"
 
     def formula(self, plan: Plan, cell: str, counts: Sequence[int]) -> str:
         """Return upper tails as lower tails of the good items, asked for only where these have a value."""
-        lot, sizes, looks = plan.design.lot, plan.design.stages, self.looks(plan)
+        lot, sizes, looks, found = plan.design.lot, plan.design.stages, self.looks(plan), operand(cell)
         n, accept, reject = sizes[0], looks[0].accept, looks[0].reject
-        text = f"IF({cell}<{reject},0,"
-        if reject <= n:
-            text += f"_xlfn.HYPGEOM.DIST({n - reject},{n},{lot}-{cell},{lot},TRUE)"
-        if counts:
-            last, rest = looks[1].reject, lot - n
-            good = array([sizes[1] - last + k for k in counts])
-            text += (
-                f"+IF({cell}<{last},0,SUMPRODUCT(_xlfn.HYPGEOM.DIST({array(counts)},{n},{cell},{lot},FALSE),"
-            )
-            text += f"_xlfn.HYPGEOM.DIST({good},{sizes[1]},{rest}-{cell}+{array(counts)},{rest},TRUE)))"
-        text += ")"
-        # With so many defectives every lot fails that the first stage does not pass.
-        many = min(lot - plan.design.total + looks[-1].reject, lot - n + reject)
-        fails = "1"
-        if accept >= 0:
-            fails += f"-IF({cell}>{lot - n + accept},0,_xlfn.HYPGEOM.DIST({accept},{n},{cell},{lot},TRUE))"
-        return f"IF({cell}>{many:.0f},{fails},{text})"
+        text = lot_native(lot, n, Reject(None, reject), cell) if reject <= n else "0"
+        if not counts:
+            return text
+        last, rest, good = looks[1].reject, lot - n, [sizes[1] - looks[1].reject + k for k in counts]
+        text += (
+            f"+IF({found}<{last},0,SUMPRODUCT(_xlfn.HYPGEOM.DIST({array(counts)},{n},{found},{lot},FALSE),"
+        )
+        text += f"_xlfn.HYPGEOM.DIST({array(good)},{sizes[1]},{rest}-{found}+{array(counts)},{rest},TRUE)))"
+        # With more defectives than that, every lot fails that the first stage does not pass.
+        many = lot - sum(sizes) + last
+        passes = f"-({lot_native(lot, n, Reject(accept, None), cell)})" if accept >= 0 else ""
+        return f"IF({found}>{many},1{passes},{text})"
 
 
 def array(numbers: Sequence[float]) -> str:

@@ -31,7 +31,9 @@ from steelyard.core.text import read_plan, write_plan
 DOUBLE = "binomial | stages 50 then 50 | accept 1 then 4 | reject 4 then 5 | claim p<=0.02"
 MULTIPLE = "binomial | stages 20 then 20 then 20 | accept none then 1 then 3 | reject 3 then 4 then 4"
 UNITS = "poisson | stages 12.5 then 25 | accept 1 then 4 | reject 4 then 5 | stop on-reject | claim rate<=0.1"
-LOT = "hypergeometric | lot 800 | stages 50 then 50 | accept 1 then 4 | reject 4 then 5 | claim D<=8 | alpha 0.1"
+LOT = (
+    "hypergeometric | lot 80 | stages 20 then 20 | accept 0 then 1 | reject 2 then 2 | claim D<=1 | alpha 0.1"
+)
 
 
 @pytest.mark.parametrize(
@@ -485,7 +487,13 @@ def test_what_a_reader_is_told() -> None:
 def test_algebra_is_a_sum_over_the_ways_to_accept() -> None:
     kind = kind_of(read_plan(DOUBLE))
     assert kind.algebra(read_plan(DOUBLE)) == (
-        "1 - sum(k=0..1) C(50,k) p^k (1-p)^(50-k)"
-        " - sum(k=2..3) C(50,k) p^k (1-p)^(50-k) sum(j=0..4-k) C(50,j) p^j (1-p)^(50-j)"
+        "1 - sum(C(50,k) p^k (1-p)^(50-k), k=0..1)"
+        " - sum(C(50,k) p^k (1-p)^(50-k) sum(C(50,j) p^j (1-p)^(50-j), j=0..4-k), k=2..3)"
     )
+    lot = read_plan("hypergeometric | lot 40 | stages 5 then 5 | accept none then 1 | reject 2 then 2")
+    assert kind_of(lot).algebra(lot) == (
+        "1 - sum(C(D,k) C(40-D,5-k)/C(40,5) sum(C(D-k,j) C(35-D+k,5-j)/C(35,5), j=0..1-k), k=0..1)"
+    )
+    units = read_plan("poisson | stages 2.5 | accept 1 | reject 2")
+    assert kind_of(units).algebra(units) == "1 - sum(exp(-2.5 rate) (2.5 rate)^k/k!, k=0..1)"
     assert kind.algebra(read_plan(MULTIPLE)) is None
