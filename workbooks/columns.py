@@ -10,6 +10,8 @@ from collections.abc import Callable
 from dataclasses import dataclass
 
 import steelyard.core.kinds  # noqa: F401  (fills the register of kinds)
+from steelyard.addin import CATALOGUE
+from steelyard.addin.catalogue import Entry
 from steelyard.core.errors import InvalidValue
 from steelyard.core.kind import KINDS
 from steelyard.core.numbers import read_choice, read_number, read_probability, read_whole, write_number
@@ -113,7 +115,20 @@ def _one_of(*words: str) -> str:
     return f"one of {', '.join(words)}"
 
 
-_KINDS, _SIDES = tuple(KINDS), tuple(SIDES.values())
+def maker_of(kind: str) -> Entry | None:
+    """Return the cell function that makes a plan of a kind from its size and claim; None where there is none.
+
+    Examples
+    --------
+    >>> maker_of("binomial").name, maker_of("inspected binomial")
+    ('SY_BINOMIAL', None)
+    """
+    entry = CATALOGUE.get(f"SY_{kind.upper()}")
+    taken = {argument.name for argument in entry.arguments} if entry else set()
+    return entry if {KINDS[kind].grammar.extent, "claim", "alpha"} <= taken else None
+
+
+_KINDS, _SIDES = tuple(kind for kind in KINDS if maker_of(kind)), tuple(SIDES.values())
 _CHANCE = "a probability between 0 and 1, such as 5% or 0.05"
 _TEXT = f"a text of at most {LONGEST} characters on one line"
 

@@ -37,28 +37,44 @@ class Block:
         return get_column_letter(_FIRST_RATE + len(self.rates) - 1)
 
 
+@dataclass(slots=True)
+class _Group:
+    """Characteristics that one axis shows well; grows while it is found."""
+
+    places: list[int]
+    low: float
+    high: float
+    least: float
+
+    def take(self, place: int, scale: Scale) -> bool:
+        """Take another characteristic unless a scale would be too small for the axis; tell whether."""
+        low, high = min(self.low, scale.low), max(self.high, scale.high)
+        least = min(self.least, scale.high - scale.low)
+        if high - low > _SPREAD * least:
+            return False
+        self.places.append(place)
+        self.low, self.high, self.least = low, high, least
+        return True
+
+
 def blocks(planned: Sequence[Planned]) -> list[Block]:
     """Group the characteristics by parameter and scale, in the register's order."""
-    found: list[Block] = []
+    result: list[Block] = []
     symbols = [one.kind.parameters[0].symbol for one in planned]
     for symbol in dict.fromkeys(symbols):
         scales = {place: scale_of(planned[place], 1.3) for place, own in enumerate(symbols) if own == symbol}
-        groups: list[list[int]] = []
-        for place in sorted(scales, key=lambda place: scales[place].high):
-            if groups and _alike([scales[other] for other in (*groups[-1], place)]):
-                groups[-1].append(place)
-            else:
-                groups.append([place])
-        for group in groups:
-            rates = common([scales[place] for place in group]).values(STEPS - 1)
-            found.append(Block(tuple(sorted(group)), tuple(rates)))
-    return found
+        groups: list[_Group] = []
+        for place, scale in sorted(scales.items(), key=lambda item: item[1].high):
+            if not groups or not groups[-1].take(place, scale):
+                groups.append(_Group([place], scale.low, scale.high, scale.high - scale.low))
+        result += [_block(group.places, [scales[place] for place in group.places]) for group in groups]
+    return result
 
 
-def _alike(scales: Sequence[Scale]) -> bool:
-    """Tell whether one axis shows them all well."""
-    whole = max(scale.high for scale in scales) - min(scale.low for scale in scales)
-    return whole <= _SPREAD * min(scale.high - scale.low for scale in scales)
+def _block(places: Sequence[int], scales: Sequence[Scale]) -> Block:
+    scale = common(scales)
+    tried = (scale.values(parts) for parts in range(STEPS, 0, -1))
+    return Block(tuple(sorted(places)), tuple(next(rates for rates in tried if len(rates) <= STEPS + 1)))
 
 
 def add_grid(book: Book, register: Register) -> Sheet:

@@ -5,8 +5,8 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 from typing import Any
 
-from steelyard.addin import CATALOGUE
 from steelyard.workbooks import native
+from steelyard.workbooks.columns import maker_of
 from steelyard.workbooks.plans import Planned
 
 Cells = Mapping[str, str]
@@ -45,7 +45,8 @@ def plan_formula(planned: Planned, at: Cells, host: str) -> str:
     smallest += [at["split"], at["verdict"]]
     given = {**at, **dict.fromkeys(("n", "units"), at["fixed"])}
     given |= dict.fromkeys(("lot", "sigma", "planning_sigma"), at["extra"])
-    entry = CATALOGUE[f"SY_{planned.plan.kind.upper()}"]
+    entry = maker_of(planned.plan.kind)
+    assert entry is not None
     of_size = [given[argument.name] for argument in entry.arguments]
     return f'IF({at["fixed"]}="",{_call("SY_SMALLEST", smallest, host)},{_call(entry.name, of_size, host)})'
 
