@@ -1,13 +1,11 @@
 """A plan book, against openpyxl alone writing the same cells with the same styles, but no charts."""
 
-import tempfile
 from copy import copy
 from dataclasses import replace
-from pathlib import Path
 
 from openpyxl import Workbook, load_workbook
 from openpyxl.styles import NamedStyle
-from ratio import ratio
+from ratio import ratio, scratch
 
 from steelyard.workbooks.book import build_book
 from steelyard.workbooks.plans import plan_requests
@@ -54,8 +52,8 @@ def content(path):
 
 @ratio("plan book / openpyxl writing its cells", limit=2.0, sizes=(50, 500))
 def plan_book(count):
-    folder = tempfile.TemporaryDirectory()
-    path, asked = Path(folder.name) / "book.xlsx", requests(count)
+    folder = scratch()
+    path, asked = folder / "book.xlsx", requests(count)
 
     def ours():
         planned, _ = plan_requests(asked)
@@ -72,6 +70,6 @@ def plan_book(count):
             sheet = workbook.create_sheet(title)
             for row, column, value, style in cells:
                 sheet.cell(row, column, value).style = style
-        workbook.save(Path(folder.name) / "reference.xlsx")
+        workbook.save(folder / "reference.xlsx")
 
     return ours, reference

@@ -11,11 +11,15 @@ of cells and returns two callables, ours and the reference, ready to be timed::
         return lambda: SY_POWER(plans, rates), lambda: special.betainc(a, b, x)
 """
 
+import atexit
 import gc
+import shutil
 import statistics
+import tempfile
 from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
+from pathlib import Path
 from time import perf_counter
 from typing import Any
 
@@ -91,6 +95,13 @@ def relative_error(ours: Any, reference: Any) -> float:
     """Return the largest relative difference between two arrays, or lists of rows, of positive numbers."""
     reference = np.asarray(reference, dtype=float)
     return float(np.max(np.abs(np.asarray(ours, dtype=float) - reference) / np.abs(reference)))
+
+
+def scratch() -> Path:
+    """Return a new folder for a benchmark's files; it is removed when Python ends."""
+    folder = Path(tempfile.mkdtemp(prefix="steelyard-benchmark-"))
+    atexit.register(shutil.rmtree, folder, ignore_errors=True)
+    return folder
 
 
 def measure(entry: Entry) -> Iterator[Measurement]:
