@@ -140,6 +140,17 @@ COMMANDS = (
         (takes("name", nargs="?", metavar="NAME", help="a function, e.g. SY_POWER"),),
     ),
     Command(
+        "verify",
+        "rerun the published checks on this computer and file them as a record",
+        "steelyard verify -o record.xlsx --pdf",
+        "verify.verify",
+        (
+            output(),
+            takes("--pdf", action="store_true", help="also print the record to a PDF (needs LibreOffice)"),
+            takes("--skip-program", action="store_true", help="do not run the checks through LibreOffice"),
+        ),
+    ),
+    Command(
         "connect",
         "put the functions into Calc or Excel for the current user",
         "steelyard connect calc",
