@@ -19,7 +19,7 @@ from steelyard.workbooks.sheets.checks import add_checks
 from steelyard.workbooks.sheets.grid import add_grid
 from steelyard.workbooks.sheets.justification import Source, add_justification
 from steelyard.workbooks.sheets.readme import add_readme, fill_readme
-from steelyard.workbooks.sheets.register import AGREES, Register
+from steelyard.workbooks.sheets.register import Register
 
 JUSTIFIED_BY_DEFAULT = 30
 
@@ -28,19 +28,34 @@ Progress = Callable[[Sequence[Any], str], Iterable[Any]]
 
 @dataclass(frozen=True, slots=True)
 class Summary:
-    """What a book holds."""
+    """What a book holds.
+
+    Examples
+    --------
+    >>> print(Summary(29, 1, 2, 28, 29))
+    29 characteristics, 1 justification; 28 of 29 native checks agree; 2 rows refused
+    """
 
     characteristics: int
-    justified: int
+    justifications: int
     refused: int
     agreeing: int
+    checked: int
 
     def __str__(self) -> str:
-        refused = f", {self.refused} rows refused" if self.refused else ""
-        return (
-            f"{self.characteristics} characteristics, {self.justified} justification sheets, "
-            f"{self.agreeing} native checks agree{refused}"
-        )
+        parts = [
+            _count(self.characteristics, "characteristic")
+            + ", "
+            + _count(self.justifications, "justification"),
+            f"{self.agreeing} of {_count(self.checked, 'native check')} agree",
+        ]
+        if self.refused:
+            parts.append(f"{_count(self.refused, 'row')} refused")
+        return "; ".join(parts)
+
+
+def _count(number: int, thing: str) -> str:
+    return f"{number:,} {thing}{'' if number == 1 else 's'}"
 
 
 def build_book(
@@ -89,12 +104,10 @@ def build_book(
     readme = add_readme(book)
     register = Register(book, planned)
     add_grid(book, register)
-    add_checks(book, register)
+    agreeing, checked = add_checks(book, register)
     steps = progress(chosen, "justifications") if progress else chosen
     titles = [add_justification(book, register, place, origin).title for place in steps]
-    summary = Summary(
-        len(planned), len(titles), len(problems), sum(word == AGREES for word in register.values("agrees"))
-    )
+    summary = Summary(len(planned), len(titles), len(problems), agreeing, checked)
     fill_readme(readme, str(summary), origin, titles, problems)
     book.save(path)
     return summary
@@ -108,13 +121,15 @@ def _justified(planned: Sequence[Planned], justify: str | Sequence[str] | None) 
         if justify != "all":
             raise InvalidValue("justify", "be all or a list of characteristics", justify)
         return everything
-    known = {plan.request.characteristic.lower(): place for place, plan in enumerate(planned)}
+    places: dict[str, list[int]] = {}
+    for place, one in enumerate(planned):
+        places.setdefault(one.request.characteristic.lower(), []).append(place)
     for name in justify:
-        if name.lower() not in known:
-            close = get_close_matches(name.lower(), known, n=1)
-            hint = f"did you mean {planned[known[close[0]]].request.characteristic}?" if close else ""
+        if name.lower() not in places:
+            close = get_close_matches(name.lower(), places, n=1)
+            hint = f"did you mean {planned[places[close[0]][0]].request.characteristic}?" if close else ""
             raise InvalidValue("justify", "name characteristics of the request list", name, hint)
-    return sorted({known[name.lower()] for name in justify})
+    return sorted({place for name in justify for place in places[name.lower()]})
 
 
 def _source(path: Path | None) -> Source:

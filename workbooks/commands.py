@@ -65,6 +65,7 @@ def build(options: argparse.Namespace) -> int:
         host=options.host,
         source=source,
         justify=_names(options.justify),
+        problems=problems,
         progress=progress,
     )
     print(f"{summary} ({time.monotonic() - started:.1f} s)", file=sys.stderr)

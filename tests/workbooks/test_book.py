@@ -266,8 +266,8 @@ def test_names_to_justify_are_matched_or_refused(tmp_path):
 def test_long_lists_get_no_justifications_unasked(tmp_path):
     planned = [replace(demo()[0], number=number) for number in range(1, 32)]
     summary = build_book(planned, tmp_path / "book.xlsx")
-    assert (summary.characteristics, summary.justified, summary.agreeing) == (31, 0, 31)
-    assert str(summary) == "31 characteristics, 0 justification sheets, 31 native checks agree"
+    assert (summary.characteristics, summary.justifications, summary.agreeing) == (31, 0, 31)
+    assert str(summary) == "31 characteristics, 0 justifications; 31 of 31 native checks agree"
 
 
 def test_refused_rows_are_listed_in_the_book(tmp_path):

@@ -8,7 +8,7 @@ from typing import Any
 from openpyxl.utils import get_column_letter
 
 from steelyard.workbooks import native
-from steelyard.workbooks.house import Book, Live, Piece, Put, Sheet
+from steelyard.workbooks.house import Book, Live, Piece, Put
 from steelyard.workbooks.sheets import rows
 from steelyard.workbooks.sheets.register import AGREES, DIFFERS, NONE, Register
 from steelyard.workbooks.sheets.scales import check_values
@@ -25,8 +25,8 @@ _WORST, _VERDICT = _LETTERS[-2:]
 _WIDTHS = [5.0, 27.0, *[9.0] * RATES, *[13.0] * (2 * RATES), 12.0, 9.0]
 
 
-def add_checks(book: Book, register: Register) -> Sheet:
-    """Add the sheet and return it."""
+def add_checks(book: Book, register: Register) -> tuple[int, int]:
+    """Add the sheet; return how many plans agree, and how many can be checked."""
     sheet = book.sheet(TITLE, dict(zip(_LETTERS, _WIDTHS, strict=True)))
     lines = _lines(book.host, register)
     last = FIRST + len(lines) - 1
@@ -55,7 +55,7 @@ def add_checks(book: Book, register: Register) -> Sheet:
     sheet.freeze(f"C{FIRST}")
     sheet.protect()
     sheet.print_setup(landscape=True, repeat=f"{FIRST - 2}:{FIRST - 1}", area=f"A1:{_VERDICT}{last}")
-    return sheet
+    return agreeing, count
 
 
 def _lines(host: str, register: Register) -> list[list[Piece]]:
