@@ -15,8 +15,10 @@ from steelyard.addin import (
     lots,
     make,
     measured,
+    picking,
     staged,
     together,
+    until,
 )
 from steelyard.addin.catalogue import CATALOGUE, Cells
 from steelyard.addin.cells import refusal
@@ -40,4 +42,4 @@ def call(name: str, arguments: list[Cells]) -> Cells:
     return entry.function(*arguments)
 
 
-del ask, clustered, demonstration, explain, inspected, lots, make, measured, staged, together
+del ask, clustered, demonstration, explain, inspected, lots, make, measured, picking, staged, together, until

@@ -242,3 +242,10 @@ Found = Annotated[
     str,
     Word("What happens to defectives that are found: replaced by good items, or removed.", one_of(FOUND)),
 ]
+Wanted = Annotated[
+    int,
+    Word(
+        "Defectives to be found before inspection ends: a whole number from 1.",
+        lambda v, name: read_whole(as_typed(v, name), name, 1),
+    ),
+]

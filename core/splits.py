@@ -35,6 +35,7 @@ Truth = NDArray[np.bool_]
 NEAR = 1e-8  # relative; wider than a tail's error, because a rate near 1 leaves few digits of 1 - rate
 ONE_SIDED = "one-sided"
 ENDS = {"above": ("high",), "below": ("low",), "either": ("low", "high")}
+FALLING_ENDS = {"above": ("low",), "below": ("high",), "either": ("low", "high")}  # of a count that falls
 
 
 def critical_high(law: CountLaw, columns: Columns, rate: Any, alpha: Any, split: str = ONE_SIDED) -> Floats:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from typing import Any
 
 import numpy as np
@@ -24,9 +24,17 @@ from steelyard.core.two_sided import two_sided_amount
 
 
 class ThresholdKind(Kind):
-    """A kind whose rule is ``x<=low or x>=high`` for one statistic x with a known law."""
+    """A kind whose rule is ``x<=low or x>=high`` for one statistic x with a known law.
+
+    Attributes
+    ----------
+    law : Law
+    ends : mapping
+        The ends of the statistic that reject, by the side where the parameter lies when the claim is false.
+    """
 
     law: Law
+    ends: Mapping[str, tuple[str, ...]] = ENDS
 
     def columns(self, plans: Sequence[Plan]) -> Columns:
         """Return the design's fields and the rule's ends; a missing end is NaN."""
@@ -98,8 +106,15 @@ class ThresholdKind(Kind):
         if plan.claim is not None:
             self.check_claim(plan.claim, plan.design)
         side = plan.claim.side if plan.claim else "either"
-        if (side == "above" and rule.low is not None) or (side == "below" and rule.high is not None):
+        if any(getattr(rule, end) is not None for end in ENDS["either"] if end not in self.ends[side]):
             raise InvalidValue("reject", f"not lie on the side where the claim {plan.claim} is true", text)
+
+    def rises(self, plan: Plan) -> bool:
+        """Tell whether the power of a one-sided plan rises with the parameter."""
+        if plan.claim is not None and plan.claim.side != "either":
+            return super().rises(plan)
+        (end,) = self.ends["above"]
+        return getattr(plan.rule, end) is not None
 
     def critical_rule(self, design: Any, claim: Claim, alpha: float, split: str) -> Reject:
         """Return the largest region that keeps alpha."""
@@ -110,7 +125,7 @@ class ThresholdKind(Kind):
     ) -> tuple[float | None, float | None]:
         row, rate = self.row(design, claim), np.asarray(claim.value)
         split = split if claim.side == "either" else ONE_SIDED
-        found = {end: float(self.law.critical(row, rate, alpha, end, split)) for end in ENDS[claim.side]}
+        found = {end: float(self.law.critical(row, rate, alpha, end, split)) for end in self.ends[claim.side]}
         low, high = found.get("low", math.nan), found.get("high", math.nan)
         return None if math.isnan(low) else low, None if math.isnan(high) else high
 
@@ -119,7 +134,7 @@ class ThresholdKind(Kind):
         del plan
         return read_number(value, "observed")
 
-    def outcome(self, plan: Plan, observed: Any) -> bool:
+    def outcome(self, plan: Plan, observed: Any) -> bool | str:
         """Tell whether the statistic rejects the claim."""
         low, high = plan.rule.low, plan.rule.high
         return bool((low is not None and observed <= low) or (high is not None and observed >= high))
