@@ -16,6 +16,7 @@ from steelyard.core.errors import SteelyardError
 _MAYBE_OURS = re.compile(r"SY[_.]", re.IGNORECASE)
 _OURS = re.compile(r"(?P<link>.*!)?(?:_xludf\.|_xll\.)?SY[_.](?P<name>[A-Z0-9_]+)\(", re.IGNORECASE)
 _MARKS = re.compile(r"^(?:_xl[a-z]+\.)+")
+_CALLED = re.compile(r"[\w.\[\]!]+\(")
 _NUMBERED = re.compile(r"\[([0-9]+)\]!")
 UNREADABLE = "is written in a way that can't be read here"
 
@@ -100,9 +101,12 @@ def read_tokens(formula: str) -> list[Token]:
 
 @lru_cache(65_536)
 def _openings(formula: str) -> tuple[str, ...]:
-    """Return the function names in a formula, each with its bracket, in their order."""
+    """Return the function names in a formula, each with its bracket, in their order.
+
+    Of a formula that can't be read rather too many than too few, so that no call of ours is overlooked.
+    """
     try:
         tokens = read_tokens(formula)
     except Unfollowed:
-        return ()
+        return tuple(_CALLED.findall(formula))
     return tuple(token.value for token in tokens if token.type == Token.FUNC and token.subtype == Token.OPEN)

@@ -164,6 +164,12 @@ def _is(test: Callable[[Any], bool]) -> Native:
     return call
 
 
+def _is_number(value: Any) -> bool:
+    if isinstance(value, bool):
+        give_up("asks whether a logical value is a number")
+    return isinstance(value, float | int)
+
+
 def _index(arguments: Arguments, cells: Cells) -> Result:
     table = evaluate(arguments[0], cells)
     rows = table if isinstance(table, list) else [[table]]
@@ -212,7 +218,7 @@ NATIVE: dict[str, tuple[Native, int, int]] = {
     "IF": (_if, 2, 3),
     "IFERROR": (_if_error, 2, 2),
     "ISERROR": (_is(lambda value: isinstance(value, Fault)), 1, 1),
-    "ISNUMBER": (_is(lambda value: isinstance(value, float | int) and not isinstance(value, bool)), 1, 1),
+    "ISNUMBER": (_is(_is_number), 1, 1),
     "ISTEXT": (_is(lambda value: isinstance(value, str) and not isinstance(value, Fault)), 1, 1),
     "ISBLANK": (_is(lambda value: value is None), 1, 1),
     "INDEX": (_index, 2, 3),

@@ -6,9 +6,11 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
 
+from openpyxl.formula.tokenizer import TokenizerError
 from openpyxl.formula.translate import Translator
 from openpyxl.utils import get_column_letter, range_boundaries
 
+from steelyard.addin.cells import MOST_CELLS
 from steelyard.core.errors import SteelyardError
 from steelyard.workbooks.formula_calls import calls_ours
 from steelyard.workbooks.packagexml import DefinedName, Package
@@ -155,16 +157,28 @@ def _read_sheet(title: str, part: str, xml: bytes, strings: Sequence[str]) -> Op
 
 
 def _formula(title: str, cell: CellXml, masters: dict[str, tuple[str, str, bool]]) -> Formula:
-    attributes, text = cell.formula_attributes, cell.formula or ""
+    attributes, text = cell.formula_attributes, (cell.formula or "").removeprefix("=")
     kind = attributes.get("t", "normal")
     if kind == "shared":
-        number = attributes["si"]
-        if number in masters:
-            master, origin, ours = masters[number]
-            translated = Translator(f"={master}", origin).translate_formula(cell.ref)[1:]
-            return Formula(title, cell, translated, cell.ref, "", ours)
-        masters[number] = text, cell.ref, calls_ours(text)
-        return Formula(title, cell, text, cell.ref, "", masters[number][2])
+        master, origin, ours = masters.setdefault(attributes["si"], (text, cell.ref, calls_ours(text)))
+        return Formula(title, cell, _translated(master, origin, cell.ref), cell.ref, "", ours)
     if kind in ("array", "dataTable"):
-        return Formula(title, cell, text, attributes["ref"], kind, calls_ours(text))
+        return Formula(title, cell, text, _filled(title, attributes["ref"]), kind, calls_ours(text))
     return Formula(title, cell, text, cell.ref, "", calls_ours(text))
+
+
+def _translated(formula: str, origin: str, ref: str) -> str:
+    """Return a shared formula as it reads in another cell; as it stands if it can't be read."""
+    try:
+        return str(Translator(f"={formula}", origin).translate_formula(ref))[1:]
+    except TokenizerError:
+        return formula
+
+
+def _filled(title: str, area: str) -> str:
+    """Return the range of an array formula, unless it is beyond all measure."""
+    left, top, right, bottom = range_boundaries(area)
+    if (right - left + 1) * (bottom - top + 1) > MOST_CELLS:
+        message = f"the formula of {title}!{area} fills more than {MOST_CELLS:,} cells"
+        raise SteelyardError(message)
+    return area

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 import re
-from collections.abc import Callable, Iterable, Mapping, Sequence
+from collections.abc import Callable, Iterable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 from graphlib import CycleError, TopologicalSorter
 from typing import Any
@@ -82,6 +82,7 @@ class _Run:
             for row in formula.places
             for ref in row
         }
+        self._fillings: dict[tuple[str, int, int, int, int], list[Formula]] = {}
         self._trees: dict[Formula, Tree] = {}
         self._found: dict[Place, Value] = {}
         self._questions: dict[Question, None] = {}
@@ -184,14 +185,21 @@ class _Run:
         try:
             tree = self._tree(formula)
             found: dict[Formula, None] = {}
-            for part in references(tree):
-                for area in references(self.named(part)) if isinstance(part, Name) else [part]:
-                    found |= dict.fromkeys(self._filling(area))
+            for area in self._areas(tree):
+                found |= dict.fromkeys(self._filling(area))
         except (Unfollowed, RecursionError) as error:
             self._set_aside(formula, error)
             return []
         self._trees[formula] = tree
         return list(found)
+
+    def _areas(self, tree: Tree) -> Iterator[Area]:
+        """Yield the cells and ranges of a tree, those behind names included."""
+        for part in references(tree):
+            if isinstance(part, Area):
+                yield part
+            else:
+                yield from self._areas(self.named(part))
 
     def _tree(self, formula: Formula) -> Tree:
         if formula.kind == "dataTable":
@@ -202,13 +210,16 @@ class _Run:
                     give_up(f"uses {name.removeprefix('_xlfn.').upper()}")
         return read_formula(formula.text)
 
-    def _filling(self, area: Any) -> list[Formula]:
+    def _filling(self, area: Area) -> list[Formula]:
         """Return the formulas that fill cells of an area."""
-        title = self._title(area.sheet)
-        if (area.right - area.left + 1) * (area.bottom - area.top + 1) > MOST_CELLS:
-            give_up(f"takes a range of more than {MOST_CELLS:,} cells")
-        refs = (ref for row in cells_of(area.left, area.top, area.right, area.bottom) for ref in row)
-        return [self._filled[title, ref] for ref in refs if (title, ref) in self._filled]
+        place = self._title(area.sheet), area.left, area.top, area.right, area.bottom
+        if place not in self._fillings:
+            if (area.right - area.left + 1) * (area.bottom - area.top + 1) > MOST_CELLS:
+                give_up(f"takes a range of more than {MOST_CELLS:,} cells")
+            refs = (ref for row in cells_of(*place[1:]) for ref in row)
+            found = (self._filled.get((place[0], ref)) for ref in refs)
+            self._fillings[place] = [formula for formula in found if formula is not None]
+        return self._fillings[place]
 
     # The work
 

@@ -47,7 +47,9 @@ class Refreshed:
         if self.unfollowed:
             text += f", {len(self.unfollowed):,} could not be followed"
         if self.left and self.changed:
-            text += f"; {self.left:,} native ones are recalculated when the book is opened"
+            text += (
+                f"; on opening the spreadsheet program recalculates its own ({self.left:,} were left to it)"
+            )
         return text
 
 

@@ -107,6 +107,8 @@ def _some(things: Sequence[str]) -> str:
 
 def _obstacles(book: OpenedBook) -> Iterator[str]:
     """Yield what the copy could not keep: our functions outside cells, and what-if tables."""
+    if any(part.startswith("xl/revisions/") for part in book.package.parts):
+        yield "it keeps the history of a shared workbook"
     for name in book.names:
         if calls_ours(name.text):
             yield f"the defined name {name.name} calls a function of Steelyard"

@@ -110,7 +110,8 @@ def plan_sheet(tail=""):
 
 DATA_SHEET = (
     f'{HEAD}<x:worksheet xmlns:x="{MAIN}"><x:sheetData><x:row r="1">'
-    '<x:c r="A1" t="inlineStr"><x:is><x:r><x:t>Leak </x:t></x:r><x:r><x:t>at 1 bar</x:t></x:r></x:is></x:c>'
+    '<x:c r="A1" t="inlineStr"><x:is><x:r><x:t xml:space="preserve">Leak </x:t></x:r>'
+    "<x:r><x:t>at 1 bar</x:t></x:r></x:is></x:c>"
     '<x:c r="B1"><x:v>1.0000000000000001E-5</x:v></x:c><x:c r="C1"><x:f>B1+1</x:f><x:v>1.00001</x:v></x:c>'
     '<x:c r="D1" t="str"><x:f>sy.region(Plan!A2)</x:f><x:v>x ≥ 4</x:v></x:c></x:row>'
     "</x:sheetData></x:worksheet>"

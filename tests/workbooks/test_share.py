@@ -356,6 +356,11 @@ def test_what_if_tables_are_refused(tmp_path):
     assert "Plan!E4:E6 is a what-if data table" in refusal(tmp_path, parts)
 
 
+def test_the_history_of_a_shared_workbook_is_refused(tmp_path):
+    parts = foreign_parts() | {"xl/revisions/revisionHeaders.xml": b"<headers/>"}
+    assert "it keeps the history of a shared workbook" in refusal(tmp_path, parts)
+
+
 def test_signed_books_are_refused(tmp_path):
     parts = foreign_parts() | {"_xmlsignatures/sig1.xml": b"<Signature/>"}
     assert refusal(tmp_path, parts) == "is signed: a changed copy would not be what was signed"
@@ -414,6 +419,24 @@ def test_damaged_books_are_refused(part, damage, tmp_path):
         parts[part] = parts[part].replace(*damage)
     message = refusal(tmp_path, parts)
     assert message.startswith("can't be used: ")
+
+
+def test_an_array_formula_beyond_measure_is_refused(tmp_path):
+    parts = foreign_parts()
+    sheet = parts["xl/worksheets/first.xml"]
+    parts["xl/worksheets/first.xml"] = sheet.replace(b'ref="F2:H2"', b'ref="F2:XFD99999"')
+    message = "can't be used: the formula of Plan!F2:XFD99999 fills more than 2,000,000 cells"
+    assert refusal(tmp_path, parts) == message
+
+
+def test_a_call_of_ours_in_a_formula_that_cannot_be_read_is_not_overlooked(tmp_path):
+    parts = foreign_parts()
+    formula = b"<f>=IF(SY_SIZE(A2)=#SPILL!,1,2)</f>"
+    parts["xl/worksheets/first.xml"] = parts["xl/worksheets/first.xml"].replace(b"<f>B2*2</f>", formula)
+    write_parts(tmp_path / "book.xlsx", parts)
+    assert share_book(tmp_path / "book.xlsx", tmp_path / "copy.xlsx").frozen == 11
+    listed = load_workbook(tmp_path / "copy.xlsx")["Formulas"].iter_rows(values_only=True)
+    assert "=IF(SY_SIZE(A2)=#SPILL!,1,2)" in [row[2] for row in listed]
 
 
 def test_a_package_without_a_workbook_is_refused(tmp_path):
