@@ -326,3 +326,15 @@ def test_names_of_sheets_in_links_are_quoted(stored):
         for cell in stored.formulas["Read me"]["B"]
         if cell.hyperlink
     )
+
+
+def test_each_half_of_a_justification_fits_a_letter_page(stored):
+    for title in stored.formulas.sheetnames:
+        sheet = stored.formulas[title]
+        if not title[0].isdigit():
+            continue
+        (end,) = [one.id for one in sheet.row_breaks.brk]
+        bottom = range_boundaries(sheet.print_area.rpartition("!")[2].replace("$", ""))[3]
+        for rows in (range(1, end + 1), range(end + 1, bottom + 1)):
+            points = sum(sheet.row_dimensions[row].height or 13.2 for row in rows)
+            assert points * sheet.page_setup.scale / 100 <= (11 - 2 * 0.75) * 72

@@ -10,14 +10,14 @@ from openpyxl.utils import get_column_letter
 from steelyard.workbooks import native
 from steelyard.workbooks.house import Book, Live, Piece, Put
 from steelyard.workbooks.sheets import rows
-from steelyard.workbooks.sheets.register import AGREES, DIFFERS, NONE, Register
+from steelyard.workbooks.sheets.answers import AGREES, DIFFERS, NONE
+from steelyard.workbooks.sheets.register import ALLOWED, Register
 from steelyard.workbooks.sheets.scales import check_values
 from steelyard.workbooks.terms import Terms, ask
 
 TITLE = "Checks"
 FIRST = 8
 RATES = 5
-ALLOWED = 1e-9
 
 _LETTERS = [get_column_letter(number) for number in range(1, 5 + 3 * RATES)]
 _RATES, _OURS, _THEIRS = (_LETTERS[2 + i * RATES : 2 + (i + 1) * RATES] for i in range(3))

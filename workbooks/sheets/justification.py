@@ -10,13 +10,12 @@ from steelyard.core import VERSION
 from steelyard.workbooks.house import Book, Live, Put, Sheet, choice
 from steelyard.workbooks.sheets import paper, rows
 from steelyard.workbooks.sheets.curves import add_curves
+from steelyard.workbooks.sheets.page import VALUES, WIDE, Page, told, wide
 from steelyard.workbooks.sheets.register import Register
 from steelyard.workbooks.sheets.scales import table_values
-from steelyard.workbooks.terms import Terms, across, ask, literal
+from steelyard.workbooks.terms import across, ask, literal
 
 LAST = "I"
-WIDE = 9  # columns of a page
-VALUES = WIDE - 1  # columns right of the labels
 
 _WIDTHS = {"A": 23.0} | dict.fromkeys("BCDEFGHI", 9.8) | {"J": 3.0} | dict.fromkeys("KLM", 11.0)
 _BOX = choice(("☐", "☑"), "Tick", "Choose ☑ when the evidence is at hand.")
@@ -54,14 +53,14 @@ def add_justification(book: Book, register: Register, place: int, source: Source
     """Add the sheet of one characteristic (its place in the register) and return it."""
     planned = register.planned[place]
     sheet = book.sheet(book.free_title(f"{planned.number} {planned.request.characteristic}"), _WIDTHS)
-    page = _Page(sheet, register, place)
+    page = _Justification(sheet, register, place)
     page.head()
     page.subject()
     page.claim_and_risks()
     page.rule()
-    page.performance()
+    first_rate = page.performance()
     paper.break_here(sheet)
-    page.native_check()
+    page.native_check(first_rate)
     page.assumptions()
     page.cautions()
     page.alternatives()
@@ -69,28 +68,17 @@ def add_justification(book: Book, register: Register, place: int, source: Source
     page.sign_off()
     sheet.protect()
     sheet.print_setup(area=f"A1:{LAST}{sheet.next_row - 1}")
-    paper.fixed_scale(sheet, 85)
+    paper.fixed_scale(sheet, 83)
     return sheet
 
 
-class _Page:
+class _Justification(Page):
     """The sections of one sheet, in the order of the paper."""
-
-    def __init__(self, sheet: Sheet, register: Register, place: int) -> None:
-        self.sheet, self.register, self.place = sheet, register, place
-        self.planned = register.planned[place]
-        self.host = sheet.book.host
-        self.plan = register.term("plan", place)
-        self.size = register.term("actual", place)
-        self.first_rate = ""
-        self.explained = ask(self.host, "EXPLAIN", self.plan)
-        self.style = rows.rate_style(self.planned)
-        self.parameter = self.planned.kind.parameters[0]
 
     def head(self) -> None:
         """Write the title and the document's number and revision."""
         self.sheet.add(Put("Justification of a sampling plan", "title"))
-        self.sheet.add(self._link("name", "subtitle", WIDE))
+        self.sheet.add(self.link("name", "subtitle", WIDE))
         self.sheet.add(
             Put("Document number", "label"), Put(None, "writing words", 2), Put("Revision", "label"),
             Put(None, "writing words", 2), Put("Date", "label"), Put(None, "writing date", 2), height=20,
@@ -98,24 +86,24 @@ class _Page:
 
     def subject(self) -> None:
         """Write what is inspected and why."""
-        self._section("1  What is inspected")
+        self.section("1  What is inspected")
         lot = f"A finite lot of {self.planned.extra:,.0f} items" if rows.in_lots(self.planned) else None
-        self._line("Characteristic", self._link("name", "text", VALUES))
-        self._line("Judged by", self._measure())
-        self._line("Requirement and source", self._link("reference", "text", VALUES))
-        self._line("Effect of a failure", self._blank())
-        self._line("Risk class, procedure", self._blank(self.planned.request.risk_class))
-        self._line("Lot or population", self._blank(lot))
-        self._line("How items are drawn", self._blank())
+        self.line("Characteristic", self.link("name", "text", VALUES))
+        self.line("Judged by", self._measure())
+        self.line("Requirement and source", self.link("reference", "text", VALUES))
+        self.line("Effect of a failure", self.blank())
+        self.line("Risk class, procedure", self.blank(self.planned.request.risk_class))
+        self.line("Lot or population", self.blank(lot))
+        self.line("How items are drawn", self.blank())
 
     def claim_and_risks(self) -> None:
         """Write the hypotheses and the risks of both errors."""
-        self._section("2  Claim and risks")
+        self.section("2  Claim and risks")
         name = self.parameter.name[0].upper() + self.parameter.name[1:]
-        self._line("Claim (null hypothesis)", self._sentence(2))
+        self.line("Claim (null hypothesis)", self.sentence(2))
         alternatives = {side: f"{name} {text}." for side, text in _ALTERNATIVE.items()}
-        self._line("Alternative", self._by_word("side", alternatives))
-        self._line("What passing means", self._by_word("verdict", _PASSING))
+        self.line("Alternative", self.by_word("side", alternatives))
+        self.line("What passing means", self.by_word("verdict", _PASSING))
         heads = (
             "Nominal alpha",
             "Actual size",
@@ -136,27 +124,27 @@ class _Page:
         )
         self.sheet.add(
             Put("Risks", "label"),
-            self._link("alpha", "result risk"), self._link("actual", "result risk"),
-            self._link("catch", self._typed("catch")), self._link("second", self._typed("second")),
-            self._link("wanted", "result power"), self._link("power", "result power"), beta,
-            self._link("short", "result power"),
+            self.link("alpha", "result risk"), self.link("actual", "result risk"),
+            self.typed("catch"), self.typed("second"),
+            self.link("wanted", "result power"), self.link("power", "result power"), beta,
+            self.link("short", "result power"),
         )  # fmt: skip
-        self._line("Risks accepted by", self._blank())
+        self.line("Risks accepted by", self.blank())
 
     def rule(self) -> None:
         """Write the rule as the inspector reads it at the bench."""
-        self._section("3  Rule at the bench")
-        self._line("Sample", self._sentence(1))
-        self._line("Decision", self._sentence(3))
-        self._line("After a failed lot", Put(_AFTER, "text", VALUES))
-        self._line("Plan", self._link("plan", "cell", VALUES))
+        self.section("3  Rule at the bench")
+        self.line("Sample", self.sentence(1))
+        self.line("Decision", self.sentence(3))
+        self.line("After a failed lot", Put(_AFTER, "text", VALUES))
+        self.line("Plan", self.link("plan", "cell", VALUES))
 
-    def performance(self) -> None:
-        """Write the table and the curve."""
-        self._section("4  What the plan does")
+    def performance(self) -> str:
+        """Write the table and the curve; return the cell of the first true value."""
+        self.section("4  What the plan does")
         sheet, rates = self.sheet, table_values(self.planned, VALUES)
-        self.first_rate = f"B{sheet.next_row}"
-        spread = across(f"{self.first_rate}:{get_column_letter(1 + len(rates))}{sheet.next_row}", rates)
+        row = sheet.next_row
+        spread = across(f"B{row}:{get_column_letter(1 + len(rates))}{row}", rates)
         sheet.add(
             Put(f"True {self.parameter.name}", "label"), *(Put(rate, f"input {self.style}") for rate in rates)
         )
@@ -165,66 +153,67 @@ class _Page:
         sheet.add(None, *(Put(text, "heading", 2) for text in ("95 %", "50 %", "10 %", "5 %")))
         passing = self.register.passing("p05", self.place)
         accepted = [
-            self._link(key, f"result {rows.result_style(self.planned)}", 2) for key in ("p95", "p50", "p10")
+            self.link(key, f"result {rows.result_style(self.planned)}", 2) for key in ("p95", "p50", "p10")
         ]
         sheet.add(
             Put("Passes with this chance", "label"),
             *accepted,
-            _wide(passing, f"result {rows.result_style(self.planned)}", 2),
+            wide(passing, f"result {rows.result_style(self.planned)}", 2),
         )
         add_curves(sheet, self.register, self.place)
+        return f"B{row}"
 
-    def native_check(self) -> None:
-        """Write the same number from the spreadsheet's own functions."""
-        self._section("5  Check by the spreadsheet's own functions")
+    def native_check(self, rate: str) -> None:
+        """Write the power from the spreadsheet's own functions, and their formula for the rate in a cell."""
+        self.section("5  Check by the spreadsheet's own functions")
         heads = ("Power by the add-in", "Power by native functions", "Verdict")
         self.sheet.add(None, *(Put(head, "heading", 2) for head in heads))
         looks = (("power", "result exact"), ("native", "native exact"), ("agrees", "verdict"))
         self.sheet.add(
-            Put("At the rate to catch", "label"), *(self._link(key, look, 2) for key, look in looks)
+            Put("At the rate to catch", "label"), *(self.link(key, look, 2) for key, look in looks)
         )
-        native = ask(self.host, "NATIVE", self.plan, literal(self.first_rate))
+        native = ask(self.host, "NATIVE", self.plan, literal(rate))
         formula = f'=SUBSTITUTE({native.texts[0]},",",", ")'  # with blanks, at which the text can break
         shown = str(native.cells[0][0]).replace(",", ", ")
-        self._line(f"Formula for {self.first_rate}", Live(formula, shown, "text", VALUES))
+        self.line(f"Formula for {rate}", Live(formula, shown, "text", VALUES))
 
     def assumptions(self) -> None:
         """Write what must hold, each with a box to tick and room for the evidence."""
-        self._section("6  Assumptions: tick each, and name the evidence")
+        self.section("6  Assumptions: tick each, and name the evidence")
         for text in (*self.planned.kind.grammar.wording.assumptions, *_GENERAL):
             self.sheet.add(Put(text, "text", 5), Put("☐", "tick", check=_BOX), Put(None, "writing words", 3))
 
     def cautions(self) -> None:
         """Write what the plan does not show."""
-        self._section("7  Cautions")
-        alpha = self.register.term("alpha", self.place)
+        self.section("7  Cautions")
+        alpha, size = (self.register.term(key, self.place) for key in ("alpha", "actual"))
         self.sheet.add(self._still_passing())
-        self.sheet.add(_sentence("Nominal alpha ", alpha, " %, actual size ", self.size, " %."))
+        self.sheet.add(told("Nominal alpha ", alpha, " %, actual size ", size, " %."))
         for caution in CAUTIONS:
             self.sheet.add(Put(caution, "text", WIDE))
 
     def alternatives(self) -> None:
         """Leave room for what was considered and rejected."""
-        self._section("8  Alternatives considered, and why they were not taken")
+        self.section("8  Alternatives considered, and why they were not taken")
         for _ in range(2):
             self.sheet.add(Put(None, "writing words", WIDE), height=20)
 
     def record(self, source: Source) -> None:
         """Write where the numbers come from."""
-        self._section("9  Record")
+        self.section("9  Record")
         version = Live(
             '=IFERROR("Steelyard "&SY_VERSION(),"not connected to Steelyard")',
             f"Steelyard {VERSION}",
             "text",
             VALUES,
         )
-        self._line("Computed by", version)
-        self._line("Request list", Put(f"{source.name}, row {self.planned.request.row}", "text", VALUES))
-        self._line("SHA-256 of the list", Put(source.digest, "text", VALUES))
+        self.line("Computed by", version)
+        self.line("Request list", Put(f"{source.name}, row {self.planned.request.row}", "text", VALUES))
+        self.line("SHA-256 of the list", Put(source.digest, "text", VALUES))
 
     def sign_off(self) -> None:
         """Leave room for revisions and signatures."""
-        self._section("10  Revisions and signatures, before any sample is taken")
+        self.section("10  Revisions and signatures, before any sample is taken")
         self.sheet.add(Put("Revision", "heading"), Put("Date", "heading", 2), Put("Change", "heading", 6))
         for _ in range(2):
             self.sheet.add(
@@ -246,24 +235,6 @@ class _Page:
                 Put(None, "writing words", 3), height=26,
             )  # fmt: skip
 
-    # Parts of sections
-
-    def _section(self, text: str) -> None:
-        self.sheet.skip()
-        self.sheet.add(Put(text, "section"))
-
-    def _line(self, label: str, piece: Put | Live) -> None:
-        self.sheet.add(Put(label, "label"), piece)
-
-    def _blank(self, text: str | None = None) -> Put:
-        return Put(text, "writing words", VALUES)
-
-    def _link(self, key: str, style: str, span: int = 1) -> Live:
-        """Return a cell of the register, shown here too."""
-        term = self.register.term(key, self.place)
-        text, value = term.texts[0], term.values()[0]
-        return Live(f"={text}" if value is not None else f'=IF({text}="","",{text})', value, style, span)
-
     def _measure(self) -> Put | Live:
         """Return what is counted or measured, and in which unit."""
         title, unit = self.planned.kind.grammar.wording.title, self.planned.request.unit
@@ -272,50 +243,14 @@ class _Page:
         formula = f'="{title}; unit: "&{self.register.term("unit", self.place).texts[0]}'
         return Live(formula, f"{title}; unit: {unit}", "text", VALUES)
 
-    def _typed(self, key: str) -> str:
-        return f"result {rows.typed_style(self.planned, self.register.value(key, self.place))}"
-
-    def _sentence(self, number: int) -> Live:
-        """Return one of the sentences of SY_EXPLAIN."""
-        text = f"=INDEX({self.explained.texts[0]},{number},1)"
-        return Live(text, self.explained.cells[number - 1][0], "text", VALUES)
-
-    def _by_word(self, key: str, texts: dict[str, str]) -> Live:
-        """Return the text that belongs to the word in a cell of the register."""
-        term = self.register.term(key, self.place)
-        *others, last = texts.values()
-        formula = literal(last).texts[0]
-        for word, text in zip(texts, others, strict=False):
-            formula = f'IF({term.texts[0]}="{word}",{literal(text).texts[0]},{formula})'
-        return Live(f"={formula}", texts[term.values()[0]], "text", VALUES)
-
     def _still_passing(self) -> Live:
         """Return the caution that a lot which should fail can pass."""
         start = "Passing does not show that the lot is free of defects"
-        demonstration = self.planned.plan.verdict == "pass"
-        if demonstration:  # what must not pass is the claim's own rate
-            return _sentence(
-                f"{start}; where the claim is just true it passes with probability ", self.size, " %."
-            )
+        if self.planned.plan.verdict == "pass":  # what must not pass is the claim's own rate
+            size = self.register.term("actual", self.place)
+            return told(f"{start}; where the claim is just true it passes with probability ", size, " %.")
         catch = self.register.term("catch_own", self.place)
         if catch.values()[0] is None:
-            return _sentence(f"{start}.")
+            return told(f"{start}.")
         passing = ask(self.host, "ACCEPTANCE", self.plan, catch)
-        return _sentence(f"{start}; at the rate to catch it still passes with probability ", passing, " %.")
-
-
-def _wide(terms: Terms, style: str, span: int) -> Live:
-    return Live(f"={terms.texts[0]}", terms.cells[0][0], style, span)
-
-
-def _sentence(*parts: str | Terms) -> Live:
-    """Return a line of words and of probabilities in percent."""
-    texts, shown = [], []
-    for part in parts:
-        if isinstance(part, Terms):
-            texts.append(f"ROUND(100*{part.texts[0]},4)")
-            shown.append(f"{round(100 * part.cells[0][0], 4):g}")
-        else:
-            texts.append(literal(part).texts[0])
-            shown.append(part)
-    return Live(f"={'&'.join(texts)}", "".join(shown), "text", WIDE)
+        return told(f"{start}; at the rate to catch it still passes with probability ", passing, " %.")

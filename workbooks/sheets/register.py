@@ -12,14 +12,16 @@ from steelyard.core.plan import SIDES, SPLITS, VERDICTS
 from steelyard.workbooks import native
 from steelyard.workbooks.house import Book, Check, Piece, Put, Sheet, between, choice
 from steelyard.workbooks.plans import Planned
-from steelyard.workbooks.sheets import paper, rows
+from steelyard.workbooks.sheets import answers, paper, rows
+from steelyard.workbooks.sheets.answers import DIFFERS, NONE
 from steelyard.workbooks.terms import Terms, ask, column, literal, literals
 
 TITLE = "Register"
 FIRST = 7
 """The row of the first characteristic."""
 
-AGREES, DIFFERS, NONE = "agrees", "differs", "none"
+ALLOWED = 1e-9
+"""Relative difference from native functions that is allowed."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -77,7 +79,6 @@ _NOTES = (
     "Where the side is either, the true values that pass with 95, 50 and 10 % are those above the claim;",
     "in a lot they are the first whole numbers that pass with that chance or less.",
 )
-_PASSING = {"p95": 0.95, "p50": 0.5, "p10": 0.1, "p05": 0.05}
 
 
 class Register:
@@ -119,8 +120,8 @@ class Register:
 
     def passing(self, chance: str, place: int) -> Terms:
         """Return the true value at which one plan passes with a chance, ``"p95"`` to ``"p05"``."""
-        terms = {key: self.term(key, place) for key in ("plan", "verdict", "side")}
-        return _passing(self.book.host, chance, terms)
+        plan, verdict, side = (self.term(key, place) for key in ("plan", "verdict", "side"))
+        return answers.passing(self.book.host, chance, plan, verdict, side)
 
     def native(self, place: int, rate: str) -> str:
         """Return the native formula of one plan's power at the rate in a cell of another sheet."""
@@ -185,10 +186,10 @@ class Register:
         plans = self._live("plan", Terms(texts, [[planned.text] for planned in self.planned]), "cell")
         words = literals(self._each(lambda planned: planned.kind.grammar.extent))
         self._live("size", ask(host, "FIELD", plans, words), "result number")
-        for key, end, missing in (("low", "lower", "above"), ("high", "upper", "below")):
-            critical = _critical(ask(host, "CRITICAL", plans, literal(end)), self._terms["side"], missing)
-            whole = [not isinstance(value, float) or value.is_integer() for value in critical.values()]
-            self._live(key, critical, ["index count" if count else "index value" for count in whole])
+        for key, end in (("low", "lower"), ("high", "upper")):
+            counts = answers.critical(host, plans, self._terms["side"], end)
+            whole = [not isinstance(value, float) or value.is_integer() for value in counts.values()]
+            self._live(key, counts, ["index count" if count else "index value" for count in whole])
 
     def _write_risks(self) -> None:
         host, plans = self.book.host, self._terms["plan"]
@@ -200,10 +201,13 @@ class Register:
             ask(host, "POWER", plans, self._terms[f"{key}_own"], unless_blank=self._terms[key])
             for key in ("catch", "second")
         ]
-        self._live("power", self._least(*powers), "result power")
-        self._live("short", self._shortfall(), "result power")
+        power = self._live("power", answers.least(*powers), "result power")
+        self._live(
+            "short", answers.shortfall(power, self._terms["wanted"], self._terms["fixed"]), "result power"
+        )
         for key in ("p95", "p50", "p10"):
-            self._live(key, _passing(host, key, self._terms), styles)
+            passing = answers.passing(host, key, plans, self._terms["verdict"], self._terms["side"])
+            self._live(key, passing, styles)
 
     def _own_catches(self, number: int, key: str) -> Terms:
         texts, cells = [], []
@@ -211,27 +215,6 @@ class Register:
             at = self._at(place)
             texts.append(rows.own_catch_formula(planned, number, at[key], at))
             cells.append([(*planned.own_catches, None, None)[number]])
-        return Terms(tuple(texts), cells)
-
-    def _least(self, first: Terms, second: Terms) -> Terms:
-        """Return the power at the rate to catch; with two of them, the lesser power."""
-        texts, cells = [], []
-        for place, (one, other) in enumerate(zip(first.values(), second.values(), strict=True)):
-            single = other is None
-            texts.append(first.texts[place] if single else f"MIN({first.texts[place]},{second.texts[place]})")
-            cells.append([one if single else min(one, other)])
-        return Terms(tuple(texts), cells)
-
-    def _shortfall(self) -> Terms:
-        texts, cells = [], []
-        for place in range(len(self.planned)):
-            power, wanted, fixed = (self.value(key, place) for key in ("power", "wanted", "fixed"))
-            known = isinstance(power, float) and None not in (wanted, fixed)
-            at = self._at(place)
-            texts.append(
-                f'IF(OR({at["fixed"]}="",{at["wanted"]}="",{at["power"]}=""),"",MAX(0,{at["wanted"]}-{at["power"]}))'
-            )
-            cells.append([max(0.0, wanted - power) if known else None])
         return Terms(tuple(texts), cells)
 
     def _write_checks(self) -> None:
@@ -242,7 +225,7 @@ class Register:
             known = self.planned[place].native
             cells.append([min(values, default=None) if known else NONE])
         natively = self._live("native", Terms(tuple(texts), cells), "native power")
-        self._live("agrees", agreement(self._terms["power"], natively), "verdict")
+        self._live("agrees", answers.agreement(self._terms["power"], natively, ALLOWED), "verdict")
         self._live("check", ask(self.book.host, "CHECK", self._terms["plan"]), "cell")
 
     def _least_natively(self, place: int) -> str:
@@ -289,47 +272,3 @@ def _unit(planned: Planned) -> str:
 
 def _extra_style(planned: Planned) -> str:
     return "input number" if planned.kind.grammar.extra else "result"
-
-
-def _critical(terms: Terms, sides: Terms, missing: str) -> Terms:
-    """Return critical counts: nothing where the side has no such end, a word where that end is empty."""
-    texts, cells = [], []
-    for text, (value,), side, (named,) in zip(
-        terms.texts, terms.cells, sides.texts, sides.cells, strict=True
-    ):
-        texts.append(f'IF({side}="{missing}","",IF(ISTEXT({text}),"{NONE}",{text}))')
-        cells.append([None if named == missing else NONE if isinstance(value, str) else value])
-    return Terms(tuple(texts), cells)
-
-
-def _passing(host: str, chance: str, terms: dict[str, Terms]) -> Terms:
-    """Return the true values at which plans pass with a chance; in a demonstration rejecting is passing."""
-    probability = _PASSING[chance]
-    power = _either(terms["verdict"], "pass", probability, round(1 - probability, 2))
-    end = _either(terms["side"], "below", "lower", "upper")
-    return ask(host, "RATE_FOR", terms["plan"], power, end)
-
-
-def _either(given: Terms, word: str, yes: Any, no: Any) -> Terms:
-    """Return one of two constants in each row, as a cell says."""
-    written = [literal(value).texts[0] for value in (yes, no)]
-    texts = tuple(f'IF({text}="{word}",{written[0]},{written[1]})' for text in given.texts)
-    return Terms(texts, [[yes if row[0] == word else no] for row in given.cells])
-
-
-def agreement(ours: Terms, theirs: Terms, allowed: float = 1e-9) -> Terms:
-    """Return whether two numbers agree to a relative difference, in each row."""
-    bound = f"{allowed!r}".upper()
-    texts = tuple(
-        f'IF(OR(ISTEXT({a}),ISTEXT({b})),"",IF(ABS({a}-{b})<={bound}*MAX(ABS({a}),1E-290),"{AGREES}","{DIFFERS}"))'
-        for a, b in zip(ours.texts, theirs.texts, strict=True)
-    )
-    return Terms(
-        texts, [[_agree(a, b, allowed)] for a, b in zip(ours.values(), theirs.values(), strict=True)]
-    )
-
-
-def _agree(ours: Any, theirs: Any, allowed: float) -> str | None:
-    if not isinstance(ours, float) or not isinstance(theirs, float):
-        return None
-    return AGREES if abs(ours - theirs) <= allowed * max(abs(ours), 1e-290) else DIFFERS
