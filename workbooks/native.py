@@ -106,7 +106,7 @@ def _summed(plans: Sequence[Plan], rates: Sequence[Sequence[float]]) -> list[lis
     law: CountLaw = kind.law
     means = law.share(columns, given) * columns[law.amount]
     most = np.broadcast_to(law.most(columns), given.shape)
-    counts = [_counts(plans[i].rule, means[at], most[at]) for at, i in enumerate(owner)]
+    counts = [_counts(plans[own].rule, means[at], most[at]) for at, own in enumerate(owner.tolist())]
     sizes = [len(line) for line in counts]
     spread = {name: np.repeat(values, sizes) for name, values in columns.items()}
     points = law.exactly(np.concatenate(counts), spread, np.repeat(given, sizes))

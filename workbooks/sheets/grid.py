@@ -34,7 +34,7 @@ class Block:
     @property
     def right(self) -> str:
         """The column of the last true value."""
-        return get_column_letter(_FIRST_RATE + len(self.rates) - 1)
+        return str(get_column_letter(_FIRST_RATE + len(self.rates) - 1))
 
 
 @dataclass(slots=True)
