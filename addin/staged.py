@@ -18,10 +18,11 @@ from steelyard.addin.words import (
     StageRejects,
     StageSizes,
     Stop,
+    StopAt,
     Target,
     ToCatch,
 )
-from steelyard.core import double, outgoing, staging
+from steelyard.core import double, outgoing, sequential, staging
 from steelyard.core.abilities import average_or_nothing
 from steelyard.core.text import write_plan
 
@@ -61,6 +62,28 @@ def SY_DOUBLE(
 ) -> Cells:
     """Return the text of the double plan with the smallest average sample."""
     return write_plan(double.smallest_double(kind, claim, alpha, catch, power, ratio=ratio, lot=lot))
+
+
+@cell(
+    group="make",
+    help="Sequential plan with Wald's lines: the count is compared with two numbers after every item.",
+    example="=SY_SEQUENTIAL(1%,5%,10%,90%)",
+)
+def SY_SEQUENTIAL(
+    claim: ClaimText, alpha: Level, catch: ToCatch, power: Target, stop_at: StopAt | None = None
+) -> Cells:
+    """Return the text of a sequential plan."""
+    return write_plan(sequential.sequential_plan(claim, alpha, catch, power, stop_at))
+
+
+@cell(
+    group="explain",
+    help="The inspector's table: items inspected, acceptance and rejection number, wherever one changes.",
+    example="=SY_STEPS(A2)",
+)
+def SY_STEPS(plan: Plans) -> Cells:
+    """Return a row for each step: amount inspected, acceptance number, rejection number."""
+    return [list(row) for row in outgoing.steps(plan)]
 
 
 @cell(

@@ -137,7 +137,12 @@ Order = Annotated[
         one_of(ORDERS),
     ),
 ]
-Observed = Annotated[Any, Word("What the sample showed: the count found, or a range.", as_typed)]
+Observed = Annotated[
+    Any,
+    Word(
+        "What the sample showed: the count found, 2+1 by stages, 40 inspected 3 found; or a range.", as_typed
+    ),
+]
 KindName = Annotated[str, Word("Kind of plan: binomial, poisson, hypergeometric, …", text)]
 Number = Annotated[float, Word("A number.", number)]
 CellName = Annotated[str, Word("Address of the cell with the rate, as text such as B2.", text)]
@@ -230,6 +235,13 @@ Stop = Annotated[
     Word(
         "When inspection stops: stage-end, on-reject (as soon as the lot must fail) or on-decision.",
         one_of(STOPS),
+    ),
+]
+StopAt = Annotated[
+    int,
+    Word(
+        "The most items to inspect. Blank: twice the single plan for the same risks.",
+        lambda v, n: read_whole(as_typed(v, n), n, 1),
     ),
 ]
 StageRatio = Annotated[

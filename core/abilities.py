@@ -83,6 +83,14 @@ class Inspecting(Protocol):
         """Return how many defectives a lot keeps in what is not inspected, on average; none if it fails."""
 
 
+@runtime_checkable
+class Stepping(Protocol):
+    """A kind that may decide several times."""
+
+    def steps(self, plan: Plan) -> list[tuple[float, int | None, int | None]]:
+        """Return amounts inspected, and the acceptance and rejection numbers from there on; None for none."""
+
+
 def rule_making(kind: Kind) -> RuleMaking:
     """Return the kind as one whose rules follow from a claim and alpha, or raise `NoAnswer`."""
     if isinstance(kind, RuleMaking):
@@ -135,6 +143,13 @@ def inspecting(kind: Kind, what: str) -> Inspecting:
     if isinstance(kind, Inspecting):
         return kind
     raise _lacking(kind, what)
+
+
+def stepping(kind: Kind) -> Stepping:
+    """Return the kind as one that may decide several times; raise `NoAnswer` if it does once only."""
+    if isinstance(kind, Stepping):
+        return kind
+    raise _lacking(kind, "steps: it decides once, see SY_REGION")
 
 
 def _lacking(kind: Kind, what: str) -> NoAnswer:

@@ -182,7 +182,7 @@ class _Search:
     def _compare(self, stages: Floats, accept: int, last: int, rate: float, bound: float) -> Floats:
         """Return the signs of the power minus a bound; what floats can't tell is decided exactly."""
         power = self._power(stages, last, rate)[accept]
-        sign = np.sign(power - bound)
+        sign: Floats = np.sign(power - bound)
         for place in np.flatnonzero(np.abs(power - bound) <= _NEAR * bound):
             sign[place] = self._exact_sign(int(stages[place]), accept, last, rate, bound, sign[place])
         return sign

@@ -27,11 +27,6 @@ class Endings:
     rejected: Floats
     average: Floats
 
-    def left(self, rate: Floats, lot: float) -> Floats:
-        """Return the defectives that a lot from a process keeps in what is not inspected, on average."""
-        kept: Floats = rate * ((lot - self.amounts)[:, None] * self.accepted).sum(axis=0)
-        return kept
-
     def total(self, lot: float) -> Floats:
         """Return the expected amount inspected if every lot that fails is inspected whole."""
         total: Floats = (self.amounts[:, None] * self.accepted + lot * self.rejected).sum(axis=0)

@@ -25,11 +25,11 @@ from typing import Any
 
 import numpy as np
 
-from steelyard.core.abilities import Inspecting, averaging, inspecting
+from steelyard.core.abilities import Inspecting, averaging, inspecting, stepping
 from steelyard.core.endings import Endings
 from steelyard.core.errors import InvalidValue, NoAnswer
 from steelyard.core.kind import kind_of
-from steelyard.core.numbers import read_choice, read_number
+from steelyard.core.numbers import read_choice, read_number, read_whole
 from steelyard.core.parameter import Floats, Parameter
 from steelyard.core.plan import Plan
 
@@ -72,6 +72,18 @@ def endings(plan: Plan, rate: Any) -> Endings:
     """Return the ways in which a plan may end, at one rate."""
     kind = kind_of(plan)
     return inspecting(kind, "known ways to end").endings(plan, _read(plan, rate))
+
+
+def steps(plan: Plan) -> list[tuple[float, int | None, int | None]]:
+    """Return what the inspector needs at the bench: amounts inspected, acceptance and rejection numbers.
+
+    Examples
+    --------
+    >>> from steelyard.core.text import read_plan
+    >>> steps(read_plan("binomial | stages 20 then 20 | accept none then 1 | reject 2 then 2"))
+    [(20.0, None, 2), (40.0, 1, 2)]
+    """
+    return stepping(kind_of(plan)).steps(plan)
 
 
 def total_inspected(plan: Plan, rate: Any, lot: Any = None) -> float:
@@ -170,7 +182,7 @@ class Rectified:
         if kind.rises(plan) != (plan.verdict == "fail") or (plan.claim and plan.claim.side == "either"):
             message = "outgoing quality needs a plan that fails the lot on many defectives, and only then"
             raise NoAnswer(message)
-        if defectives == "removed" and math.isinf(kind.parameters[0].upper) and not kind.parameters[0].whole:
+        if defectives == "removed" and _counts_defects(plan):
             raise InvalidValue(
                 "defectives", "be replaced where defects are counted: they are corrected", defectives
             )
@@ -224,7 +236,8 @@ class Rectified:
     def _kept(self, rate: Floats) -> Floats:
         """Return how many defectives a lot keeps per unit of the rate: the fewer, the higher the rate."""
         left = self._kind.left(self.plan, rate, self.lot)
-        return np.divide(left, rate, out=np.full(rate.shape, self._per_rate), where=rate > 0)
+        kept: Floats = np.divide(left, rate, out=np.full(rate.shape, self._per_rate), where=rate > 0)
+        return kept
 
     def _grid(self) -> Floats:
         """Return rates from 0 to where hardly a lot passes."""
@@ -249,12 +262,20 @@ def _read(plan: Plan, rate: Any) -> Floats:
     return np.array([kind_of(plan).parameters[0].read(rate, plan.design)])
 
 
+def _counts_defects(plan: Plan) -> bool:
+    """Tell whether the plan counts defects per unit, of which there may be any number, and not defectives."""
+    parameter = kind_of(plan).parameters[0]
+    return math.isinf(parameter.upper) and not parameter.whole
+
+
 def _lot(plan: Plan, lot: Any, least: float) -> float:
     """Return the lot, which a plan for a finite lot knows itself."""
     own = plan.design.lot if kind_of(plan).grammar.extra == "lot" else None
     if lot is None and own is None:
         raise InvalidValue("lot", "be given for a plan that does not name it", None)
-    size = float(own) if lot is None else read_number(lot, "lot")
+    if lot is None:
+        return float(plan.design.lot)
+    size = read_number(lot, "lot") if _counts_defects(plan) else float(read_whole(lot, "lot", 1))
     if own is not None and size != own:
         raise InvalidValue("lot", f"be the plan's own {own}, or left out", lot)
     if not least <= size <= MOST_IN_LOT:

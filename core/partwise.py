@@ -65,23 +65,38 @@ class PartwiseKind(Kind):
 
     def average_amount(self, columns: Columns, *rates: Floats) -> Floats:
         """Return the expected amount inspected."""
-        return self._each(columns, rates[0], lambda plan, rate: self.endings(plan, rate).average)
+        return self._each(columns, rates[0], self.average)
+
+    def average(self, plan: Plan, rate: Floats) -> Floats:
+        """Return the expected amount inspected by one plan."""
+        looks = self.all_looks(plan)
+        course = self.course(plan, rate, looks)
+        return np.asarray(along(looks, course, self._spent(plan, course)).sum(axis=0))
 
     def endings(self, plan: Plan, rate: Floats) -> Endings:
         """Return the ways in which inspection may end."""
         looks = self.all_looks(plan)
         course = self.course(plan, rate, looks)
-        spent = course.spent_early if self.stops_early(plan) else course.spent
+        spent = self._spent(plan, course)
 
         def all_three(look: Look) -> Floats:
             return np.array([course.accepted(look), course.rejected(look), spent(look)])
 
         accepted, rejected, amounts = np.moveaxis(along(looks, course, all_three), 1, 0)
-        return Endings(np.array([look.amount for look in looks]), accepted, rejected, amounts.sum(axis=0))
+        ends = np.array([look.amount for look in looks[: len(accepted)]])
+        return Endings(ends, accepted, rejected, amounts.sum(axis=0))
 
     def left(self, plan: Plan, rate: Floats, lot: float) -> Floats:
         """Return the defectives expected in what passed lots have left uninspected."""
-        return self.endings(plan, rate).left(rate, lot)
+        looks = self.all_looks(plan)
+        course = self.course(plan, rate, looks)
+        return np.asarray(
+            rate * along(looks, course, lambda look: (lot - look.amount) * course.accepted(look)).sum(axis=0)
+        )
+
+    @abstractmethod
+    def steps(self, plan: Plan) -> list[tuple[float, int | None, int | None]]:
+        """Return amounts inspected, and the acceptance and reject numbers from there on."""
 
     def rises(self, plan: Plan) -> bool:
         """Tell that the power rises with the parameter."""
@@ -97,6 +112,9 @@ class PartwiseKind(Kind):
             symbol = self.parameters[0].symbol
             rule = f"have the form {symbol}<=… for a plan that rejects on many {self.grammar.wording.found}"
             raise InvalidValue("claim", rule, str(plan.claim))
+
+    def _spent(self, plan: Plan, course: Course) -> Callable[[Look], Floats]:
+        return course.spent_early if self.stops_early(plan) else course.spent
 
     def _sum(self, plan: Plan, rate: Floats, ending: str) -> Floats:
         looks = self.looks(plan)

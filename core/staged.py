@@ -81,6 +81,12 @@ class StagedKind(PartwiseKind):
         """Tell whether inspection stops inside a stage."""
         return bool(plan.design.stop != "stage-end")
 
+    def average(self, plan: Plan, rate: Floats) -> Floats:
+        """Return the expected amount inspected, also of lots that can only fail but not yet."""
+        if self.stops_early(plan) or None not in plan.rule.reject:
+            return super().average(plan, rate)
+        return self.endings(plan, rate).average
+
     def endings(self, plan: Plan, rate: Floats) -> Endings:
         """Return the ways in which inspection may end.
 
@@ -104,6 +110,13 @@ class StagedKind(PartwiseKind):
         if last > most:
             raise InvalidValue("reject", f"end with a count that {most:g} {self.things} can show", last)
 
+    def steps(self, plan: Plan) -> list[tuple[float, int | None, int | None]]:
+        """Return the numbers at the stages' ends."""
+        ends = accumulate(plan.design.stages)
+        return [
+            (float(end), *pair) for end, *pair in zip(ends, plan.rule.accept, plan.rule.reject, strict=True)
+        ]
+
     def told(self, plan: Plan) -> str:
         """Return what rejects the claim, stage by stage."""
         ends, found = list(accumulate(plan.design.stages)), self.grammar.wording.found
@@ -125,7 +138,7 @@ class StagedKind(PartwiseKind):
             )
         told += [_EARLY[plan.design.stop]] if self.stops_early(plan) else []
         if plan.claim is not None:
-            mean = float(self.endings(plan, np.array([plan.claim.value])).average[0])
+            mean = float(self.average(plan, np.array([plan.claim.value]))[0])
             told.append(f"Where the claim is just true, {mean:.4g} {self.things} are inspected on average.")
         return told
 

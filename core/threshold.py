@@ -185,7 +185,8 @@ class CountKind(ThresholdKind):
 
     def left(self, plan: Plan, rate: Floats, lot: float) -> Floats:
         """Return the defectives that a lot from a process keeps in what is not inspected, on average."""
-        return self.endings(plan, rate).left(rate, lot)
+        rest = lot - getattr(plan.design, self.law.amount)
+        return np.asarray(rate * rest * self.passing(self.columns([plan]), rate))
 
     def told(self, plan: Plan) -> str:
         """Return in words which counts reject the claim."""

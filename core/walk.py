@@ -135,10 +135,10 @@ class ProcessCourse(Course):
         return moved
 
     def _at_least(self, more: Counts, amount: float) -> Floats:
-        return self._part(amount - self.amount).upper[more[-1] : more[0] + 1][::-1]
+        return self._part(amount - self.amount).upper[np.maximum(more, 0)]
 
     def _wait(self, more: Counts, amount: float) -> Floats:
-        return self._part(amount - self.amount).waits[more[-1] : more[0] + 1][::-1]
+        return self._part(amount - self.amount).waits[np.maximum(more, 0)]
 
 
 @dataclass(frozen=True)

@@ -106,3 +106,23 @@ def test_the_double_plan_for_two_risks() -> None:
         "binomial | stages 69 then 69 | accept 0 then 3 | reject 4 then 4 | claim p<=0.01 | alpha 0.05"
     )
     assert call("SY_DOUBLE", ["binomial", 0.01, 0.05, 0.05, 0.9, 3]).startswith("SY: ratio must be 1 or 2")
+
+
+def test_a_sequential_plan_and_its_table() -> None:
+    plan = call("SY_SEQUENTIAL", [0.01, 0.05, 0.1, 0.9])
+    assert plan.startswith("binomial | sequential to 104 | accept x<=0.039747")
+    assert call("SY_SIZE", [plan]) <= 0.05 < 0.9 < call("SY_POWER", [plan, 0.1])
+    rows = call("SY_STEPS", [plan])
+    assert rows[:3] == [[1.0, None, 2], [20.0, None, 3], [24.0, 0, 3]]
+    assert rows[-1] == [104.0, 3, 4]
+    assert call("SY_STEPS", [DOUBLE]) == [[50.0, 1, 4], [100.0, 4, 5]]
+    assert (
+        call("SY_STEPS", [SINGLE])
+        == "SY: a plan of kind binomial has no steps: it decides once, see SY_REGION"
+    )
+    assert call("SY_DECIDE", [plan, "40 inspected 2 found"]) == "take the next item"
+    assert call("SY_NATIVE", [plan, "B2"]).startswith("SY: the spreadsheet's own functions cannot give")
+    assert call("SY_SEQUENTIAL", [0, 0.05, 0.1, 0.9]).startswith(
+        "SY: claim must be of the form p<=0.02, above 0"
+    )
+    assert call("SY_OUTGOING_LIMIT", [plan, 1000])[0][0] < 0.06

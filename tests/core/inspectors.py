@@ -6,10 +6,11 @@ and chances are fractions.
 
 from __future__ import annotations
 
-from collections.abc import Callable, Iterable, Iterator, Sequence
+from collections import Counter
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from fractions import Fraction
-from itertools import combinations, product
+from itertools import product
 from math import comb
 
 Items = Sequence[int]  # 1 is a defective
@@ -67,18 +68,34 @@ def sequential(slope: Fraction, low: Fraction, high: Fraction, most: int, at_end
     return inspect
 
 
-def process(items: int, rate: Fraction) -> Iterator[tuple[Fraction, Items]]:
-    """Yield every sequence of items from a process, with its chance."""
-    for sequence in product((0, 1), repeat=items):
-        yield rate ** sum(sequence) * (1 - rate) ** (items - sum(sequence)), sequence
+@dataclass(frozen=True)
+class Tally:
+    """The verdicts on all sequences of so many items, counted by verdict and defectives in the sequence."""
 
+    items: int
+    counts: Counter[tuple[Verdict, int]]
 
-def lots(items: int, defectives: int) -> Iterator[tuple[Fraction, Items]]:
-    """Yield every order of a lot's items, with its chance."""
-    for places in combinations(range(items), defectives):
-        yield Fraction(1, comb(items, defectives)), [int(place in places) for place in range(items)]
+    @classmethod
+    def of(cls, items: int, inspect: Inspector) -> Tally:
+        """Show every sequence to an inspector."""
+        sequences = product((0, 1), repeat=items)
+        return cls(items, Counter((inspect(sequence), sum(sequence)) for sequence in sequences))
 
+    def mean(self, rate: Fraction, question: Callable[[Verdict, int], int]) -> Fraction:
+        """Return the mean of a question about verdict and defectives, if items come from a process."""
+        return sum(
+            (
+                number * rate**ones * (1 - rate) ** (self.items - ones) * question(verdict, ones)
+                for (verdict, ones), number in self.counts.items()
+            ),
+            Fraction(0),
+        )
 
-def mean(lots: Iterable[tuple[Fraction, Items]], question: Callable[[Items], int]) -> Fraction:
-    """Return the mean of what a question answers about each lot."""
-    return sum((chance * question(items) for chance, items in lots), Fraction(0))
+    def mean_of_lots(self, defectives: int, question: Callable[[Verdict, int], int]) -> Fraction:
+        """Return the mean over all orders of a lot with so many defectives."""
+        answers = [
+            number * question(verdict, ones)
+            for (verdict, ones), number in self.counts.items()
+            if ones == defectives
+        ]
+        return Fraction(sum(answers), comb(self.items, defectives))

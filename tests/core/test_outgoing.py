@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from fractions import Fraction
+from functools import partial
 
 import inspectors
 import numpy as np
@@ -82,44 +84,33 @@ def texts(sizes: tuple, accept: tuple, reject: tuple, stop: str) -> str:
     return "stages {} | accept {} | reject {} | stop {}".format(*lists, stop)
 
 
-def leaving(every: list, inspect: inspectors.Inspector, size: int) -> dict[str, float]:
+def leaving(mean: Callable, size: int) -> dict[str, float]:
     """Return outgoing quality and total inspected, from what becomes of every lot."""
-
-    def left(items: inspectors.Items) -> int:
-        return sum(items) - inspect(items).found if inspect(items).passed else 0
-
-    def seen(items: inspectors.Items) -> int:
-        return inspect(items).items if inspect(items).passed else size
-
-    kept, came = inspectors.mean(every, left), inspectors.mean(every, sum)
+    kept = mean(lambda verdict, came: came - verdict.found if verdict.passed else 0)
+    came = mean(lambda verdict, came: came)
     removed = kept / (size - came + kept) if size - came + kept else Fraction(0)
-    return {
-        "replaced": float(kept / size),
-        "removed": float(removed),
-        "total": float(inspectors.mean(every, seen)),
-    }
+    total = mean(lambda verdict, came: verdict.items if verdict.passed else size)
+    return {"replaced": float(kept / size), "removed": float(removed), "total": float(total)}
 
 
 @pytest.mark.parametrize("stop", STOPS)
 @pytest.mark.parametrize("rule", RULES, ids=str)
 def test_an_inspector_who_meets_every_lot(rule: tuple, stop: str) -> None:
-    inspect = inspectors.staged(*rule, stop)
-    lot, sample = (
-        read_plan(f"hypergeometric | lot 10 | {texts(*rule, stop)}"),
-        read_plan(f"binomial | {texts(*rule, stop)}"),
-    )
+    lot = read_plan(f"hypergeometric | lot 10 | {texts(*rule, stop)}")
+    sample = read_plan(f"binomial | {texts(*rule, stop)}")
+    every = inspectors.Tally.of(10, inspectors.staged(*rule, stop))
     for defectives in (0, 1, 2, 5, 9, 10):
-        found = leaving(list(inspectors.lots(10, defectives)), inspect, 10)
+        found = leaving(partial(every.mean_of_lots, defectives), 10)
         assert outgoing(lot, defectives) == pytest.approx(found["replaced"], rel=1e-12, abs=0)
         assert outgoing(lot, defectives, None, "removed") == pytest.approx(found["removed"], rel=1e-12, abs=0)
         assert total_inspected(lot, defectives) == pytest.approx(found["total"], rel=1e-12)
     for rate in (Fraction(0), Fraction(1, 5), Fraction(7, 10), Fraction(1)):
-        found = leaving(list(inspectors.process(9, rate)), inspect, 9)
-        assert outgoing(sample, float(rate), 9) == pytest.approx(found["replaced"], rel=1e-12, abs=0)
-        assert outgoing(sample, float(rate), 9, "removed") == pytest.approx(
+        found = leaving(partial(every.mean, rate), 10)
+        assert outgoing(sample, float(rate), 10) == pytest.approx(found["replaced"], rel=1e-12, abs=0)
+        assert outgoing(sample, float(rate), 10, "removed") == pytest.approx(
             found["removed"], rel=1e-12, abs=0
         )
-        assert total_inspected(sample, float(rate), 9) == pytest.approx(found["total"], rel=1e-12)
+        assert total_inspected(sample, float(rate), 10) == pytest.approx(found["total"], rel=1e-12)
 
 
 def test_a_single_plan_is_a_plan_of_one_stage() -> None:

@@ -108,47 +108,47 @@ def texts(sizes: tuple[int, ...], accept: tuple, reject: tuple, stop: str) -> st
     return "stages {} | accept {} | reject {} | stop {}".format(*lists, stop)
 
 
+def fails(verdict: inspectors.Verdict, _: int) -> int:
+    return not verdict.passed
+
+
+def looked_at(verdict: inspectors.Verdict, _: int) -> int:
+    return verdict.items
+
+
 @pytest.mark.parametrize("stop", STOPS)
 @pytest.mark.parametrize("rule", RULES, ids=str)
 def test_an_inspector_who_meets_every_sequence(rule: tuple, stop: str) -> None:
-    inspect = inspectors.staged(*rule, stop)
+    every = inspectors.Tally.of(sum(rule[0]), inspectors.staged(*rule, stop))
     plan = read_plan(f"binomial | {texts(*rule, stop)}")
-    total = sum(rule[0])
     for rate in (0.0, 0.15, 0.5, 0.9, 1.0):
-        every = list(inspectors.process(total, typed(rate)))
-        fails = inspectors.mean(every, lambda items: not inspect(items).passed)
-        looked_at = inspectors.mean(every, lambda items: inspect(items).items)
-        assert power(plan, rate) == pytest.approx(float(fails), rel=1e-13, abs=0)
-        assert acceptance(plan, rate) == pytest.approx(float(1 - fails), rel=1e-13, abs=0)
-        assert average_sample(plan, rate) == pytest.approx(float(looked_at), rel=1e-13)
+        failed, items = (every.mean(typed(rate), question) for question in (fails, looked_at))
+        assert power(plan, rate) == pytest.approx(float(failed), rel=1e-13, abs=0)
+        assert acceptance(plan, rate) == pytest.approx(float(1 - failed), rel=1e-13, abs=0)
+        assert average_sample(plan, rate) == pytest.approx(float(items), rel=1e-13)
 
 
 @pytest.mark.parametrize("stop", STOPS)
 @pytest.mark.parametrize("rule", RULES, ids=str)
 def test_an_inspector_who_meets_every_lot(rule: tuple, stop: str) -> None:
-    inspect = inspectors.staged(*rule, stop)
-    plan = read_plan(f"hypergeometric | lot 12 | {texts(*rule, stop)}")
-    for defectives in (0, 1, 3, 6, 11, 12):
-        every = list(inspectors.lots(12, defectives))
-        fails = inspectors.mean(every, lambda items: not inspect(items).passed)
-        looked_at = inspectors.mean(every, lambda items: inspect(items).items)
-        assert power(plan, defectives) == pytest.approx(float(fails), rel=1e-13, abs=0)
-        assert acceptance(plan, defectives) == pytest.approx(float(1 - fails), rel=1e-13, abs=0)
-        assert average_sample(plan, defectives) == pytest.approx(float(looked_at), rel=1e-13)
+    every = inspectors.Tally.of(11, inspectors.staged(*rule, stop))
+    plan = read_plan(f"hypergeometric | lot 11 | {texts(*rule, stop)}")
+    for defectives in (0, 1, 3, 6, 10, 11):
+        failed, items = (every.mean_of_lots(defectives, question) for question in (fails, looked_at))
+        assert power(plan, defectives) == pytest.approx(float(failed), rel=1e-13, abs=0)
+        assert acceptance(plan, defectives) == pytest.approx(float(1 - failed), rel=1e-13, abs=0)
+        assert average_sample(plan, defectives) == pytest.approx(float(items), rel=1e-13)
 
 
 def test_the_ways_to_end_are_those_of_the_inspector() -> None:
     rule = ((3, 4, 3), (0, 0, 3), (None, 4, 4))
-    inspect = inspectors.staged(*rule, "stage-end")
-    every = list(inspectors.process(10, Fraction(3, 10)))
+    every = inspectors.Tally.of(10, inspectors.staged(*rule, "stage-end"))
     found = endings(read_plan(f"binomial | {texts(*rule, 'stage-end')}"), 0.3)
     for place, amount in enumerate(found.amounts):
         for passed, chances in ((True, found.accepted), (False, found.rejected)):
-            exact = inspectors.mean(
-                every,
-                lambda items, passed=passed, amount=amount: (
-                    (inspect(items).passed, inspect(items).items) == (passed, amount)
-                ),
+            exact = every.mean(
+                Fraction(3, 10),
+                lambda verdict, _, way=(passed, amount): (verdict.passed, verdict.items) == way,
             )
             assert chances[place, 0] == pytest.approx(float(exact), rel=1e-13, abs=0)
 
