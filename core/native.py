@@ -1,8 +1,9 @@
 """Powers as formulas of a spreadsheet's own functions, so that anybody can check a plan without this package.
 
-Small upper tails are lost in ``1 - BINOM.DIST(...)``; therefore every upper tail is the lower tail of what
-was not found (good items), or for Poisson counts the gamma distribution. Newer functions carry the prefix
-``_xlfn.`` that files need. Where a function refuses a value or gives an error at the ends of the range, an
+Small upper tails are lost in ``1 - BINOM.DIST(...)``, and ``BINOM.DIST(n - c, n, 1 - p, TRUE)`` loses them at
+rates of some ppm, where ``1 - p`` keeps few digits of p. So the upper tails of binomial and Poisson counts
+are written as the beta and gamma distributions that they equal, those of lots as the lower tail of the good
+items. Newer functions carry the prefix ``_xlfn.`` that files need. Where a function refuses a value, an
 ``IF`` stands before it.
 """
 
@@ -13,6 +14,7 @@ import re
 from steelyard.core.numbers import write_number
 from steelyard.core.plan import Reject
 
+MOST_DRAWN = 1000  # beyond, HYPGEOM.DIST of LibreOffice 7.4 gives wrong numbers, 0 for 1 among them
 _PLAIN = re.compile(r"('[^']+'!|\w+!)?\$?[A-Za-z]{1,3}\$?\d+")
 
 
@@ -22,14 +24,15 @@ def binomial_native(n: int, rule: Reject, cell: str) -> str:
     Examples
     --------
     >>> binomial_native(50, Reject(None, 4), "B2")
-    '_xlfn.BINOM.DIST(46,50,1-B2,TRUE)'
+    '_xlfn.BETA.DIST(B2,4,47,TRUE)'
     """
     rate = operand(cell)
     tails = []
     if rule.low is not None:
-        tails.append(f"_xlfn.BINOM.DIST({_whole(rule.low)},{n},{rate},TRUE)")
+        tails.append(f"_xlfn.BINOM.DIST({int(rule.low)},{n},{rate},TRUE)")
     if rule.high is not None:
-        tails.append(f"_xlfn.BINOM.DIST({_whole(n - rule.high)},{n},1-{rate},TRUE)")
+        high = int(rule.high)
+        tails.append(f"_xlfn.BETA.DIST({rate},{high},{n - high + 1},TRUE)")
     return "+".join(tails)
 
 
@@ -45,20 +48,22 @@ def poisson_native(units: float, rule: Reject, cell: str) -> str:
     mean = f"{write_number(units)}*{rate}"
     tails = []
     if rule.low is not None:
-        tails.append(f"IF({rate}=0,1,_xlfn.POISSON.DIST({_whole(rule.low)},{mean},TRUE))")
+        tails.append(f"IF({rate}=0,1,_xlfn.POISSON.DIST({int(rule.low)},{mean},TRUE))")
     if rule.high is not None:
-        tails.append(f"_xlfn.GAMMA.DIST({mean},{_whole(rule.high)},1,TRUE)")
+        tails.append(f"_xlfn.GAMMA.DIST({mean},{int(rule.high)},1,TRUE)")
     return "+".join(tails)
 
 
-def lot_native(lot: int, n: int, rule: Reject, cell: str) -> str:
-    """Return the power for the number of defectives D in a cell.
+def lot_native(lot: int, n: int, rule: Reject, cell: str) -> str | None:
+    """Return the power for the number of defectives D in a cell; None for more than `MOST_DRAWN` items.
 
     Examples
     --------
     >>> lot_native(60, 32, Reject(None, 1), "B2")
     'IF(B2<1,0,IF(60-B2<=31,1,_xlfn.HYPGEOM.DIST(31,32,60-B2,60,TRUE)))'
     """
+    if n > MOST_DRAWN:
+        return None
     defectives = operand(cell)
     tails = []
     if rule.low is not None:
@@ -75,7 +80,3 @@ def lot_native(lot: int, n: int, rule: Reject, cell: str) -> str:
 def operand(cell: str) -> str:
     """Return a reference as it is, and any other expression in brackets."""
     return cell if _PLAIN.fullmatch(cell) else f"({cell})"
-
-
-def _whole(count: float) -> str:
-    return str(int(count))

@@ -326,7 +326,7 @@ def test_the_power_of_the_truth_is_asked_for() -> None:
 
 def test_native_formulas_and_algebra_go_by_what_is_found() -> None:
     plan = read_plan("binomial | n 13 | misses 0.1 | false-alarms 0.01 | reject x>=2")
-    assert kind_of(plan).native(plan, "B2") == "_xlfn.BINOM.DIST(11,13,1-(0.01+0.89*B2),TRUE)"
+    assert kind_of(plan).native(plan, "B2") == "_xlfn.BETA.DIST((0.01+0.89*B2),2,12,TRUE)"
     assert kind_of(plan).algebra(plan) == "1 - (1-f)^13 - 13 f (1-f)^12, with f = 0.01 + 0.89 p"
     plan = read_plan("poisson | units 120 | misses 0.2 | reject x>=3")
     assert kind_of(plan).native(plan, "B2") == "_xlfn.GAMMA.DIST(120*(0.8*B2),3,1,TRUE)"

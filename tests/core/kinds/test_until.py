@@ -279,7 +279,7 @@ def test_sentences_and_formulas() -> None:
     assert region(plan) == "inspected ≤ 41" and all(len(sentence) <= 255 for sentence in told)
     kind = kind_of(plan)
     assert kind.algebra(plan) == "1 - (1-p)^41 - 41 p (1-p)^40 - 820 p^2 (1-p)^39"
-    assert kind.native(plan, "B2") == "_xlfn.BINOM.DIST(38,41,1-B2,TRUE)"
+    assert kind.native(plan, "B2") == "_xlfn.BETA.DIST(B2,3,39,TRUE)"
     assert kind.native(read_plan(MANY), "B2") == "_xlfn.BINOM.DIST(0,149,B2,TRUE)"
     assert kind.algebra(read_plan(MANY)) is None
     assert "A lot that passes has shown, with confidence 95.07 %: defect rate below 2 %." in sentences(
