@@ -6,8 +6,30 @@ from typing import Any
 
 from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
-from steelyard.addin.words import Level, MeanClaim, Measured, PlanningSigma, Side, Sigma, SigmaClaim, Verdict
-from steelyard.core import making
+from steelyard.addin.words import (
+    CapabilityTarget,
+    Confidence,
+    Figures,
+    FractionClaim,
+    KnownSigma,
+    Level,
+    LowerLimit,
+    MeanClaim,
+    Measured,
+    MeasureName,
+    PlanningSigma,
+    Plans,
+    Several,
+    Side,
+    Sigma,
+    SigmaClaim,
+    Target,
+    ToCatch,
+    UpperLimit,
+    Verdict,
+)
+from steelyard.core import making, measuring
+from steelyard.core.evidence import estimate
 from steelyard.core.text import write_plan
 
 
@@ -63,3 +85,46 @@ def SY_SPREAD(
 ) -> Cells:
     """Return the text of a plan for a standard deviation."""
     return _planned("spread", {"n": n}, claim, alpha, side, verdict)
+
+
+@cell(
+    group="make",
+    help="The smallest plan by measurement (k method) that keeps alpha at the claim and reaches the power.",
+    example="=SY_VARIABLES(1%,5%,5%,90%)",
+)
+def SY_VARIABLES(
+    claim: FractionClaim,
+    alpha: Level,
+    catch: ToCatch,
+    power: Target,
+    sigma: KnownSigma | None = None,
+    lower: LowerLimit | None = None,
+    upper: UpperLimit | None = None,
+) -> Cells:
+    """Return the text of the smallest plan by measurement that meets two risks."""
+    return write_plan(measuring.variables_plan(claim, alpha, catch, power, sigma, lower, upper))
+
+
+@cell(
+    group="make",
+    help="What a sample must show of a capability: Ppk, tolerance factors, the plan, the test in words.",
+    example="=SY_CAPABILITY(30,1.33,95%)",
+)
+def SY_CAPABILITY(
+    n: Several, target: CapabilityTarget, confidence: Confidence = 0.95, measure: MeasureName = "ppk"
+) -> Cells:
+    """Return labels and numbers, then sentences."""
+    found = measuring.capability(n, target, confidence, measure)
+    numbers = {"Ppk of the sample": found.one / 3, "k, one limit": found.one, "k, two limits": found.two}
+    rows = [*numbers.items(), ("plan", write_plan(found.plan))]
+    return [*map(list, rows), *([sentence, None] for sentence in found.sentences())]
+
+
+@cell(
+    group="ask",
+    help="Estimated fraction outside the limits after the sample: unbiased, with the least variance.",
+    example='=SY_ESTIMATE(A2,"mean 499.7 s 0.31")',
+)
+def SY_ESTIMATE(plan: Plans, observed: Figures) -> Cells:
+    """Return the estimated fraction outside the limits."""
+    return estimate(plan, observed)

@@ -261,3 +261,27 @@ Wanted = Annotated[
         lambda v, name: read_whole(as_typed(v, name), name, 1),
     ),
 ]
+FractionClaim = Annotated[
+    Any,
+    Word("What is claimed of the fraction outside the limits: 1% or p<=1%; p>=5% to show less.", as_typed),
+]
+LowerLimit = Annotated[float, Word("The lower limit, in the unit of the measurement.", number)]
+UpperLimit = Annotated[float, Word("The upper limit, in the unit of the measurement.", number)]
+KnownSigma = Annotated[
+    float, Word("The known standard deviation, where it is not taken from the sample.", number)
+]
+Figures = Annotated[Any, Word('What was measured: "mean 499.7 s 0.31".', as_typed)]
+Several = Annotated[
+    int, Word("Items to measure: a whole number from 2.", lambda v, n: read_whole(as_typed(v, n), n, 2))
+]
+CapabilityTarget = Annotated[
+    float, Word("The Ppk to be shown, such as 1.33; or the coverage, such as 95%.", number)
+]
+MeasureName = Annotated[str, Word("What the target is: ppk or coverage.", one_of(("ppk", "coverage")))]
+Wanted = Annotated[
+    int,
+    Word(
+        "Defectives to be found before inspection ends: a whole number from 1.",
+        lambda v, name: read_whole(as_typed(v, name), name, 1),
+    ),
+]

@@ -49,6 +49,14 @@ class Judging(Deciding, Protocol):
 
 
 @runtime_checkable
+class Estimating(Deciding, Protocol):
+    """A kind that estimates the fraction outside limits from what was measured."""
+
+    def estimate(self, plan: Plan, observed: Any) -> float:
+        """Return the estimated fraction."""
+
+
+@runtime_checkable
 class Remarking(Protocol):
     """A kind whose plans need a word more than the sentences that every plan gets."""
 
@@ -110,6 +118,13 @@ def judging(kind: Kind, what: str) -> Judging:
     if isinstance(kind, Judging):
         return kind
     raise _lacking(kind, what)
+
+
+def estimating(kind: Kind) -> Estimating:
+    """Return the kind as one that estimates a fraction; raise `NoAnswer` if it does not."""
+    if isinstance(kind, Estimating):
+        return kind
+    raise _lacking(kind, "estimate of a fraction outside limits")
 
 
 def sizable(kind: Kind) -> Sizable:

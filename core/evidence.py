@@ -11,7 +11,7 @@ import math
 from functools import lru_cache
 from typing import Any
 
-from steelyard.core.abilities import Judging, deciding, judging
+from steelyard.core.abilities import Judging, deciding, estimating, judging
 from steelyard.core.errors import InvalidValue, NoAnswer
 from steelyard.core.kind import claim_of, kind_of
 from steelyard.core.numbers import read_choice, read_probability, typed
@@ -108,6 +108,34 @@ def limit(plan: Plan, observed: Any, end: Any, confidence: Any = None) -> float:
     else:
         raise InvalidValue("confidence", "be given for a plan without alpha", None)
     return kind.limit(plan, kind.read_observed(observed, plan), end, miss)
+
+
+def estimate(plan: Plan, observed: Any) -> float:
+    """Return the estimated fraction outside the plan's limits: unbiased, with the least variance.
+
+    Parameters
+    ----------
+    plan : Plan
+        By measurement, with the values of its limits.
+    observed : str or float
+        The mean, and s where sigma is unknown, e.g. ``"mean 10.1 s 0.2"``.
+
+    Raises
+    ------
+    InvalidValue
+        When a limit has no value, or the sample is too small.
+    NoAnswer
+        When the kind has no limits.
+
+    Examples
+    --------
+    >>> from steelyard.core.text import read_plan
+    >>> plan = read_plan("variables | n 20 | upper 10.5 | sigma unknown | accept (upper-mean)/s>=1.926")
+    >>> round(estimate(plan, "mean 10.1 s 0.2"), 6)
+    0.020156
+    """
+    kind = estimating(kind_of(plan))
+    return kind.estimate(plan, kind.read_observed(observed, plan))
 
 
 def _judging(plan: Plan, what: str) -> Judging:

@@ -175,15 +175,25 @@ class Kind(ABC):
             return bool(plan.claim.side == "above")
         return bool(plan.rule.high is not None)
 
-    def needs(self, plan: Plan) -> int:
-        """Return how many parameters a question must give; a plan may know some, such as its sigma."""
+    def takes(self, plan: Plan) -> tuple[int, int]:
+        """Return how many parameters a question gives at least and at most; a plan may know its sigma."""
         del plan
-        return sum(not parameter.optional for parameter in self.parameters)
+        return sum(not parameter.optional for parameter in self.parameters), len(self.parameters)
+
+    def region(self, plan: Plan) -> str:
+        """Return what rejects the claim, with mathematical signs."""
+        texts = self.grammar.write_rule(plan.rule)
+        parts = texts.values() if len(texts) == 1 else [f"{word} {text}" for word, text in texts.items()]
+        return "; ".join(parts).replace("<=", " ≤ ").replace(">=", " ≥ ")
 
     def told(self, plan: Plan) -> str:
-        """Return in words what rejects the claim; empty where the plan's text says it well enough."""
-        del plan
-        return ""
+        """Return in words what rejects the claim."""
+        return self.region(plan)
+
+    def critical_value(self, plan: Plan) -> float:
+        """Return the one number that decides; here there is none, unless the rule is a `Reject`."""
+        message = f"a plan of kind {plan.kind} has no single critical value; see SY_REGION"
+        raise NoAnswer(message)
 
     def given_rule(self, rule: Reject) -> Any:
         """Return a rule of this kind from critical values given from outside."""

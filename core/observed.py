@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from dataclasses import dataclass
 from typing import Any
 
 from steelyard.core.errors import InvalidValue
@@ -11,6 +12,14 @@ from steelyard.core.numbers import read_number, read_whole
 MOST_COUNTED = 2_000_000_000
 _MEASURED = re.compile(r"([a-z]+)\s*=?\s*([-+]?[\d.]+(?:e[-+]?\d+)?)", re.IGNORECASE)
 _EXAMPLES = {"mean": "499.7", "s": "0.31"}
+
+
+@dataclass(frozen=True, slots=True)
+class Sample:
+    """The mean of a sample, and its standard deviation, or the known one."""
+
+    mean: float
+    s: float
 
 
 def read_count(value: Any, most: float) -> float:

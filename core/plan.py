@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 import re
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
 from typing import Any
 
 from steelyard.core.errors import InvalidValue
@@ -131,10 +131,14 @@ class Plan:
 
 def same_rule(one: Any, other: Any) -> bool:
     """Tell whether two rules are the same; the last digits of a measured end differ between machines."""
-    if not (isinstance(one, Reject) and isinstance(other, Reject)):
-        return bool(one == other)
-    ends = ((one.low, other.low), (one.high, other.high))
-    return all(a is b if a is None or b is None else math.isclose(a, b, rel_tol=1e-12) for a, b in ends)
+    if type(one) is not type(other):
+        return False
+    pairs = ((getattr(one, field.name), getattr(other, field.name)) for field in fields(one))
+    return all(math.isclose(a, b, rel_tol=1e-12) if _measured(a, b) else a == b for a, b in pairs)
+
+
+def _measured(*values: Any) -> bool:
+    return all(isinstance(value, float) for value in values)
 
 
 def split_claim(text: str) -> tuple[str, str, str]:

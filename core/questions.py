@@ -18,7 +18,8 @@ from steelyard.core.plan import Plan, Reject
 
 def _rates(plan: Plan, rates: tuple[Any, ...]) -> list[Floats]:
     kind = kind_of(plan)
-    parameters, needed = kind.parameters, kind.needs(plan)
+    needed, most = kind.takes(plan)
+    parameters = kind.parameters[:most]
     given = [rate for rate in rates if rate is not None]
     if not needed <= len(given) <= len(parameters):
         names = " and ".join(parameter.symbol for parameter in parameters)
@@ -117,8 +118,7 @@ def critical(plan: Plan, end: str | None = None) -> float:
     """
     rule = plan.rule
     if not isinstance(rule, Reject):
-        message = f"a plan of kind {plan.kind} has no single critical value; see SY_REGION"
-        raise NoAnswer(message)
+        return kind_of(plan).critical_value(plan)
     if end is None:
         if rule.low is not None and rule.high is not None:
             raise InvalidValue("end", "be lower or upper for a plan that rejects at both ends", None)
@@ -139,6 +139,4 @@ def region(plan: Plan) -> str:
     >>> region(read_plan("binomial | n 80 | reject x<=30 or x>=50"))
     'x ≤ 30 or x ≥ 50'
     """
-    texts = kind_of(plan).grammar.write_rule(plan.rule)
-    parts = texts.values() if len(texts) == 1 else [f"{word} {text}" for word, text in texts.items()]
-    return "; ".join(parts).replace("<=", " ≤ ").replace(">=", " ≥ ")
+    return kind_of(plan).region(plan)

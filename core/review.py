@@ -91,7 +91,7 @@ def claim_sentence(plan: Plan) -> str:
 def rule_sentence(plan: Plan) -> str:
     """Return the decision rule as the inspector reads it."""
     fate, other = ("fails", "passes") if plan.verdict == "fail" else ("passes", "fails")
-    when = kind_of(plan).told(plan) or region(plan)
+    when = kind_of(plan).told(plan)
     return f"Rule: the claim is rejected, and the lot {fate}, on {when}; otherwise the lot {other}."
 
 

@@ -89,5 +89,16 @@ def student_quantile(prob: ArrayLike, df: ArrayLike, end: str) -> Floats:
     return _floats(low if end == "low" else -low)
 
 
+def beta_at_most(x: ArrayLike, shape: ArrayLike) -> Floats:
+    """Return P(B <= x) of a beta variable with two equal shapes; 0 and 1 outside of 0 to 1.
+
+    Examples
+    --------
+    >>> round(float(beta_at_most(0.25, 4.0)), 10)
+    0.0705566406
+    """
+    return _floats(special.betainc(shape, shape, np.clip(x, 0.0, 1.0)))
+
+
 def _floats(values: Any) -> Floats:
     return np.asarray(values, dtype=float)

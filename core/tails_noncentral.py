@@ -28,6 +28,7 @@ from numpy.typing import ArrayLike
 from scipy import special  # noqa: TID251 - this module wraps it for noncentral t
 
 from steelyard.core.parameter import Floats
+from steelyard.core.roots import bracket, root
 
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(48)
 _DROP = 42.0  # e^-42 of the peak is less than the rounding error of the sum
@@ -37,6 +38,7 @@ _FARTHEST = 1e15
 _FAR = 1e60  # beyond, the tail is 0 or 1 and squares overflow
 _FLAT = 1e-30  # a slope of Phi that leaves it constant over all y of weight
 _CHUNK = 256  # points at a time, so that their nodes stay in the cache
+_TINY = 1e-300
 _ROOT_TWO = math.sqrt(2.0)
 
 
@@ -78,6 +80,29 @@ def student_at_least(t: ArrayLike, df: ArrayLike, delta: ArrayLike = 0.0) -> Flo
     return student_at_most(-np.asarray(t, dtype=float), df, -np.asarray(delta, dtype=float))
 
 
+def student_quantile(prob: ArrayLike, df: ArrayLike, delta: ArrayLike, end: str) -> Floats:
+    """Return the t with P(T <= t) = prob (end ``"low"``) or P(T >= t) = prob (``"high"``), noncentral T.
+
+    Examples
+    --------
+    >>> round(float(student_quantile(0.05, 19, 5.731358, "high")) / 20**0.5, 3)
+    1.926
+    """
+    prob, df, delta = np.broadcast_arrays(*(np.asarray(value, dtype=float) for value in (prob, df, delta)))
+    if end == "high":
+        return -student_quantile(prob, df, -delta, "low")
+    sign = np.where(prob <= 0.5, 1.0, -1.0)  # the smaller tail decides
+    target = np.minimum(prob, 1 - prob)
+
+    def surplus(t: Floats) -> Floats:
+        """Return by how much the tail is off, in logarithms that stay finite; rising in t."""
+        tail = student_at_most(sign * t, df, sign * delta)
+        return np.asarray(sign * np.log(np.maximum(tail, _TINY) / target))
+
+    width = np.sqrt(1 + delta * delta / (2 * df))
+    return root(surplus, *bracket(surplus, delta + special.ndtri(prob) * width, 0.1 * width))
+
+
 def _lower(t: Floats, df: Floats, delta: Floats) -> Floats:
     delta = np.clip(delta, -_FAR, _FAR)
     start, stop = _range(t, df, delta)
@@ -91,7 +116,7 @@ def _lower(t: Floats, df: Floats, delta: Floats) -> Floats:
     density = np.exp(power - df * away * (1 + away / 2))
     values = special.ndtr(t * away + (t - delta)) * density
     total = ((values * _WEIGHTS).sum(axis=-1) * half).sum(axis=0)
-    return np.minimum(total * density_factor(df[:, 0]), 1.0)
+    return np.asarray(np.minimum(total * density_factor(df[:, 0]), 1.0))
 
 
 def density_factor(df: ArrayLike) -> Floats:

@@ -25,7 +25,7 @@ from steelyard.core.measured import MOST_MEASURED, Measure, MeasuredKind, read_i
 from steelyard.core.native_t import t_power
 from steelyard.core.need import Need
 from steelyard.core.numbers import read_number, write_number
-from steelyard.core.observed import read_measured
+from steelyard.core.observed import Sample, read_measured
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.plan import Claim, Plan
 from steelyard.core.tails_noncentral import student_at_least, student_at_most
@@ -47,14 +47,6 @@ class UnknownSigma:
             raise InvalidValue("n", f"be a whole number from 2 to {MOST_MEASURED}", self.n)
         if self.planning_sigma is not None and not 0 < self.planning_sigma < math.inf:
             raise InvalidValue("planning-sigma", "be greater than 0", self.planning_sigma)
-
-
-@dataclass(frozen=True, slots=True)
-class Sample:
-    """The mean and the standard deviation of a sample."""
-
-    mean: float
-    s: float
 
 
 class StudentLaw(ContinuousLaw):
@@ -134,9 +126,9 @@ class StudentKind(MeasuredKind):
         columns["claim"] = np.array([claim_of(plan).value for plan in plans])
         return columns
 
-    def needs(self, plan: Plan) -> int:
-        """Return 1 where the plan knows a planning sigma, otherwise 2."""
-        return 2 if plan.design.planning_sigma is None else 1
+    def takes(self, plan: Plan) -> tuple[int, int]:
+        """Return that the mean will do where the plan knows a planning sigma."""
+        return 2 if plan.design.planning_sigma is None else 1, 2
 
     def verify(self, plan: Plan) -> None:
         """Refuse also a plan without a claim, from which t is measured."""
@@ -148,9 +140,10 @@ class StudentKind(MeasuredKind):
     def read_observed(self, value: Any, plan: Plan) -> Sample:
         """Return an observed mean and standard deviation, such as ``"mean 499.7 s 0.31"``."""
         del plan
-        return Sample(*read_measured(value, "mean", "s"))
+        mean, s = read_measured(value, "mean", "s")
+        return Sample(mean, s)
 
-    def outcome(self, plan: Plan, observed: Sample) -> bool:
+    def outcome(self, plan: Plan, observed: Sample) -> bool | str:
         """Tell whether t rejects the claim."""
         return super().outcome(plan, _t(plan, observed))
 
