@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from steelyard.addin import (
     ask,
+    assurance,
     clustered,
     demonstration,
     explain,
@@ -42,4 +43,4 @@ def call(name: str, arguments: list[Cells]) -> Cells:
     return entry.function(*arguments)
 
 
-del ask, clustered, demonstration, explain, inspected, lots, make, measured, picking, staged, together, until
+del ask, assurance, clustered, demonstration, explain, inspected, lots, make, measured, picking, staged, together, until

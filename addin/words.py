@@ -9,6 +9,7 @@ from typing import Annotated, Any
 
 from steelyard.addin.catalogue import Word
 from steelyard.addin.plans import plan_of
+from steelyard.core.assurance import COUNTED
 from steelyard.core.errors import InvalidValue
 from steelyard.core.numbers import read_choice, read_number, read_probability, read_whole, write_number
 from steelyard.core.outgoing import FOUND
@@ -254,13 +255,6 @@ Found = Annotated[
     str,
     Word("What happens to defectives that are found: replaced by good items, or removed.", one_of(FOUND)),
 ]
-Wanted = Annotated[
-    int,
-    Word(
-        "Defectives to be found before inspection ends: a whole number from 1.",
-        lambda v, name: read_whole(as_typed(v, name), name, 1),
-    ),
-]
 FractionClaim = Annotated[
     Any,
     Word("What is claimed of the fraction outside the limits: 1% or p<=1%; p>=5% to show less.", as_typed),
@@ -284,4 +278,26 @@ Wanted = Annotated[
         "Defectives to be found before inspection ends: a whole number from 1.",
         lambda v, name: read_whole(as_typed(v, name), name, 1),
     ),
+]
+Seed = Annotated[
+    int,
+    Word(
+        "Any whole number from 0: note it, so that the draw can be repeated.",
+        lambda v, n: read_whole(as_typed(v, n), n),
+    ),
+]
+PriorA = Annotated[
+    float,
+    Word("First number of the rate's law: defectives already seen, in a beta or gamma law; above 0.", number),
+]
+PriorB = Annotated[
+    float,
+    Word(
+        "Second number: good items already seen; for defects, the units in which prior_a were seen. Above 0.",
+        number,
+    ),
+]
+Counted = Annotated[
+    str,
+    Word("all: every rejection; right: only those of a claim that is false.", one_of(COUNTED)),
 ]

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import Any, Protocol, runtime_checkable
 
 import numpy as np
@@ -13,6 +13,8 @@ from steelyard.core.kind import Kind
 from steelyard.core.need import Need
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.plan import Claim, Plan
+from steelyard.core.priors import Prior
+from steelyard.core.walk import Look
 
 
 @runtime_checkable
@@ -62,6 +64,17 @@ class Remarking(Protocol):
 
     def remarks(self, plan: Plan) -> list[str]:
         """Return sentences for a report, each at most 255 characters."""
+
+
+@runtime_checkable
+class Forecasting(Protocol):
+    """A kind whose power has a closed form over an uncertain rate."""
+
+    def prior(self, plan: Plan, a: float, b: float) -> Prior:
+        """Return what is known of the rate; raise `NoAnswer` where no family of priors fits."""
+
+    def paths(self, plan: Plan) -> Sequence[tuple[Sequence[Look], bool]]:
+        """Return looks that reject: from their reject number on (True), or up to their accept number."""
 
 
 @runtime_checkable
@@ -165,6 +178,13 @@ def stepping(kind: Kind) -> Stepping:
     if isinstance(kind, Stepping):
         return kind
     raise _lacking(kind, "steps: it decides once, see SY_REGION")
+
+
+def forecasting(kind: Kind) -> Forecasting:
+    """Return the kind as one whose power can be averaged; raise `NoAnswer` if it can't be."""
+    if isinstance(kind, Forecasting):
+        return kind
+    raise _lacking(kind, "closed form for its power over an uncertain rate")
 
 
 def _lacking(kind: Kind, what: str) -> NoAnswer:

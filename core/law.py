@@ -11,9 +11,10 @@ from typing import Any, Protocol
 import numpy as np
 
 from steelyard.core import limits, splits
-from steelyard.core.errors import InvalidValue
+from steelyard.core.errors import InvalidValue, NoAnswer
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.plan import Reject
+from steelyard.core.priors import Prior
 from steelyard.core.splits import ONE_SIDED
 
 _TINY = 1e-300
@@ -222,6 +223,20 @@ class CountLaw(Law):
         """Return a formula of the spreadsheet's own functions for the power at `cell`, or None."""
         del design, rule, cell
         return None
+
+    def prior(self, design: Any, a: float, b: float) -> Prior:
+        """Return what `a` and `b` say of an uncertain rate, in the family of priors that fits the law.
+
+        Raises
+        ------
+        NoAnswer
+            When there is no such family.
+        """
+        del design, a, b
+        message = (
+            "no closed form for the power over an uncertain rate where inspection errs or defects cluster"
+        )
+        raise NoAnswer(message)
 
     @abstractmethod
     def limit(self, row: Mapping[str, Any], x: float, end: str, miss: float, split: str) -> float:

@@ -13,6 +13,7 @@ from steelyard.core.kind import Kind
 from steelyard.core.law import CountLaw
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.plan import Plan
+from steelyard.core.priors import Prior
 from steelyard.core.walk import Course, Look, ProcessCourse, along
 
 
@@ -97,6 +98,14 @@ class PartwiseKind(Kind):
     @abstractmethod
     def steps(self, plan: Plan) -> list[tuple[float, int | None, int | None]]:
         """Return amounts inspected, and the acceptance and reject numbers from there on."""
+
+    def prior(self, plan: Plan, a: float, b: float) -> Prior:
+        """Return what is known of the rate."""
+        return self.law.prior(plan.design, a, b)
+
+    def paths(self, plan: Plan) -> Sequence[tuple[Sequence[Look], bool]]:
+        """Return the looks, which reject many."""
+        return [(self.looks(plan), True)]
 
     def rises(self, plan: Plan) -> bool:
         """Tell that the power rises with the parameter."""

@@ -17,10 +17,12 @@ from steelyard.core.numbers import read_number, write_number
 from steelyard.core.observed import read_count
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.plan import Claim, Plan, Reject, same_rule
+from steelyard.core.priors import Prior
 from steelyard.core.regions import design_row, least_amount
 from steelyard.core.requirements import one_sided_amount
 from steelyard.core.splits import ENDS, ONE_SIDED
 from steelyard.core.two_sided import two_sided_amount
+from steelyard.core.walk import Look
 
 
 class ThresholdKind(Kind):
@@ -187,6 +189,18 @@ class CountKind(ThresholdKind):
         """Return the defectives that a lot from a process keeps in what is not inspected, on average."""
         rest = lot - getattr(plan.design, self.law.amount)
         return np.asarray(rate * rest * self.passing(self.columns([plan]), rate))
+
+    def prior(self, plan: Plan, a: float, b: float) -> Prior:
+        """Return what is known of the rate."""
+        return self.law.prior(plan.design, a, b)
+
+    def paths(self, plan: Plan) -> Sequence[tuple[Sequence[Look], bool]]:
+        """Return one look for each end that rejects."""
+        rule, amount = plan.rule, getattr(plan.design, self.law.amount)
+        high = [] if rule.high is None else [((Look(amount, int(rule.high) - 1, int(rule.high)),), True)]
+        return high + (
+            [] if rule.low is None else [((Look(amount, int(rule.low), int(rule.low) + 1),), False)]
+        )
 
     def told(self, plan: Plan) -> str:
         """Return in words which counts reject the claim."""

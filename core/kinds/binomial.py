@@ -16,6 +16,7 @@ from steelyard.core.law import CountLaw, ExactLaw, RateLaw, running_means
 from steelyard.core.numbers import read_whole
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.plan import Reject
+from steelyard.core.priors import BetaPrior, Prior
 from steelyard.core.threshold import CountKind, threshold_fields
 
 MOST_ITEMS = 10_000_000
@@ -83,6 +84,11 @@ class BinomialLaw(RateLaw):
         """Return the most items of one plan."""
         del columns
         return MOST_ITEMS
+
+    def prior(self, design: Any, a: float, b: float) -> Prior:
+        """Return a beta law of the defect rate."""
+        del design
+        return BetaPrior(a, b)
 
     def algebra(self, design: Any, rule: Reject) -> str:
         """Return the power as a function of p."""

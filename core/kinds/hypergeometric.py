@@ -17,6 +17,7 @@ from steelyard.core.law import CountLaw, ExactLaw
 from steelyard.core.numbers import read_number, read_whole, typed
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.plan import Claim, Plan, Reject, split_claim
+from steelyard.core.priors import LotPrior, Prior
 from steelyard.core.splits import Truth, first_whole
 from steelyard.core.threshold import CountKind, threshold_fields
 
@@ -149,11 +150,15 @@ class HypergeometricLaw(CountLaw):
         """Return the proportion of defectives in what is left of the lot."""
         return np.maximum(rate - x, 0.0) / np.maximum(columns["lot"] - columns["n"], 1.0)
 
+    def prior(self, design: Any, a: float, b: float) -> Prior:
+        """Return a beta-binomial law of the defectives in the lot."""
+        return LotPrior(a, b, design.lot)
+
     def algebra(self, design: Any, rule: Reject) -> str:
         """Return the power as a function of D."""
         return algebra.lot_power(design.lot, design.n, rule)
 
-    def native(self, design: Any, rule: Reject, cell: str) -> str:
+    def native(self, design: Any, rule: Reject, cell: str) -> str | None:
         """Return a formula for the power at the number of defectives in a cell."""
         return native.lot_native(design.lot, design.n, rule, cell)
 

@@ -17,6 +17,7 @@ from steelyard.core.law import CountLaw, ExactLaw, UnboundedCountLaw, running_me
 from steelyard.core.numbers import read_number, typed
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.plan import Claim, Reject
+from steelyard.core.priors import GammaPrior, Prior
 from steelyard.core.threshold import CountKind, threshold_fields
 
 MOST_UNITS = 1e9
@@ -75,6 +76,11 @@ class PoissonLaw(UnboundedCountLaw):
         """Return the most units of one plan."""
         del columns
         return MOST_UNITS
+
+    def prior(self, design: Any, a: float, b: float) -> Prior:
+        """Return a gamma law of the defects per unit."""
+        del design
+        return GammaPrior(a, b)
 
     def algebra(self, design: Any, rule: Reject) -> str:
         """Return the power as a function of the rate."""

@@ -15,6 +15,7 @@ from __future__ import annotations
 
 import math
 import re
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -29,9 +30,11 @@ from steelyard.core.need import Need
 from steelyard.core.numbers import read_whole, write_number
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.plan import Claim, Plan, Reject
+from steelyard.core.priors import BetaPrior, Prior
 from steelyard.core.requirements import Requirements
 from steelyard.core.splits import FALLING_ENDS, ONE_SIDED, Tail, Truth, compare, first_whole, within
 from steelyard.core.threshold import ThresholdKind, threshold_fields
+from steelyard.core.walk import Look
 
 MOST_DEFECTIVES = 10_000
 _BINOMIAL = BinomialLaw()
@@ -235,6 +238,20 @@ class UntilKind(ThresholdKind):
             message = f"no p-value or limit before {plan.design.until} defectives are found"
             raise NoAnswer(message)
         return observed.inspected
+
+    def prior(self, plan: Plan, a: float, b: float) -> Prior:
+        """Return a beta law of the defect rate."""
+        del plan
+        return BetaPrior(a, b)
+
+    def paths(self, plan: Plan) -> Sequence[tuple[Sequence[Look], bool]]:
+        """Return how many defectives among a number of items tell that it was reached, or not."""
+        rule, wanted, found = plan.rule, plan.design.until, []
+        if rule.low is not None:
+            found.append(((Look(rule.low, wanted - 1, wanted),), True))
+        if rule.high is not None:
+            found.append(((Look(rule.high - 1, wanted - 1, wanted),), False))
+        return found
 
     def algebra(self, plan: Plan) -> str | None:
         """Return the power of a plan that rejects few items."""
