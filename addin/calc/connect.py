@@ -93,7 +93,12 @@ def _run(tool: Path, *arguments: str) -> str:
     """Run LibreOffice's tool and return what it printed."""
     try:
         done = subprocess.run(
-            [str(tool), *arguments], capture_output=True, text=True, timeout=_PATIENCE, check=False
+            [str(tool), *arguments],
+            capture_output=True,
+            text=True,
+            errors="replace",
+            timeout=_PATIENCE,
+            check=False,
         )
     except subprocess.TimeoutExpired:
         message = f"unopkg {arguments[0]} took more than {_PATIENCE} s: close LibreOffice and try again"

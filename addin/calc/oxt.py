@@ -11,7 +11,6 @@ from __future__ import annotations
 import json
 import os
 import sys
-import tempfile
 import zipfile
 from importlib.resources import files
 from pathlib import Path
@@ -108,15 +107,14 @@ def write_oxt(path: str | os.PathLike[str], interpreter: str | None = None) -> P
         The file written.
     """
     target = Path(path)
-    handle, temporary = tempfile.mkstemp(suffix=".oxt", dir=target.parent)
+    temporary = target.with_name(f"{target.name}.new")
     try:
-        with os.fdopen(handle, "wb") as file, zipfile.ZipFile(file, "w", zipfile.ZIP_DEFLATED) as bundle:
+        with zipfile.ZipFile(temporary, "w", zipfile.ZIP_DEFLATED) as bundle:
             for name, content in parts(interpreter).items():
                 bundle.writestr(_fixed(name), content)
-        Path(temporary).replace(target)
-    except BaseException:
-        Path(temporary).unlink(missing_ok=True)
-        raise
+        temporary.replace(target)
+    finally:
+        temporary.unlink(missing_ok=True)
     return target
 
 

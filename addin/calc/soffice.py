@@ -163,7 +163,9 @@ def _run(command: list[str], timeout: float) -> str:
     """Run LibreOffice to its end; the first start of a new profile may ask (exit 81) to be started again."""
     for _ in range(2):
         try:
-            done = subprocess.run(command, capture_output=True, text=True, timeout=timeout, check=False)
+            done = subprocess.run(
+                command, capture_output=True, text=True, errors="replace", timeout=timeout, check=False
+            )
         except subprocess.TimeoutExpired:
             message = f"LibreOffice did not finish within {timeout:g} s"
             raise SteelyardError(message) from None

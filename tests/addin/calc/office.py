@@ -77,6 +77,11 @@ class Office:
         finally:
             self._stack.close()
 
+    @property
+    def pid(self) -> int:
+        """Process number of LibreOffice, or of the program that watches over it."""
+        return self._office.pid
+
     def __getattr__(self, command: str) -> Any:
         def run(*arguments: Any) -> Any:
             self._send(command, *arguments)
