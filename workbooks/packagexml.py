@@ -11,6 +11,8 @@ from steelyard.workbooks.xmlbytes import Element, find_elements, splice, start_t
 
 _TYPES = "[Content_Types].xml"
 _SHEET_TYPE = "application/vnd.openxmlformats-officedocument.spreadsheetml.worksheet+xml"
+_PLAIN_STYLE = dict.fromkeys(("numFmtId", "fontId", "fillId", "borderId", "xfId"), "0")
+_WRAPPING = {"horizontal": "left", "vertical": "top", "wrapText": "1"}
 _BEFORE_CALCULATION = {"sheets", "functionGroups", "externalReferences", "definedNames"}
 _LONGEST_TITLE = 31
 
@@ -130,6 +132,28 @@ class Package:
         reference = next(name for name in sheets[0].attributes if name.rpartition(":")[2] == "id")
         number = 1 + max(int(sheet.attributes["sheetId"]) for sheet in sheets)
         self._append(self.workbook, "sheet", {"name": title, "sheetId": str(number), reference: key})
+
+    def add_wrapping_style(self) -> int:
+        """Add a style of the first font for long texts; return its number, 0 if the book has no styles."""
+        for relation in self.relations(self.workbook):
+            if relation.kind == "styles":
+                return self._add_style(relation.part)
+        return 0
+
+    def _add_style(self, part: str) -> int:
+        xml = self.parts[part]
+        group = find_elements(xml, {"cellXfs"})[0]
+        known = [xf for xf in find_elements(xml, {"xf"}) if group.start < xf.start < group.stop]
+        opening = start_tag(group.tag, group.attributes | {"count": str(len(known) + 1)}, ">")
+        xf = start_tag(f"{group.prefix}xf", _PLAIN_STYLE | {"applyAlignment": "1"}, ">")
+        alignment = start_tag(f"{group.prefix}alignment", _WRAPPING)
+        new = xf + alignment + f"</{group.prefix}xf>".encode()
+        edits = [
+            (group.start, xml.index(b">", group.start) + 1, opening),
+            (known[-1].stop, known[-1].stop, new),
+        ]
+        self.parts[part] = splice(xml, edits)
+        return len(known)
 
     def drop(self, kind: str) -> None:
         """Remove the parts to which the workbook has relations of a kind."""

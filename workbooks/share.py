@@ -213,12 +213,12 @@ def _add_sheets(book: OpenedBook, ours: Sequence[Formula], source: Path, shared:
     package = book.package
     rows = [_formula_row(book, formula) for formula in ours]
     titles = [package.free_title(_FORMULAS), package.free_title(_PROVENANCE)]
-    listing = plain_sheet(("Sheet", "Cell", "Formula", "Value"), rows, (26, 12, 70, 60), package.namespace())
-    package.add_sheet(titles[0], listing)
-    facts = _facts(source, shared, titles[0])
+    look = package.namespace(), package.add_wrapping_style()
     package.add_sheet(
-        titles[1], plain_sheet(("Share copy", "made by Steelyard"), facts, (34, 90), package.namespace())
+        titles[0], plain_sheet(("Sheet", "Cell", "Formula", "Value"), rows, (24, 10, 62, 44), *look)
     )
+    facts = _facts(source, shared, titles[0])
+    package.add_sheet(titles[1], plain_sheet(("Share copy", "made by Steelyard"), facts, (34, 90), *look))
 
 
 def _formula_row(book: OpenedBook, formula: Formula) -> list[Value]:

@@ -6,6 +6,7 @@ XML.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Container, Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from typing import Any
@@ -15,6 +16,7 @@ from openpyxl.utils import get_column_letter
 from openpyxl.worksheet.formula import ArrayFormula
 
 from steelyard.core.errors import SteelyardError
+from steelyard.workbooks.measure import line_count, text_width
 from steelyard.workbooks.pieces import Fault, Value
 from steelyard.workbooks.styles import FONT, SIZE
 from steelyard.workbooks.xmlbytes import Edit, end_of, parser, run, splice, start_tag
@@ -29,6 +31,7 @@ class _Every:
 
 EVERY: Container[str] = _Every()
 
+_USUAL_SIZE, _LINE = 11, 15  # points: letters and lines of a book's own first font
 _BOLD = f'<rPr><b/><sz val="{SIZE}"/><rFont val="{FONT}"/></rPr>'
 
 
@@ -226,9 +229,13 @@ def _cell_xml(cell: Any, stored: Mapping[str, Value]) -> str:
 
 
 def plain_sheet(
-    headings: Sequence[str], rows: Iterable[Sequence[Value]], widths: Sequence[float], namespace: str
+    headings: Sequence[str],
+    rows: Iterable[Sequence[Value]],
+    widths: Sequence[float],
+    namespace: str,
+    style: int = 0,
 ) -> bytes:
-    """Return a worksheet of texts and numbers that needs no style of its book.
+    """Return a worksheet of texts and numbers that needs nothing of its book but one style.
 
     Parameters
     ----------
@@ -240,6 +247,8 @@ def plain_sheet(
         Of the columns.
     namespace : str
         Main namespace of the book: the strict form of the format has another than the usual one.
+    style : int
+        Number of the book's style for the rows, which get the heights of texts that it wraps.
     """
     columns = "".join(
         f'<col min="{place}" max="{place}" width="{width}" customWidth="1"/>'
@@ -247,7 +256,10 @@ def plain_sheet(
     )
     heads = [(' t="inlineStr"', f"<is><r>{_BOLD}<t>{escape(text)}</t></r></is>") for text in headings]
     written = [_row_xml(1, heads)]
-    written += [_row_xml(n, [_content(value, "") for value in cells]) for n, cells in enumerate(rows, 2)]
+    for number, values in enumerate(rows, 2):
+        lines = max(map(_lines, values, widths), default=1)
+        cells = [(f' s="{style}"{kind}', body) for kind, body in (_content(value, "") for value in values)]
+        written.append(_row_xml(number, cells, f' ht="{lines * _LINE}"' if lines > 1 else ""))
     return (
         '<?xml version="1.0" encoding="UTF-8" standalone="yes"?>\n'
         f"<worksheet xmlns={quoteattr(namespace)}>"
@@ -259,12 +271,19 @@ def plain_sheet(
     ).encode()
 
 
-def _row_xml(number: int, contents: Iterable[tuple[str, str]]) -> str:
+def _lines(value: Value, width: float) -> int:
+    """Return how many lines a value takes; a formula has few blanks, so it breaks anywhere."""
+    if not isinstance(value, str):
+        return 1
+    return max(line_count(value, width, _USUAL_SIZE), math.ceil(text_width(value, _USUAL_SIZE) / width))
+
+
+def _row_xml(number: int, contents: Iterable[tuple[str, str]], height: str = "") -> str:
     cells = [
-        f'<c r="{get_column_letter(place)}{number}"{kind}>{body}</c>'
-        for place, (kind, body) in enumerate(contents, 1)
+        f'<c r="{get_column_letter(place)}{number}"{attributes}>{body}</c>'
+        for place, (attributes, body) in enumerate(contents, 1)
     ]
-    return f'<row r="{number}">{"".join(cells)}</row>'
+    return f'<row r="{number}"{height}>{"".join(cells)}</row>'
 
 
 def fill_rows(xml: bytes, rows: bytes) -> bytes:

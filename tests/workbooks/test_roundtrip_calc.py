@@ -143,6 +143,7 @@ def test_a_copy_of_a_book_edited_in_calc(folder, refreshed):
         "[Content_Types].xml",
         "xl/workbook.xml",
         "xl/_rels/workbook.xml.rels",
+        "xl/styles.xml",
     }
     calculated = shown(soffice.recalculate(copy, folder / "opened.xlsx", with_addin=False))
     frozen = {formula.place for formula in OpenedBook(book).formulas() if formula.ours}

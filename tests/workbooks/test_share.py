@@ -26,7 +26,10 @@ from steelyard.workbooks.xmlbytes import splice
 
 pytestmark = pytest.mark.filterwarnings("ignore:Sparkline Group extension")
 
-ADDED = {"Formulas", "Provenance"}
+STYLE = (
+    b'<xf numFmtId="0" fontId="0" fillId="0" borderId="0" xfId="0" applyAlignment="1">'
+    b'<alignment horizontal="left" vertical="top" wrapText="1"/></xf>'
+)
 
 
 @pytest.fixture(scope="module")
@@ -72,8 +75,11 @@ def assert_only_ours_changed(original, copy):
     for part, data in old.items():
         if ours.get(part):
             assert without(new[part], ours[part]) == without(data, ours[part]), part
-        elif part in new and part != "[Content_Types].xml" and "workbook.xml" not in part:
-            assert new[part] == data or "/tables/" in part, part
+        elif part in new and not re.search(r"Content_Types|workbook\.xml|/tables/|styles", part):
+            assert new[part] == data, part
+    count = int(re.search(rb'<cellXfs count="([0-9]+)"', old["xl/styles.xml"])[1])
+    styles = old["xl/styles.xml"].replace(b'cellXfs count="%d"' % count, b'cellXfs count="%d"' % (count + 1))
+    assert new["xl/styles.xml"] == styles.replace(b"</cellXfs>", STYLE + b"</cellXfs>")
     return old, new
 
 
@@ -108,7 +114,8 @@ def test_only_cells_with_our_formulas_change(plan_book, plan_copy):
     assert len(new) == len(old) + 2
     changed = {part for part in old if old[part] != new[part]}
     sheets = {part for part, refs in ours_of(OpenedBook(plan_book)).items() if refs}
-    assert changed - sheets == {"[Content_Types].xml", "xl/workbook.xml", "xl/_rels/workbook.xml.rels"}
+    registries = {"[Content_Types].xml", "xl/workbook.xml", "xl/_rels/workbook.xml.rels", "xl/styles.xml"}
+    assert changed - sheets == registries
 
 
 def test_readers_see_the_values_of_the_book(plan_book, plan_copy):
