@@ -22,6 +22,7 @@ ERRORS = frozenset(
     ["#N/A", "#VALUE!", "#REF!", "#DIV/0!", "#NUM!", "#NAME?", "#NULL!", "#SPILL!", "#CALC!", "#GETTING_DATA"]
 )
 REFUSED = "SY: "
+FAULT = "an internal fault"
 _CACHED = 65_536
 
 
@@ -87,6 +88,8 @@ def _scalar(function: Callable[..., Any], arguments: Sequence[Argument]) -> Call
             return refusal(error)
         except (RecursionError, MemoryError, ArithmeticError):
             return refusal("the question is too large to compute")
+        except Exception as error:  # noqa: BLE001 - a cell must never show a traceback
+            return refusal(f"{FAULT} ({type(error).__name__}): please report the formula")
 
     return one
 

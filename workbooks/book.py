@@ -16,10 +16,13 @@ from steelyard.workbooks.house import Book
 from steelyard.workbooks.plans import Planned
 from steelyard.workbooks.requests import Problem
 from steelyard.workbooks.sheets.checks import add_checks
+from steelyard.workbooks.sheets.comparison import add_comparison
 from steelyard.workbooks.sheets.grid import add_grid
 from steelyard.workbooks.sheets.justification import Source, add_justification
 from steelyard.workbooks.sheets.readme import add_readme, fill_readme
 from steelyard.workbooks.sheets.register import Register
+from steelyard.workbooks.sheets.results import add_results
+from steelyard.workbooks.sheets.sizes import add_sizes
 
 JUSTIFIED_BY_DEFAULT = 30
 
@@ -105,6 +108,8 @@ def build_book(
     register = Register(book, planned)
     add_grid(book, register)
     agreeing, checked = add_checks(book, register)
+    for add in (add_comparison, add_sizes, add_results):
+        add(book, planned)
     steps = progress(chosen, "justifications") if progress else chosen
     titles = [add_justification(book, register, place, origin).title for place in steps]
     summary = Summary(len(planned), len(titles), len(problems), agreeing, checked)

@@ -15,6 +15,9 @@ SHEETS = (
     ("Register", "A row for each characteristic: request, plan, risks, checks. Start here."),
     ("Power grid", "Power of every plan over a range of true values, with charts."),
     ("Checks", "Every plan by the add-in and by the spreadsheet's own functions."),
+    ("Comparison", "Up to six plans side by side: items, risks, curves, where they cross."),
+    ("Sample size", "Size and power against the number of items, for one requirement."),
+    ("Results log", "A row for each inspected lot: decision, p-value, limits, running totals."),
 )
 STEPS = (
     "Edit the yellow cells of the Register; plan, risks and curves follow when Steelyard's add-in is loaded.",
@@ -52,7 +55,8 @@ def fill_readme(
     for number, step in enumerate(STEPS, 1):
         sheet.add(Put(number, "unit"), Put(step, "text", 2))
     _section(sheet, "Sheets")
-    for title, text in SHEETS:
+    present = sheet.book.workbook.sheetnames
+    for title, text in (entry for entry in SHEETS if entry[0] in present):
         sheet.add(None, Put(title, "link", link=f"'{title}'!A1"), Put(text, "text"))
     for title in justified:
         quoted = title.replace("'", "''")
