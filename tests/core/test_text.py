@@ -126,7 +126,7 @@ def test_percent_is_taken_in_decimal_arithmetic() -> None:
         ),
         ("binomial | n 50 | n 60 | reject x>=4", "n must be written once, but got n 50 and n 60"),
         ("binomial | n | reject x>=4", "n must have a value, but got nothing"),
-        ("binomial | reject x>=4", "plan must say n or stages, but got nothing"),
+        ("binomial | reject x>=4", "plan must say n or stages or sequential, but got nothing"),
         ("hypergeometric | n 5 | reject x>=4", "lot must be written in the plan, but got nothing"),
         ("binomial | n 50", "reject must be written in the plan, e.g. reject x>=4, but got nothing"),
         ("binomial | n 0 | reject x>=4", "n must be a whole number from 1 to 10000000, but got 0"),
