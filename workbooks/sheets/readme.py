@@ -23,7 +23,7 @@ STEPS = (
     "Edit the yellow cells of the Register; plan, risks and curves follow when Steelyard's add-in is loaded.",
     "Read the remark on each plan, and where a size was fixed the shortfall: how much power is missing.",
     "Print the justifications, fill in what they leave open, have them signed before any sample is taken.",
-    "Without the add-in the numbers stay as they were computed; green columns need no add-in at all.",
+    "Without the add-in the numbers stay until the program recalculates; green formulas are its own.",
     "To add characteristics, or to change their kind, extend the request list and build the book anew.",
 )
 CAUTIONS = (
@@ -54,13 +54,6 @@ def fill_readme(
     _section(sheet, "How to use this book")
     for number, step in enumerate(STEPS, 1):
         sheet.add(Put(number, "unit"), Put(step, "text", 2))
-    _section(sheet, "Sheets")
-    present = sheet.book.workbook.sheetnames
-    for title, text in (entry for entry in SHEETS if entry[0] in present):
-        sheet.add(None, Put(title, "link", link=f"'{title}'!A1"), Put(text, "text"))
-    for title in justified:
-        quoted = title.replace("'", "''")
-        sheet.add(None, Put(title, "link", link=f"'{quoted}'!A1"), Put("Justification to be signed.", "text"))
     _section(sheet, "Colours")
     for style, text in LEGEND:
         sheet.add(None, Put("1.234" if style != "writing" else None, style), Put(text, "text"))
@@ -74,6 +67,13 @@ def fill_readme(
     _section(sheet, "Origin")
     sheet.add(None, Put("Request list", "label"), Put(source.name, "text"))
     sheet.add(None, Put("SHA-256 of the list", "label"), Put(source.digest, "text"))
+    _section(sheet, "Sheets")
+    present = sheet.book.workbook.sheetnames
+    for title, text in (entry for entry in SHEETS if entry[0] in present):
+        sheet.add(None, Put(title, "link", link=f"'{title}'!A1"), Put(text, "text"))
+    for title in justified:
+        quoted = title.replace("'", "''")
+        sheet.add(None, Put(title, "link", link=f"'{quoted}'!A1"), Put("Justification to be signed.", "text"))
     sheet.protect()
     sheet.print_setup(area=f"A1:C{sheet.next_row - 1}")
 
