@@ -20,7 +20,7 @@ from steelyard.core.need import Need
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.spans import Risk, Rows
 
-_HALVINGS = 12
+_HALVINGS = 6
 _AT_ONCE = 64  # counts to look at in one call, at the least
 _TINY = 1e-300
 _REAL_STEPS = 2.0**46  # so many steps to the largest size that can be needed, where it may be any real number
@@ -68,7 +68,7 @@ class Requirements:
             turns = spans.turn(np.concatenate([rows, rows + most]), np.concatenate([count, count]))
             return turns[: rows.size], turns[rows.size :]
 
-        return self._opening(spans, _least(last, ends), last)
+        return self._amount(_least(last, ends)[1] * spans.step[:most])
 
     def lasting(self) -> Floats:
         """Return the amounts from which on the requirements are met for good; NaN beyond the largest."""
@@ -82,7 +82,9 @@ class Requirements:
             before = np.where(count > 1, turns[rows.size :], 0.0)
             return -turns[: rows.size], -before - 2
 
-        return self._opening(spans, np.maximum(last + 1 - _least(last, gaps), 1.0), last)
+        gap, opens = _least(last, gaps)
+        steps = np.where(gap <= last, -opens, 1.0)  # without any gap the first size of all will do
+        return self._amount(steps * spans.step[:most])
 
     def last_counts(self) -> Floats:
         """Return critical counts behind which every span overlaps the one before.
@@ -131,11 +133,8 @@ class Requirements:
             return np.ones(self.claim.shape)
         return 2.0 ** np.ceil(np.log2(self._enough(self.balance()) / _REAL_STEPS))
 
-    def _opening(self, spans: Risk, count: Floats, last: Floats) -> Floats:
-        """Return the amounts at which the spans of some counts open, NaN beyond the last count or amount."""
-        found = np.flatnonzero(count <= last)
-        amount = np.full(count.shape, np.nan)
-        amount[found] = spans.turn(found, count[found]) * spans.step[found]
+    def _amount(self, amount: Floats) -> Floats:
+        """Return the amounts that are allowed, NaN for the others."""
         return np.where(amount <= self.law.largest(self.columns), amount, np.nan)
 
 
@@ -147,8 +146,8 @@ def one_sided_amount(law: CountLaw, row: Columns, need: Need, lasting: bool) -> 
     return float((requirement.lasting() if lasting else requirement.first())[0])
 
 
-def _least(last: Floats, ends: Ends) -> Floats:
-    """Return the least count whose interval is not empty; ``last + 1`` where there is none.
+def _least(last: Floats, ends: Ends) -> tuple[Floats, Floats]:
+    """Return the least count whose interval is not empty, and where that opens.
 
     Parameters
     ----------
@@ -157,30 +156,33 @@ def _least(last: Floats, ends: Ends) -> Floats:
     ends : callable
         From requirements and counts to the interval's two ends, neither of which falls as the count grows.
         So all counts between `a` and `b` are settled where `a` opens after `b` closes.
+
+    Returns
+    -------
+    count, opens : ndarray of float
+        ``last + 1`` and infinity where all intervals are empty.
     """
-    best, rows = last + 1, np.arange(last.size)
-    a, b = np.ones(last.shape), np.array(last)
-    both = _look(best, np.tile(rows, 2), np.concatenate([a, b]), ends)
-    opens, closes = both[0][: rows.size], both[1][rows.size :]
+    best, start, rows = last + 1, np.full(last.shape, np.inf), np.arange(last.size)
+    a, b = np.zeros(last.shape), last + 1  # on both sides just beyond, where nothing is known yet
+    opens, closes = -start, start.copy()
+
+    def look(rows: Rows, count: Floats) -> tuple[Floats, Floats]:
+        """Evaluate counts, and note the least whose interval is not empty."""
+        opens, closes = ends(rows, count)
+        fits = opens <= closes
+        np.minimum.at(best, rows[fits], count[fits])
+        np.minimum.at(start, rows[fits], opens[fits])
+        return opens, closes
+
     while True:
         keep = (b - a > 1) & (opens <= closes) & (a + 1 < best[rows])
         rows, a, b, opens, closes = (part[keep] for part in (rows, a, b, opens, closes))
         if not rows.size:
-            return best
+            return best, start
         pieces = np.minimum(b - a, max(2, _AT_ONCE // rows.size)).astype(np.intp)
         whole = np.repeat(np.arange(rows.size), pieces)
         place = np.arange(whole.size) - np.repeat(np.cumsum(pieces) - pieces, pieces)
-        left, right = (
-            a[whole] + np.floor((b - a)[whole] * part / pieces[whole]) for part in (place, place + 1)
-        )
-        rows, a, b, opens, closes = rows[whole], left, right, opens[whole], closes[whole]
+        edges = (a[whole] + np.floor((b - a)[whole] * part / pieces[whole]) for part in (place, place + 1))
+        rows, a, b, opens, closes = rows[whole], *edges, opens[whole], closes[whole]
         inner = np.flatnonzero(place + 1 < pieces[whole])
-        opens[inner + 1], closes[inner] = _look(best, rows[inner], b[inner], ends)
-
-
-def _look(best: Floats, rows: Rows, count: Floats, ends: Ends) -> tuple[Floats, Floats]:
-    """Evaluate counts and note those whose interval is not empty."""
-    opens, closes = ends(rows, count)
-    fits = opens <= closes
-    np.minimum.at(best, rows[fits], count[fits])
-    return opens, closes
+        opens[inner + 1], closes[inner] = look(rows[inner], b[inner])

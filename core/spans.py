@@ -82,7 +82,7 @@ class Risk:
         return Risk(self.law, columns, self.end, *parts)
 
     def passed(self, size: Floats, count: Floats) -> tuple[Truth, Floats]:
-        """Tell which sizes lie at or beyond the turn, and how many steps away it seems."""
+        """Tell which sizes lie at or beyond the turn, and return the tails there."""
         columns = {**self.columns, self.law.amount: size * self.step}
         tail = (
             self.law.at_least(count, columns, self.rate)
@@ -94,16 +94,16 @@ class Risk:
         if near.size:
             sign[near] = self._rows(near)._exact_sign(size[near], count[near])
         risen = sign if self.end == "high" else -sign
-        passed = np.where(self.closing, risen > 0, risen >= 0)
-        return passed, self._newton(tail, columns, count, passed)
+        return np.where(self.closing, risen > 0, risen >= 0), tail
 
     def _exact_sign(self, size: Floats, count: Floats) -> NDArray[Any]:
         columns = {**self.columns, self.law.amount: size * self.step}
         x = count if self.end == "high" else count - 1
         return compare(self.law, columns, self.rate, [(1, self.end, x)], self.bound)
 
-    def _newton(self, tail: Floats, columns: Columns, count: Floats, passed: Truth) -> Floats:
-        """Return Newton's step on the logarithm of the tail or its complement, whichever shall be small."""
+    def newton(self, size: Floats, count: Floats, tail: Floats, passed: Truth) -> Floats:
+        """Return the size that Newton's method proposes, on the logarithm of the tail or its complement."""
+        columns = {**self.columns, self.law.amount: size * self.step}
         pace = self.law.pace(count - 1, columns, self.rate)
         speed = pace * self.step * self.law.exactly(count - 1, columns, self.rate)
         speed = speed if self.end == "high" else -speed
@@ -113,30 +113,37 @@ class Risk:
         speed = np.where(small, speed, -speed)
         still = np.abs(speed) < _TINY
         move = np.log(aim / now) * now / np.where(still, 1.0, speed)
-        return np.where(still, np.where(passed, -np.inf, np.inf), move)
+        return np.ceil(size + np.where(still, np.where(passed, -np.inf, np.inf), move))
 
 
 def _first_size(risk: Risk, count: Floats, largest: Floats) -> Floats:
     """Return the first size at or beyond the turn: Newton's method inside a bracket that never lets go."""
     bounded = np.isfinite(risk.law.most({risk.law.amount: largest}))
-    before = np.where(bounded, count - 1, np.zeros(count.shape))
     beyond = np.array(np.broadcast_to(largest + 1, count.shape))
-    before = np.minimum(before, largest)
-    size = _guess(risk, count, bounded)
-    rounds = 0
-    while (open_ := np.flatnonzero(beyond - before > 1)).size:
-        part = risk if open_.size == count.size else risk._rows(open_)
-        low, high = before[open_], beyond[open_]
-        at = np.clip(size[open_], low + 1, high - 1)
-        passed, move = part.passed(at, count[open_])
-        low, high = np.where(passed, low, at), np.where(passed, at, high)
+    before = np.minimum(np.where(bounded, count - 1, 0.0), largest)
+    size, tail, passed = (
+        _guess(risk, count, bounded),
+        np.zeros(count.shape),
+        np.zeros(count.shape, dtype=bool),
+    )
+    found, rows, rounds = beyond.copy(), np.arange(count.size), 0
+    while True:
+        found[rows] = beyond
+        still = np.flatnonzero(beyond - before > 1)
+        if not still.size:
+            return found
+        if still.size < rows.size:
+            rows, risk = rows[still], risk._rows(still)
+            parts = (count, size, tail, passed, before, beyond)
+            count, size, tail, passed, before, beyond = (part[still] for part in parts)
         if rounds > _PATIENCE and rounds % 2:
-            size[open_] = np.floor((low + high) / 2)
-        else:
-            size[open_] = np.ceil(at + move)
-        before[open_], beyond[open_] = low, high
+            size = np.floor((before + beyond) / 2)
+        elif rounds:
+            size = risk.newton(size, count, tail, passed)
+        size = np.clip(size, before + 1, beyond - 1)
+        passed, tail = risk.passed(size, count)
+        before, beyond = np.where(passed, before, size), np.where(passed, size, beyond)
         rounds += 1
-    return beyond
 
 
 def _guess(risk: Risk, count: Floats, bounded: Truth) -> Floats:
