@@ -180,6 +180,10 @@ class Kind(ABC):
         del plan
         return sum(not parameter.optional for parameter in self.parameters), len(self.parameters)
 
+    def check_rates(self, *rates: float) -> None:
+        """Raise when the values of several parameters do not go together."""
+        del rates
+
     def region(self, plan: Plan) -> str:
         """Return what rejects the claim, with mathematical signs."""
         texts = self.grammar.write_rule(plan.rule)

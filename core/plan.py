@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 import re
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, field, fields
 from typing import Any
 
 from steelyard.core.errors import InvalidValue
@@ -50,17 +50,51 @@ class Claim:
         """Where the true parameter lies when the claim is false: above, below or either."""
         return SIDES[self.relation]
 
-    def holds(self, rate: float) -> bool:
-        """Tell whether the claim is true at this value of the parameter."""
+    def holds(self, rate: float, second: float | None = None) -> bool:
+        """Tell whether the claim is true at this value of the parameter; a comparison needs both."""
+        bound = self.value
+        if self.reference and second is not None:
+            rate, bound = second, rate + self.value
         if self.relation == "=":
-            return rate == self.value
-        return rate <= self.value if self.relation == "<=" else rate >= self.value
+            return rate == bound
+        return rate <= bound if self.relation == "<=" else rate >= bound
+
+    @property
+    def parts(self) -> tuple[Claim, ...]:
+        """The single claims that this one is made of."""
+        return (self,)
 
     def __str__(self) -> str:
         if not self.reference:
             return f"{self.symbol}{self.relation}{write_number(self.value)}"
         shift = "" if self.value == 0 else f"{'+' if self.value > 0 else '-'}{write_number(abs(self.value))}"
         return f"{self.symbol}{self.relation}{self.reference}{shift}"
+
+
+@dataclass(frozen=True, slots=True)
+class JointClaim(Claim):
+    """A null hypothesis on two parameters: it is true where both parts are.
+
+    Examples
+    --------
+    >>> claim = JointClaim("bad", "<=", 0.001, also=Claim("marginal", "<=", 0.05))
+    >>> str(claim), claim.holds(0.001, 0.05), claim.holds(0.001, 0.06)
+    ('bad<=0.001 and marginal<=0.05', True, False)
+    """
+
+    also: Claim = field(kw_only=True)
+
+    @property
+    def parts(self) -> tuple[Claim, ...]:
+        """The single claims."""
+        return Claim(self.symbol, self.relation, self.value), self.also
+
+    def holds(self, rate: float, second: float | None = None) -> bool:
+        """Tell whether the claim is true at these values of the two parameters."""
+        return second is not None and all(map(Claim.holds, self.parts, (rate, second)))
+
+    def __str__(self) -> str:
+        return " and ".join(map(str, self.parts))
 
 
 @dataclass(frozen=True, slots=True)

@@ -26,6 +26,7 @@ def _rates(plan: Plan, rates: tuple[Any, ...]) -> list[Floats]:
         rule = f"be given for {names}" if len(given) < needed else f"be given only for {names}"
         raise InvalidValue("rates" if needed > 1 else "rate", rule, ", ".join(map(shown, given)))
     read = [p.read(value, plan.design) for p, value in zip(parameters, given, strict=False)]
+    kind.check_rates(*read)
     return [np.array([value]) for value in read]
 
 

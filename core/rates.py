@@ -108,13 +108,18 @@ def claims_both_sides(plan: Plan) -> bool:
     return isinstance(plan.rule, Reject) and None not in (plan.rule.low, plan.rule.high)
 
 
-def _end(plan: Plan, end: str | None) -> str:
-    """Return on which side of the claim the power climbs."""
+def check_one_rate(plan: Plan) -> None:
+    """Refuse a plan whose power depends on several parameters."""
     kind = kind_of(plan)
     if kind.takes(plan)[0] > 1:
         names = " and ".join(parameter.symbol for parameter in kind.parameters)
         message = f"the power of this plan depends on {names}, so no single rate answers this"
         raise NoAnswer(message)
+
+
+def _end(plan: Plan, end: str | None) -> str:
+    """Return on which side of the claim the power climbs."""
+    check_one_rate(plan)
     if claims_both_sides(plan):
         if end is None:
             raise InvalidValue("end", "be lower or upper for a plan that rejects at both ends", None)

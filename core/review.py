@@ -6,7 +6,7 @@ import dataclasses
 
 from steelyard.core.abilities import Remarking
 from steelyard.core.errors import SteelyardError
-from steelyard.core.kind import kind_of
+from steelyard.core.kind import claim_of, kind_of
 from steelyard.core.parameter import show_rate
 from steelyard.core.plan import Plan, same_rule
 from steelyard.core.questions import region, size
@@ -71,21 +71,41 @@ def sentences(plan: Plan) -> list[str]:
 
 def sample_sentence(plan: Plan) -> str:
     """Return the instruction at the bench."""
-    fields = {name: f"{getattr(plan.design, name):g}" for name in _numbers(plan)}
+    values = {field.attribute: getattr(plan.design, field.attribute) for field in kind_of(plan).grammar.fields}
+    fields = {name: _filled_in(value) for name, value in values.items()}
     return kind_of(plan).grammar.wording.sample.format_map(fields)
 
 
-def _numbers(plan: Plan) -> list[str]:
-    names = (field.attribute for field in kind_of(plan).grammar.fields)
-    return [name for name in names if isinstance(getattr(plan.design, name), int | float)]
+def _filled_in(value: object) -> str:
+    """Return a number, or one for each of two samples, as an instruction shows it."""
+    if isinstance(value, tuple):
+        return " and ".join(map(_filled_in, value))
+    return f"{value:g}" if isinstance(value, int | float) else str(value)
+
+
+def _bound(plan: Plan) -> str:
+    """Return what the claim compares its parameter with: a value, or the other sample's parameter."""
+    kind, claim = kind_of(plan), claim_of(plan)
+    shown = {parameter.symbol: parameter for parameter in kind.parameters}
+    if not claim.reference:
+        return str(shown[claim.symbol].show(claim.value, bare=True))
+    margin = shown[claim.symbol].show(abs(claim.value), bare=True)
+    shift = f" {'plus' if claim.value > 0 else 'minus'} {margin}" if claim.value else ""
+    return f"the {shown[claim.reference].name}{shift}"
+
+
+def _subject(plan: Plan) -> str:
+    names = {parameter.symbol: parameter.name for parameter in kind_of(plan).parameters}
+    return names[claim_of(plan).symbol]
 
 
 def claim_sentence(plan: Plan) -> str:
     """Return the claim in words."""
-    parameter, claim = kind_of(plan).parameters[0], plan.claim
-    if claim is None:
+    if plan.claim is None:
         return "The plan carries no claim."
-    return f"Claim: {parameter.name} {_CLAIMED[claim.relation]} {parameter.show(claim.value, bare=True)}."
+    parts = [dataclasses.replace(plan, claim=part) for part in plan.claim.parts]
+    told = [f"{_subject(part)} {_CLAIMED[claim_of(part).relation]} {_bound(part)}" for part in parts]
+    return f"Claim: {', and '.join(told)}."
 
 
 def rule_sentence(plan: Plan) -> str:
@@ -108,9 +128,9 @@ def _shown(plan: Plan) -> str:
     claim = plan.claim
     if plan.verdict != "pass" or claim is None or claim.side == "either":
         return ""
-    parameter, confidence = kind_of(plan).parameters[0], show_rate(1.0 - size(plan))
-    bound = f"{'below' if claim.side == 'below' else 'above'} {parameter.show(claim.value, bare=True)}"
-    return f"A lot that passes has shown, with confidence {confidence}: {parameter.name} {bound}."
+    confidence = show_rate(1.0 - size(plan))
+    bound = f"{'below' if claim.side == 'below' else 'above'} {_bound(plan)}"
+    return f"A lot that passes has shown, with confidence {confidence}: {_subject(plan)} {bound}."
 
 
 def _reach(plan: Plan) -> str:

@@ -11,7 +11,7 @@ from steelyard.core.kind import kind_of
 from steelyard.core.parameter import Floats
 from steelyard.core.plan import Plan
 from steelyard.core.questions import power
-from steelyard.core.rates import DOWNWARDS, UPWARDS, claims_both_sides, halve, rates_for
+from steelyard.core.rates import DOWNWARDS, UPWARDS, check_one_rate, claims_both_sides, halve, rates_for
 
 _EQUAL = 1e-12
 _SMALL = 10.0 ** np.arange(-9, -2)
@@ -68,6 +68,8 @@ def crossing(plan_a: Plan, plan_b: Plan) -> list[float]:
     plans = (plan_a, plan_b)
     _same_parameter(plans)
     _same_lot(plans)
+    for plan in plans:
+        check_one_rate(plan)
     whole = kind_of(plan_a).parameters[0].whole
     grid = np.unique(np.concatenate([_landmarks(plan) for plan in plans]))
     signs = _ahead(plans, grid)

@@ -2,7 +2,21 @@
 
 from importlib import import_module
 
-MODULES = ("binomial", "poisson", "hypergeometric", "normal", "student", "spread", "variables", "inspected", "clustered", "until", "staged", "sequential")
+MODULES = (
+    "binomial",
+    "poisson",
+    "hypergeometric",
+    "normal",
+    "student",
+    "spread",
+    "variables",
+    "inspected",
+    "clustered",
+    "until",
+    "three_class",
+    "staged",
+    "sequential",
+)
 
 for _module in MODULES:
     import_module(f"{__name__}.{_module}")
