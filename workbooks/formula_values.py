@@ -13,7 +13,7 @@ from decimal import ROUND_DOWN, ROUND_HALF_UP, ROUND_UP, Context, Decimal
 from typing import Any, Protocol
 
 from steelyard.addin import CATALOGUE
-from steelyard.addin.cells import ERRORS
+from steelyard.addin.cells import ERRORS, FAULT, REFUSED
 from steelyard.workbooks.formula_operators import (
     OPERATIONS,
     Raised,
@@ -109,12 +109,18 @@ def _ours(call: Call, cells: Cells) -> Result:
         give_up(f"uses {call.name}, a function that there is not")
     given = (None if argument is None else evaluate(argument, cells) for argument in call.arguments)
     answer = cells.call(call.name, tuple(given))
-    if isinstance(answer, list):
-        if any(value in ERRORS for row in answer for value in row if isinstance(value, str)):
-            give_up("takes cells that hold error values")
-    elif isinstance(answer, str) and answer in ERRORS:
+    texts = [shown for row in _rows(answer) for shown in row if isinstance(shown, str)]
+    if any(shown.startswith(REFUSED + FAULT) for shown in texts):
+        give_up(f"meets a fault of {call.name}")
+    if isinstance(answer, str) and answer in ERRORS:
         raise Raised(answer)
+    if not ERRORS.isdisjoint(texts):
+        give_up("takes cells that hold error values")
     return answer
+
+
+def _rows(value: Result) -> list[list[Value]]:
+    return value if isinstance(value, list) else [[value]]
 
 
 def _native(name: str, arguments: Arguments, cells: Cells) -> Result:
@@ -171,8 +177,7 @@ def _is_number(value: Any) -> bool:
 
 
 def _index(arguments: Arguments, cells: Cells) -> Result:
-    table = evaluate(arguments[0], cells)
-    rows = table if isinstance(table, list) else [[table]]
+    rows = _rows(evaluate(arguments[0], cells))
     places = [int(number(one(argument, cells))) for argument in arguments[1:]]
     if len(places) == 1:
         places = [1, *places] if len(rows) == 1 else [*places, 1]
@@ -199,7 +204,7 @@ def _numbers(tree: Tree | None, cells: Cells) -> Iterator[float]:
             raise Raised("#VALUE!")
         yield number(value)
         return
-    for row in value if isinstance(value, list) else [[value]]:
+    for row in _rows(value):
         for cell in map(_checked, row):
             if isinstance(cell, float | int) and not isinstance(cell, bool):
                 yield float(cell)
@@ -211,6 +216,35 @@ def _rounded(rounding: str) -> Callable[[Any, Any], float]:
         return finite(float(Decimal(general(number(value))).quantize(step, rounding, _DIGITS)))
 
     return to_digits
+
+
+def _left(whole: Any, count: Any = 1.0) -> str:
+    return text(whole)[: _place(count, 0)]
+
+
+def _right(whole: Any, count: Any = 1.0) -> str:
+    characters = text(whole)
+    return characters[max(0, len(characters) - _place(count, 0)) :]
+
+
+def _mid(whole: Any, start: Any, count: Any) -> str:
+    first = _place(start, 1) - 1
+    return text(whole)[first : first + _place(count, 0)]
+
+
+def _find(part: Any, whole: Any, start: Any = 1.0) -> float:
+    found = text(whole).find(text(part), _place(start, 1) - 1)
+    if found < 0:
+        raise Raised("#VALUE!")
+    return found + 1.0
+
+
+def _place(value: Any, least: int) -> int:
+    """Return a number of characters."""
+    place = int(number(value))
+    if place < least:
+        raise Raised("#VALUE!")
+    return place
 
 
 #: Functions that are followed, with the least and the greatest number of arguments.
@@ -234,5 +268,10 @@ NATIVE: dict[str, tuple[Native, int, int]] = {
     "ROUND": (_of_values(_rounded(ROUND_HALF_UP)), 2, 2),
     "ROUNDUP": (_of_values(_rounded(ROUND_UP)), 2, 2),
     "ROUNDDOWN": (_of_values(_rounded(ROUND_DOWN)), 2, 2),
+    "LEFT": (_of_values(_left), 1, 2),
+    "RIGHT": (_of_values(_right), 1, 2),
+    "MID": (_of_values(_mid), 3, 3),
+    "LEN": (_of_values(lambda whole: float(len(text(whole)))), 1, 1),
+    "FIND": (_of_values(_find), 2, 3),
     "SUBSTITUTE": (_of_values(lambda whole, old, new: text(whole).replace(text(old), text(new))), 3, 3),
 }

@@ -154,6 +154,12 @@ FOLLOWED = [
     ("ROUNDUP(0.1*3*10,0)", 3.0),
     ("ROUNDDOWN(2.99,0)", 2.0),
     ("SUBSTITUTE(B1&\" and \"&B2,\",\",\".\")", "0.05 and 0.1"),
+    ("LEFT(A3,2)&LEFT(A3)", "LeL"),
+    ("RIGHT(A3,9)&RIGHT(A3,0)", "Leak"),
+    ("MID(A3,2,2)&MID(A3,9,1)", "ea"),
+    ("LEN(A1)+LEN(A6)+LEN(A2)", 61.0),
+    ("FIND(\"a\",A3)", 3.0),
+    ("FIND(\"a\",\"aLeak\",2)", 4.0),
     ("IF(A2>1,1)", False),
     ("IF(TRUE(),A3,1/0)", "Leak"),
 ]  # fmt: skip
@@ -188,6 +194,9 @@ def test_a_refusal_is_a_value():
         ("1/A6", "#DIV/0!"),
         ("MAX(B1:B5)", "#DIV/0!"),
         ('MIN("",1)', "#VALUE!"),
+        ('FIND("l",A3)', "#VALUE!"),
+        ("LEFT(A3,-1)", "#VALUE!"),
+        ("MID(A3,0,1)", "#VALUE!"),
         ("INDEX(B1:B4,9)", "#REF!"),
         ("1E300*1E300", "#NUM!"),
         ("0^-1", "#NUM!"),
@@ -232,6 +241,13 @@ def test_error_values_come_out_as_such(formula, fault):
 def test_what_stands_in_the_way_is_named(formula, reason):
     with pytest.raises(Unfollowed, match=f"^{reason}"):
         value_of(formula)
+
+
+def test_a_fault_of_ours_is_no_value(monkeypatch):
+    fault = "SY: an internal fault (NameError): please report the formula"
+    monkeypatch.setattr(Sheet, "call", lambda *_: [[0.5, fault]])
+    with pytest.raises(Unfollowed, match=r"^meets a fault of SY_SIZE$"):
+        value_of("SY_SIZE(A1)")
 
 
 @pytest.mark.parametrize(

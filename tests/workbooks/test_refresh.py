@@ -94,6 +94,17 @@ def test_only_a_left_native_formula_asks_for_a_calculation_on_opening(tmp_path, 
     assert read_parts(plain)["xl/workbook.xml"] == parts["xl/workbook.xml"]
 
 
+def test_every_formula_of_ours_in_our_own_books_is_followed(tmp_path):
+    """A sheet that uses a native function around our calls has to have it followed."""
+    requests, _ = read_requests(LIST)
+    kinds = {request.kind + str(request.side): request for request in requests}
+    planned, _ = plan_requests(list(kinds.values()))
+    for host in ("excel", "calc"):
+        build_book(planned, tmp_path / "book.xlsx", host=host, justify="all")
+        done = refresh_book(tmp_path / "book.xlsx")
+        assert (done.unfollowed, done.changes) == ({}, ())
+
+
 def test_our_own_book_follows_its_register(tmp_path):
     """Another catch and another alpha: the same numbers as in a book that was built with them."""
     planned, _ = plan_requests(read_requests(LIST)[0][:3])
