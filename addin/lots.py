@@ -1,11 +1,11 @@
-"""Cell functions for the quality that leaves inspection when failed lots are inspected whole."""
+"""Cell functions for lots: the quality that leaves rectifying inspection, and switching from lot to lot."""
 
 from __future__ import annotations
 
 from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
-from steelyard.addin.words import Found, Plans, Rates, RectifiedLot
-from steelyard.core import outgoing
+from steelyard.addin.words import Found, Plans, Rates, RectifiedLot, SwitchingAnswer, SwitchingRules
+from steelyard.core import outgoing, switching
 
 
 @cell(
@@ -38,3 +38,22 @@ def SY_OUTGOING_LIMIT(plan: Plans, lot: RectifiedLot | None = None, defectives: 
 def SY_TOTAL_INSPECTED(plan: Plans, rate: Rates, lot: RectifiedLot | None = None) -> Cells:
     """Return the average total inspected."""
     return outgoing.total_inspected(plan, rate, lot)
+
+
+@cell(
+    group="ask",
+    help="Switching between normal, tightened and reduced inspection: the scheme in the long run, per lot.",
+    example="=SY_SWITCHING(A2,A3,1%,A4)",
+)
+def SY_SWITCHING(
+    normal: Plans,
+    tightened: Plans,
+    rate: Rates,
+    reduced: Plans | None = None,
+    answer: SwitchingAnswer = "acceptance",
+    rules: SwitchingRules = switching.STANDARD,
+    score_plan: Plans | None = None,
+) -> Cells:
+    """Return one figure of a scheme: acceptance, average sample, a share of lots, or lots to the stop."""
+    scheme = switching.Scheme(normal, tightened, reduced, rules, score_plan)
+    return switching.answer(scheme, rate, answer)

@@ -17,7 +17,7 @@ from steelyard.addin.words import (
     StageRatio,
     StageRejects,
     StageSizes,
-    Stop,
+    StageStop,
     StopAt,
     Target,
     ToCatch,
@@ -39,7 +39,7 @@ def SY_STAGES(
     rejects: StageRejects,
     claim: ClaimText | None = None,
     lot: Lot | None = None,
-    stop_when: Stop = "stage-end",
+    stop_when: StageStop = "stage-end",
     alpha: Level | None = None,
 ) -> Cells:
     """Return the text of a plan in stages."""

@@ -15,6 +15,7 @@ from steelyard.core.numbers import read_choice, read_number, read_probability, r
 from steelyard.core.outgoing import FOUND
 from steelyard.core.plan import SIDES, SPLITS, VERDICTS, Plan
 from steelyard.core.stages import STOPS
+from steelyard.core.switching import ANSWERS, Rules, read_rules
 from steelyard.core.together import RELATIONS
 
 ENDS = ("lower", "upper")
@@ -231,7 +232,7 @@ StageRejects = Annotated[
         whole=True,
     ),
 ]
-Stop = Annotated[
+StageStop = Annotated[
     str,
     Word(
         "When inspection stops: stage-end, on-reject (as soon as the lot must fail) or on-decision.",
@@ -243,6 +244,20 @@ StopAt = Annotated[
     Word(
         "The most items to inspect. Blank: twice the single plan for the same risks.",
         lambda v, n: read_whole(as_typed(v, n), n, 1),
+    ),
+]
+SwitchingRules = Annotated[
+    Rules,
+    Word(
+        "The rules as numbers, such as tighten 2 of 5 | resume 5 | stop 5 | reduce 30 by 2; or never.",
+        lambda v, n: read_rules(text(v, n)),
+    ),
+]
+SwitchingAnswer = Annotated[
+    str,
+    Word(
+        "acceptance; sample (average per lot); share of lots normal, tightened, reduced; lots (to the stop).",
+        one_of(ANSWERS),
     ),
 ]
 StageRatio = Annotated[

@@ -11,7 +11,7 @@ from steelyard.core.kind import REQUIRED, Field, register
 from steelyard.core.kinds.binomial import BinomialKind
 from steelyard.core.kinds.hypergeometric import HypergeometricKind
 from steelyard.core.kinds.poisson import PoissonKind
-from steelyard.core.native import binomial_native, lot_native, operand, poisson_native
+from steelyard.core.native import MOST_DRAWN, binomial_native, lot_native, operand, poisson_native
 from steelyard.core.numbers import read_whole, write_number
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.plan import Plan, Reject
@@ -19,7 +19,7 @@ from steelyard.core.staged import StagedKind, stage_fields
 from steelyard.core.stages import LotStages, Stages, UnitStages, read_amounts, read_sizes
 from steelyard.core.walk import Course, Look, LotCourse, along
 
-_LONGEST = 250
+_LONGEST = 254
 
 
 class FormulaKind(StagedKind):
@@ -33,7 +33,7 @@ class FormulaKind(StagedKind):
         """Return the chance of a count in the first or second stage (0 or 1); the first has found k."""
 
     @abstractmethod
-    def formula(self, plan: Plan, cell: str, counts: Sequence[int]) -> str:
+    def formula(self, plan: Plan, cell: str, counts: Sequence[int]) -> str | None:
         """Return the power as a formula; `counts` are those that a second stage may reject."""
 
     def algebra(self, plan: Plan) -> str | None:
@@ -59,7 +59,7 @@ class FormulaKind(StagedKind):
         open_ = range(looks[0].accept + 1, looks[0].reject) if len(sizes) == 2 else ()
         counts = [k for k in open_ if k <= most[0] and looks[1].reject - k <= most[1]]
         text = self.formula(plan, cell, counts)
-        return text if len(text.replace("_xlfn.", "")) <= _LONGEST else None
+        return text if text and len(text.replace("_xlfn.", "")) <= _LONGEST else None
 
 
 class StagedBinomialKind(FormulaKind):
@@ -71,13 +71,14 @@ class StagedBinomialKind(FormulaKind):
         return f"C({n},{count}) p^{count} (1-p)^({n}-{count})"
 
     def formula(self, plan: Plan, cell: str, counts: Sequence[int]) -> str:
-        """Return upper tails as lower tails of the good items."""
+        """Return upper tails as beta distributions."""
         (n, *second), looks, rate = plan.design.stages, self.looks(plan), operand(cell)
         text = binomial_native(n, Reject(None, looks[0].reject), cell) if looks[0].reject <= n else "0"
         if counts:
-            good = array([second[0] - looks[1].reject + k for k in counts])
+            more = [looks[1].reject - k for k in counts]
+            good = [second[0] - y + 1 for y in more]
             text += f"+SUMPRODUCT(_xlfn.BINOM.DIST({array(counts)},{n},{rate},FALSE),"
-            text += f"_xlfn.BINOM.DIST({good},{second[0]},1-{rate},TRUE))"
+            text += f"_xlfn.BETA.DIST({rate},{array(more)},{array(good)},TRUE))"
         return text
 
 
@@ -128,22 +129,24 @@ class StagedLotKind(FormulaKind):
         rest, n = lot - sizes[0], sizes[1]
         return f"C(D-k,{count}) C({rest}-D+k,{n}-{count})/C({rest},{n})"
 
-    def formula(self, plan: Plan, cell: str, counts: Sequence[int]) -> str:
+    def formula(self, plan: Plan, cell: str, counts: Sequence[int]) -> str | None:
         """Return upper tails as lower tails of the good items, asked for only where these have a value."""
         lot, sizes, looks, found = plan.design.lot, plan.design.stages, self.looks(plan), operand(cell)
+        if max(sizes) > MOST_DRAWN:
+            return None
         n, accept, reject = sizes[0], looks[0].accept, looks[0].reject
-        text = lot_native(lot, n, Reject(None, reject), cell) if reject <= n else "0"
         if not counts:
-            return text
-        last, rest, good = looks[1].reject, lot - n, [sizes[1] - looks[1].reject + k for k in counts]
-        text += (
+            return lot_native(lot, n, Reject(None, reject), cell)
+        (_, last), rest, good = plan.rule.certain, lot - n, [sizes[1] - looks[1].reject + k for k in counts]
+        fails = f"_xlfn.HYPGEOM.DIST({n - reject},{n},{lot}-{found},{lot},TRUE)" if reject <= n else "0"
+        fails += (
             f"+IF({found}<{last},0,SUMPRODUCT(_xlfn.HYPGEOM.DIST({array(counts)},{n},{found},{lot},FALSE),"
         )
-        text += f"_xlfn.HYPGEOM.DIST({array(good)},{sizes[1]},{rest}-{found}+{array(counts)},{rest},TRUE)))"
-        # With more defectives than that, every lot fails that the first stage does not pass.
-        many = lot - sum(sizes) + last
-        passes = f"-({lot_native(lot, n, Reject(accept, None), cell)})" if accept >= 0 else ""
-        return f"IF({found}>{many},1{passes},{text})"
+        fails += f"_xlfn.HYPGEOM.DIST({array(good)},{sizes[1]},{rest}-{found}+{array(counts)},{rest},TRUE)))"
+        # With more defectives than `many` every lot fails that the first stage does not pass.
+        many, most = min(rest - sizes[1] + last, rest + reject), rest + accept
+        passes = f"-IF({found}>{most},0,_xlfn.HYPGEOM.DIST({accept},{n},{found},{lot},TRUE))"
+        return f"IF({found}>{many},1{passes if accept >= 0 else ''},IF({found}<{reject},0,{fails}))"
 
 
 def array(numbers: Sequence[float]) -> str:

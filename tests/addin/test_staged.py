@@ -126,3 +126,28 @@ def test_a_sequential_plan_and_its_table() -> None:
         "SY: claim must be of the form p<=0.02, above 0"
     )
     assert call("SY_OUTGOING_LIMIT", [plan, 1000])[0][0] < 0.06
+
+
+def test_a_scheme_that_switches() -> None:
+    normal, tightened, reduced = (
+        f"binomial | n {n} | reject x>={r}" for n, r in ((125, 4), (125, 3), (50, 2))
+    )
+    row = call("SY_SWITCHING", [normal, tightened, [[0.0, 0.01, None]], reduced])
+    assert row[0][0] == 1.0
+    assert row[0][1] == pytest.approx(0.9425683094867349, rel=1e-12)
+    assert row[0][2] is None
+    shares = [
+        call("SY_SWITCHING", [normal, tightened, "1%", reduced, mode])
+        for mode in ("normal", "tightened", "reduced")
+    ]
+    assert sum(shares) == pytest.approx(1)
+    assert call("SY_SWITCHING", [normal, tightened, "1%", None, "sample"]) == pytest.approx(125)
+    assert call("SY_SWITCHING", [normal, tightened, "1%", None, "lots", "stop never"]).startswith(
+        "SY: inspection is never"
+    )
+    assert call("SY_SWITCHING", [normal, tightened, "1%", None, None, "loosen 5"]).startswith(
+        "SY: rules must be one of"
+    )
+    assert call("SY_SWITCHING", [normal, tightened, "1%", None, "best"]).startswith(
+        "SY: answer must be one of"
+    )

@@ -42,6 +42,22 @@ CASES: list[tuple[str, tuple[float, ...]]] = [
     ("hypergeometric | lot 20 | n 1 | reject x<=0", (0, 1, 19, 20)),
     ("hypergeometric | lot 1000 | n 900 | reject x>=890", (0, 889, 890, 950, 989, 990, 1000)),
     ("hypergeometric | lot 1000000 | n 1000 | reject x>=20", (0, 19, 20, 5000, 20000, 500000, 1000000)),
+    ("binomial | stages 50 then 50 | accept 1 then 4 | reject 4 then 5", RATES),
+    ("binomial | stages 10 then 19 | accept 1 then 5 | reject none then 6", RATES),
+    ("binomial | stages 50 | accept 3 | reject 4", RATES),
+    ("poisson | stages 12.5 then 25 | accept 1 then 4 | reject 4 then 5", PER_UNIT),
+    (
+        "hypergeometric | lot 800 | stages 50 then 50 | accept 1 then 4 | reject 4 then 5",
+        (0, 1, 3, 4, 5, 8, 40, 700, 704, 705, 706, 750, 751, 752, 754, 755, 799, 800),
+    ),
+    (
+        "hypergeometric | lot 40 | stages 10 then 10 | accept none then 1 | reject 2 then 2",
+        (0, 1, 2, 3, 20, 21, 22, 23, 31, 40),
+    ),
+    (
+        "hypergeometric | lot 40 | stages 15 then 20 | accept 0 then 2 | reject 3 then 3",
+        (0, 2, 3, 7, 8, 9, 24, 25, 26, 37, 38, 40),
+    ),
 ]
 
 
