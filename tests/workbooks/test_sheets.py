@@ -265,7 +265,7 @@ def test_charts_have_titles_axes_and_descriptions(stored):
             assert chart.x_axis.title is not None
             assert chart.y_axis.title is not None
             assert not chart.x_axis.delete
-            assert chart.y_axis.scaling.max == 1.0
+            assert not chart.y_axis.delete
 
 
 def test_curves_differ_by_dash_or_colour(stored):
