@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
-from steelyard.addin.words import Counted, Plans, PriorA, PriorB
+from steelyard.addin.words import Plans
+from steelyard.addin.words_forms import Counted, PriorA, PriorB
 from steelyard.core.assurance import assurance
 
 

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
-from steelyard.addin.words import Cluster, Correlation, Plans, Rates
+from steelyard.addin.words import Plans, Rates
+from steelyard.addin.words_forms import Cluster, Correlation
 from steelyard.core.forms import with_fields
 from steelyard.core.questions import power
 from steelyard.core.text import write_plan

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
-from steelyard.addin.words import Allowed, Confidence, Lot, WorstRate
+from steelyard.addin.words import Confidence, Lot
+from steelyard.addin.words_forms import Allowed, WorstRate
 from steelyard.core.demonstration import demonstration
 from steelyard.core.text import write_plan
 

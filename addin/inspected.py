@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
-from steelyard.addin.words import FalseAlarms, Misses, Order, Plans, Target, ToCatch
+from steelyard.addin.words import Order, Plans, Target, ToCatch
+from steelyard.addin.words_forms import FalseAlarms, Misses
 from steelyard.core import forms
 from steelyard.core.text import write_plan
 

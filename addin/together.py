@@ -6,7 +6,8 @@ from typing import Any
 
 from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
-from steelyard.addin.words import Characteristics, Level, PlanCells, RateCells, Relation
+from steelyard.addin.words import Level
+from steelyard.addin.words_forms import Characteristics, PlanCells, RateCells, Relation
 from steelyard.core import together
 from steelyard.core.errors import InvalidValue
 from steelyard.core.plan import Plan

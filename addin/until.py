@@ -4,7 +4,8 @@ from __future__ import annotations
 
 from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
-from steelyard.addin.words import ClaimText, Level, Side, Verdict, Wanted
+from steelyard.addin.words import ClaimText, Level, Side, Verdict
+from steelyard.addin.words_forms import Wanted
 from steelyard.core.making import plan_from_claim
 from steelyard.core.text import write_plan
 

@@ -9,14 +9,12 @@ from typing import Annotated, Any
 
 from steelyard.addin.catalogue import Word
 from steelyard.addin.plans import plan_of
-from steelyard.core.assurance import COUNTED
 from steelyard.core.errors import InvalidValue
 from steelyard.core.numbers import read_choice, read_number, read_probability, read_whole, write_number
 from steelyard.core.outgoing import FOUND
 from steelyard.core.plan import SIDES, SPLITS, VERDICTS, Plan
 from steelyard.core.stages import STOPS
 from steelyard.core.switching import ANSWERS, Rules, read_rules
-from steelyard.core.together import RELATIONS
 
 ENDS = ("lower", "upper")
 ORDERS = ("first", "lasting")
@@ -156,15 +154,6 @@ ToCatch = Annotated[
     Any, Word('The rate that must be caught, such as 5%; for either side also "1% and 5%".', as_typed)
 ]
 FieldName = Annotated[str, Word("Word that starts the field, such as n, units, lot, claim or alpha.", text)]
-Misses = Annotated[
-    float, Word("Share of the defectives (or defects) that inspection misses, such as 10%.", number)
-]
-FalseAlarms = Annotated[
-    float,
-    Word(
-        "Share of the good items that inspection condemns; false finds per unit where defects count.", number
-    ),
-]
 Measured = Annotated[
     int,
     Word("Items to measure: a whole number.", lambda v, name: read_whole(as_typed(v, name), name, 1)),
@@ -177,42 +166,6 @@ Sigma = Annotated[float, Word("The known standard deviation of single values.", 
 PlanningSigma = Annotated[
     float, Word("The standard deviation that power is computed with: a guess, unlike a known sigma.", number)
 ]
-WorstRate = Annotated[
-    Any, Word("The rate to rule out: 1%, or for a lot also a number of defectives such as 8.", as_typed)
-]
-Allowed = Annotated[
-    int,
-    Word(
-        "Defectives that the sample may show and still pass, from 0; or a range such as 0 to 5.",
-        lambda v, name: read_whole(as_typed(v, name), name),
-    ),
-]
-PlanCells = Annotated[
-    tuple[Plan | None, ...],
-    Word("A range of plan texts, one for each characteristic.", plan_cells, whole=True),
-]
-RateCells = Annotated[
-    tuple[Any, ...],
-    Word(
-        "The true rate of each characteristic, in as many cells; or one rate for all.", rate_cells, whole=True
-    ),
-]
-Relation = Annotated[
-    str,
-    Word("independent: the characteristics are; any: safe whatever their dependence.", one_of(RELATIONS)),
-]
-Characteristics = Annotated[
-    int,
-    Word(
-        "How many characteristics are judged: a whole number.",
-        lambda v, name: read_whole(as_typed(v, name), name, 1),
-    ),
-]
-Correlation = Annotated[
-    float,
-    Word("Intraclass correlation of the items in a cluster, from 0 (independent) to below 1.", number),
-]
-Cluster = Annotated[float, Word("Items (or units) in a cluster.", number)]
 StageSizes = Annotated[
     Any, Word("How much each stage inspects: 50 then 50, or a range.", stage_cells, whole=True)
 ]
@@ -287,32 +240,10 @@ CapabilityTarget = Annotated[
     float, Word("The Ppk to be shown, such as 1.33; or the coverage, such as 95%.", number)
 ]
 MeasureName = Annotated[str, Word("What the target is: ppk or coverage.", one_of(("ppk", "coverage")))]
-Wanted = Annotated[
-    int,
-    Word(
-        "Defectives to be found before inspection ends: a whole number from 1.",
-        lambda v, name: read_whole(as_typed(v, name), name, 1),
-    ),
-]
 Seed = Annotated[
     int,
     Word(
         "Any whole number from 0: note it, so that the draw can be repeated.",
         lambda v, n: read_whole(as_typed(v, n), n),
     ),
-]
-PriorA = Annotated[
-    float,
-    Word("First number of the rate's law: defectives already seen, in a beta or gamma law; above 0.", number),
-]
-PriorB = Annotated[
-    float,
-    Word(
-        "Second number: good items already seen; for defects, the units in which prior_a were seen. Above 0.",
-        number,
-    ),
-]
-Counted = Annotated[
-    str,
-    Word("all: every rejection; right: only those of a claim that is false.", one_of(COUNTED)),
 ]
