@@ -141,8 +141,10 @@ class Requirements:
 def one_sided_amount(law: CountLaw, row: Columns, need: Need, lasting: bool) -> float:
     """Return the first or the lasting amount that meets a one-sided need; NaN beyond the largest amount."""
     columns = {name: np.reshape(value, 1) for name, value in row.items()}
-    numbers = (np.array([number]) for number in (need.claim.value, need.catches[0], need.alpha, need.power))
-    requirement = Requirements(law, columns, need.claim.side, *numbers, whole=need.whole)
+    claim, catch, alpha, power = (
+        np.array([number]) for number in (need.claim.value, need.catches[0], need.alpha, need.power)
+    )
+    requirement = Requirements(law, columns, need.claim.side, claim, catch, alpha, power, need.whole)
     return float((requirement.lasting() if lasting else requirement.first())[0])
 
 
@@ -162,7 +164,9 @@ def _least(last: Floats, ends: Ends) -> tuple[Floats, Floats]:
     count, opens : ndarray of float
         ``last + 1`` and infinity where all intervals are empty.
     """
-    best, start, rows = last + 1, np.full(last.shape, np.inf), np.arange(last.size)
+    best: Floats = last + 1
+    start: Floats = np.full(last.shape, np.inf)
+    rows: Rows = np.arange(last.size)
     a, b = np.zeros(last.shape), last + 1  # on both sides just beyond, where nothing is known yet
     opens, closes = -start, start.copy()
 
@@ -176,7 +180,8 @@ def _least(last: Floats, ends: Ends) -> tuple[Floats, Floats]:
 
     while True:
         keep = (b - a > 1) & (opens <= closes) & (a + 1 < best[rows])
-        rows, a, b, opens, closes = (part[keep] for part in (rows, a, b, opens, closes))
+        rows = rows[keep]
+        a, b, opens, closes = (part[keep] for part in (a, b, opens, closes))
         if not rows.size:
             return best, start
         pieces = np.minimum(b - a, max(2, _AT_ONCE // rows.size)).astype(np.intp)

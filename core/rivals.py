@@ -86,7 +86,7 @@ def crossing(plan_a: Plan, plan_b: Plan) -> list[float]:
 
 def _landmarks(plan: Plan) -> Floats:
     ends = (DOWNWARDS, UPWARDS) if claims_both_sides(plan) else (None,)
-    found = np.concatenate([rates_for([plan], list(_GRID), end)[0] for end in ends])
+    found: Floats = np.concatenate([rates_for([plan], list(_GRID), end)[0] for end in ends])
     return found[np.isfinite(found)]
 
 

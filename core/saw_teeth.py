@@ -84,7 +84,7 @@ def size_curve(need: Need, amounts: ArrayLike) -> SizeCurve:
         tails = region_tails(low, high)
         sides = {"low": law.at_most, "high": law.at_least}
         total = sum(weight * sides[end](x, columns, np.asarray(rate)) for weight, end, x in tails)
-        return np.minimum(total, 1.0)
+        return np.asarray(np.minimum(total, 1.0))
 
     power = np.minimum.reduce([chance(catch) for catch in need.catches])
     return SizeCurve(amount, low, high, chance(need.claim.value), power, meets(law, row, need, amount))

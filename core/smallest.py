@@ -156,7 +156,7 @@ def smallest_sizes(
     >>> found.amount.tolist(), found.reject.tolist()
     ([27.0, 35.0], [4.0, 12.0])
     """
-    kind = kind_named(kind_name)
+    kind, side = kind_named(kind_name), read_choice(side, "side", ("above", "below"))
     law, extra_field = count_law(kind), kind.grammar.extra
     given = (claim, catch, alpha, power, *([extra] if extra_field else []))
     arrays = np.broadcast_arrays(*(np.asarray(number, dtype=float) for number in given))
@@ -166,10 +166,9 @@ def smallest_sizes(
     falser = aim > rate if side == "above" else aim < rate
     sound = np.flatnonzero(falser & (level > 0) & (level < target) & (target < 1))
     columns = {name: column[sound] for name, column in columns.items()}
-    part = (array[sound] for array in (rate, aim, level, target))
-    side = read_choice(side, "side", ("above", "below"))
-    answers = _solve(Requirements(law, columns, side, *part, whole=whole), lasting)
-    spread = np.full((len(answers), rate.size), np.nan)
+    rate, aim, level, target = (array[sound] for array in (rate, aim, level, target))
+    answers = _solve(Requirements(law, columns, side, rate, aim, level, target, whole), lasting)
+    spread = np.full((len(answers), arrays[0].size), np.nan)
     spread[:, sound] = answers
     return Sizes(*spread.reshape(len(answers), *arrays[0].shape))
 

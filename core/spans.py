@@ -78,8 +78,8 @@ class Risk:
 
     def _rows(self, rows: Rows) -> Risk:
         columns = {name: column[rows] for name, column in self.columns.items()}
-        parts = (part[rows] for part in (self.rate, self.bound, self.closing, self.step))
-        return Risk(self.law, columns, self.end, *parts)
+        rate, bound, step = self.rate[rows], self.bound[rows], self.step[rows]
+        return Risk(self.law, columns, self.end, rate, bound, self.closing[rows], step)
 
     def passed(self, size: Floats, count: Floats) -> tuple[Truth, Floats]:
         """Tell which sizes lie at or beyond the turn, and return the tails there."""
@@ -157,7 +157,8 @@ def _guess(risk: Risk, count: Floats, bounded: Truth) -> Floats:
     mean = count * np.maximum(root, 0.05) ** 3
     share = np.maximum(risk.law.share(risk.columns, risk.rate), _TINY)
     amount = mean / share - np.where(bounded, (mean - count + 1.0) / 2.0, 0.0)
-    return np.ceil(amount / risk.step)
+    size: Floats = np.ceil(amount / risk.step)
+    return size
 
 
 def _normal_quantile(level: Floats) -> Floats:
@@ -165,5 +166,5 @@ def _normal_quantile(level: Floats) -> Floats:
     tail = np.clip(np.minimum(level, 1.0 - level), _TINY, 0.5)
     t = np.sqrt(-2.0 * np.log(tail))
     above = 1.0 + t * (1.432788 + t * (0.189269 + t * 0.001308))
-    z = t - (2.515517 + t * (0.802853 + t * 0.010328)) / above
+    z: Floats = t - (2.515517 + t * (0.802853 + t * 0.010328)) / above
     return np.where(level < 0.5, -z, z)

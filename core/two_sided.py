@@ -66,7 +66,7 @@ def meets(law: CountLaw, row: Columns, need: Need, amounts: Floats) -> Truth:
     columns = {**row, law.amount: amounts}
     tails = region_tails(*region_ends(law, row, need, amounts))
     reached = [compare(law, columns, np.asarray(catch), tails, need.power) >= 0 for catch in need.catches]
-    return np.logical_and.reduce(reached)
+    return np.asarray(np.logical_and.reduce(reached))
 
 
 def region_ends(law: CountLaw, row: Columns, need: Need, amounts: Floats) -> tuple[Floats, Floats]:
@@ -124,8 +124,8 @@ def _one_sided(
 ) -> Requirements:
     columns = {name: np.reshape(value, 1) for name, value in row.items()}
     side = "above" if catch > need.claim.value else "below"
-    numbers = (np.array([number]) for number in (need.claim.value, catch, alpha, power))
-    return Requirements(law, columns, side, *numbers)
+    rates = np.array([need.claim.value]), np.array([catch])
+    return Requirements(law, columns, side, *rates, np.array([alpha]), np.array([power]))
 
 
 def _rarest_bound(requirement: Requirements, need: Need) -> float:
@@ -147,11 +147,11 @@ def _rarest_bound(requirement: Requirements, need: Need) -> float:
 
 def _blocks(start: float, stop: float, backwards: bool) -> Iterator[Floats]:
     """Yield the whole numbers from `start` to `stop` in growing blocks, from either end."""
-    seen, length = 0.0, _BLOCK
+    seen, length = 0, _BLOCK
     while seen <= stop - start:
         if seen > MOST_SIZES:
             message = f"more than {MOST_SIZES} sizes would have to be looked at: ask for each side by itself"
             raise NoAnswer(message)
-        offsets = seen + np.arange(min(length, int(stop - start - seen) + 1))
+        offsets = np.arange(seen, min(seen + length, int(stop - start) + 1), dtype=np.float64)
         yield stop - offsets if backwards else start + offsets
         seen, length = seen + len(offsets), 2 * length

@@ -148,7 +148,8 @@ class HypergeometricLaw(CountLaw):
 
     def pace(self, x: Any, columns: Columns, rate: Floats) -> Floats:
         """Return the proportion of defectives in what is left of the lot."""
-        return np.maximum(rate - x, 0.0) / np.maximum(columns["lot"] - columns["n"], 1.0)
+        proportion: Floats = np.maximum(rate - x, 0.0) / np.maximum(columns["lot"] - columns["n"], 1.0)
+        return proportion
 
     def prior(self, design: Any, a: float, b: float) -> Prior:
         """Return a beta-binomial law of the defectives in the lot."""
