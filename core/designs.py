@@ -5,7 +5,7 @@ from __future__ import annotations
 from typing import Any
 
 from steelyard.core.errors import InvalidValue
-from steelyard.core.kind import KINDS, Kind
+from steelyard.core.kind import Kind, known_kinds
 from steelyard.core.numbers import read_choice
 
 
@@ -17,7 +17,8 @@ def kind_named(name: str) -> Kind:
     InvalidValue
         With the list of kinds, and a suggestion where one comes close.
     """
-    return KINDS[read_choice(name, "kind", tuple(KINDS))]
+    kinds = known_kinds()
+    return kinds[read_choice(name, "kind", tuple(kinds))]
 
 
 def design_from(kind: Kind, values: dict[str, Any]) -> Any:

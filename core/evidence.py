@@ -132,7 +132,7 @@ def estimate(plan: Plan, observed: Any) -> float:
     >>> from steelyard.core.text import read_plan
     >>> plan = read_plan("variables | n 20 | upper 10.5 | sigma unknown | accept (upper-mean)/s>=1.926")
     >>> round(estimate(plan, "mean 10.1 s 0.2"), 6)
-    0.020156
+    0.018091
     """
     kind = estimating(kind_of(plan))
     return kind.estimate(plan, kind.read_observed(observed, plan))

@@ -11,6 +11,7 @@ from __future__ import annotations
 from abc import ABC, abstractmethod
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
+from importlib import import_module
 from typing import Any
 
 import numpy as np
@@ -261,10 +262,16 @@ def kind_of(plan: Plan) -> Kind:
     return KINDS[plan.kind]
 
 
+def known_kinds() -> dict[str, Kind]:
+    """Return every kind by its name; the first call registers those of the package."""
+    import_module("steelyard.core.kinds")
+    return KINDS
+
+
 def heads() -> dict[str, list[Kind]]:
     """Return the kinds by the words that open their text."""
     found: dict[str, list[Kind]] = {}
-    for kind in KINDS.values():
+    for kind in known_kinds().values():
         found.setdefault(kind.grammar.head, []).append(kind)
     return found
 

@@ -37,7 +37,7 @@ def t_power(low: float | None, high: float | None, df: int, delta: str) -> str |
     Examples
     --------
     >>> t_power(-1.8, None, 11, "B2")[:61]
-    'SUMPRODUCT(_xlfn.NORM.S.DIST(-1.8*EXP((ROW($1:$50)-45)/10)-(B'
+    'SUMPRODUCT(_xlfn.NORM.S.DIST(-1.8*EXP((ROW($1:$65)-52)/11)-(B'
     """
     ends = [abs(end) for end in (low, high) if end is not None]
     share = _DROP / df

@@ -141,7 +141,7 @@ def outgoing_limit(plan: Plan, lot: Any = None, defectives: str = "replaced") ->
     >>> from steelyard.core.text import read_plan
     >>> limit, rate = outgoing_limit(read_plan("binomial | n 52 | reject x>=4"), 10000)
     >>> round(limit, 6), round(rate, 5)
-    (0.037219, 0.05608)
+    (0.03719, 0.05591)
     """
     rectified = Rectified.of(plan, lot, defectives)
     return rectified.maximum()

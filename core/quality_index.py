@@ -34,7 +34,7 @@ def known(n: ArrayLike, k: ArrayLike, p: ArrayLike, passing: bool) -> Floats:
     Examples
     --------
     >>> round(float(known(12, 1.9, 0.01, True)), 6)
-    0.930265
+    0.93015
     """
     away = np.sqrt(n) * (-normal_quantile(p) - np.asarray(k))
     return normal_at_most(away if passing else -away)
@@ -71,7 +71,7 @@ def known_between(n: ArrayLike, k: ArrayLike, width: ArrayLike, p: ArrayLike, pa
     Examples
     --------
     >>> round(float(known_between(20, 1.8, 6.0, 0.02, True)), 6)
-    0.870937
+    0.87254
     """
     n, k, width = (np.asarray(value, dtype=float) for value in (n, k, width))
     off, room, root = mean_off(width, p), np.maximum(width / 2 - k, 0.0), np.sqrt(n)

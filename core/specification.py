@@ -157,7 +157,7 @@ def fraction_beyond(n: int, distance: float, known: bool) -> float:
     Examples
     --------
     >>> round(fraction_beyond(20, 1.926, False), 6)
-    0.024176
+    0.022351
     """
     if n < (2 if known else 3):
         raise InvalidValue("n", f"be at least {2 if known else 3} to estimate a fraction", n)

@@ -75,7 +75,7 @@ def student_at_least(t: ArrayLike, df: ArrayLike, delta: ArrayLike = 0.0) -> Flo
     Examples
     --------
     >>> float(f"{student_at_least(-3.0, 20, 5.0):.10g}"), float(f"{student_at_most(-3.0, 20, 5.0):.10g}")
-    (1.0, 3.124453187e-14)
+    (1.0, 1.316391558e-13)
     """
     return student_at_most(-np.asarray(t, dtype=float), df, -np.asarray(delta, dtype=float))
 

@@ -254,7 +254,7 @@ def along(looks: Sequence[Look], course: Course, question: Callable[[Look], Floa
     >>> looks = [Look(50, 1, 4), Look(100, 4, 5)]
     >>> course = ProcessCourse(BINOMIAL.law, np.array([0.05]), looks)
     >>> along(looks, course, course.rejected).round(4).tolist()
-    [[0.2396], [0.2043]]
+    [[0.2396], [0.2784]]
     """
     found = []
     for look in looks:

@@ -17,16 +17,24 @@ PLANS = (
 )
 RATE = 0.05
 REFERENCE = re.compile(r"([A-Z])(\d+)(?::([A-Z])(\d+))?")
-PART = re.compile(r'"[^"]*"|[^,]+')
+PART = re.compile(r'((?:"[^"]*"|\([^()]*\)|[^,])*),')
+CALL = re.compile(r"(SY_[A-Z_]+)\((.*)\)")
 
 
 def plain_arguments(entry: Entry) -> list[Any]:
     """Return the arguments of an entry's example formula, its cells filled with plans."""
-    inside = entry.example.removesuffix(")").partition("(")[2]
-    return [_value(part.strip()) for part in PART.findall(inside)]
+    return _arguments(entry.example.removesuffix(")").partition("(")[2])
+
+
+def _arguments(inside: str) -> list[Any]:
+    return [_value(part.strip()) for part in PART.findall(f"{inside},")] if inside else []
 
 
 def _value(part: str) -> Any:
+    if nested := CALL.fullmatch(part):
+        return call(nested[1], _arguments(nested[2]))
+    if not part:
+        return None
     if part.startswith('"'):
         return part.strip('"')
     if reference := REFERENCE.fullmatch(part):

@@ -53,8 +53,11 @@ def test_every_call_gives_the_catalogues_answer(session):
 
 
 def test_every_example_gives_an_answer():
-    refused = {entry.name: entry.function(*CALLS["plain_arguments"](entry)) for entry in CATALOGUE.values()}
-    assert {name: answer for name, answer in refused.items() if str(answer).startswith("SY: ")} == {}
+    """The plans in column A are of a kind that lacks a few abilities: there a sentence says so."""
+    answers = {entry.name: entry.function(*CALLS["plain_arguments"](entry)) for entry in CATALOGUE.values()}
+    refused = {name: answer for name, answer in answers.items() if str(answer).startswith("SY: ")}
+    lacking = "SY: a plan of kind binomial has no "
+    assert {name: answer for name, answer in refused.items() if not answer.startswith(lacking)} == {}
 
 
 def test_xlwings_writes_the_same_heads(session):
