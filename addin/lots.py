@@ -6,6 +6,7 @@ from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
 from steelyard.addin.words import Found, Plans, Rates, RectifiedLot, SwitchingAnswer, SwitchingRules
 from steelyard.core import outgoing, switching
+from steelyard.core.switching_rules import STANDARD
 
 
 @cell(
@@ -51,7 +52,7 @@ def SY_SWITCHING(
     rate: Rates,
     reduced: Plans | None = None,
     answer: SwitchingAnswer = "acceptance",
-    rules: SwitchingRules = switching.STANDARD,
+    rules: SwitchingRules = STANDARD,
     score_plan: Plans | None = None,
 ) -> Cells:
     """Return one figure of a scheme: acceptance, average sample, a share of lots, or lots to the stop."""

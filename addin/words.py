@@ -14,7 +14,8 @@ from steelyard.core.numbers import read_choice, read_number, read_probability, r
 from steelyard.core.outgoing import FOUND
 from steelyard.core.plan import SIDES, SPLITS, VERDICTS, Plan
 from steelyard.core.stages import STOPS
-from steelyard.core.switching import ANSWERS, Rules, read_rules
+from steelyard.core.switching import ANSWERS
+from steelyard.core.switching_rules import Rules, read_rules
 
 ENDS = ("lower", "upper")
 ORDERS = ("first", "lasting")

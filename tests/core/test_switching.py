@@ -8,19 +8,12 @@ import numpy as np
 import pytest
 
 import steelyard.core.kinds  # noqa: F401 - registers every kind
+from steelyard.core.chains import stationary
 from steelyard.core.errors import InvalidValue, NoAnswer
 from steelyard.core.outgoing import average_sample
 from steelyard.core.questions import acceptance, power
-from steelyard.core.switching import (
-    STANDARD,
-    Rules,
-    Scheme,
-    answer,
-    long_run,
-    lots_to_stop,
-    read_rules,
-    stationary,
-)
+from steelyard.core.switching import Scheme, answer, long_run, lots_to_stop
+from steelyard.core.switching_rules import STANDARD, Rules, read_rules
 from steelyard.core.text import read_plan
 
 NORMAL = read_plan("binomial | n 125 | reject x>=4")
