@@ -6,29 +6,28 @@ from typing import Any
 
 from steelyard.addin.catalogue import Cells
 from steelyard.addin.cells import cell
-from steelyard.addin.words import (
+from steelyard.addin.words import Confidence, Level, Plans, Side, Split, Target, ToCatch, Verdict
+from steelyard.addin.words_measured import (
+    AllowedFailures,
     CapabilityTarget,
-    Confidence,
     Figures,
     FractionClaim,
     KnownSigma,
-    Level,
+    LifeClaim,
     LowerLimit,
     MeanClaim,
     Measured,
     MeasureName,
     PlanningSigma,
-    Plans,
     Several,
-    Side,
     Sigma,
     SigmaClaim,
-    Target,
-    ToCatch,
+    Stop,
+    TestAmount,
+    UnitsOnTest,
     UpperLimit,
-    Verdict,
 )
-from steelyard.core import making, measuring
+from steelyard.core import life, making, measuring
 from steelyard.core.evidence import estimate
 from steelyard.core.text import write_plan
 
@@ -128,3 +127,26 @@ def SY_CAPABILITY(
 def SY_ESTIMATE(plan: Plans, observed: Figures) -> Cells:
     """Return the estimated fraction outside the limits."""
     return estimate(plan, observed)
+
+
+@cell(
+    group="make",
+    help="Life test for the mean life of units that fail at a constant rate; or the least time to show one.",
+    example='=SY_LIFE("life<=1000",10%)',
+)
+def SY_LIFE(
+    claim: LifeClaim,
+    alpha: Level = 0.05,
+    amount: TestAmount | None = None,
+    stop: Stop = "time",
+    units: UnitsOnTest | None = None,
+    side: Side | None = None,
+    split: Split = "half",
+    verdict: Verdict | None = None,
+    allowed: AllowedFailures = 0,
+) -> Cells:
+    """Return the text of a life test."""
+    plan = life.life_plan(
+        claim, alpha, amount, stop, units, side=side, split=split, verdict=verdict, allowed=allowed
+    )
+    return write_plan(plan)

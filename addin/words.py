@@ -155,18 +155,6 @@ ToCatch = Annotated[
     Any, Word('The rate that must be caught, such as 5%; for either side also "1% and 5%".', as_typed)
 ]
 FieldName = Annotated[str, Word("Word that starts the field, such as n, units, lot, claim or alpha.", text)]
-Measured = Annotated[
-    int,
-    Word("Items to measure: a whole number.", lambda v, name: read_whole(as_typed(v, name), name, 1)),
-]
-MeanClaim = Annotated[Any, Word("What is claimed of the mean: mean>=500, mean<=500 or mean=500.", as_typed)]
-SigmaClaim = Annotated[
-    Any, Word("What is claimed of the standard deviation: sigma<=0.4, or the bare number.", as_typed)
-]
-Sigma = Annotated[float, Word("The known standard deviation of single values.", number)]
-PlanningSigma = Annotated[
-    float, Word("The standard deviation that power is computed with: a guess, unlike a known sigma.", number)
-]
 StageSizes = Annotated[
     Any, Word("How much each stage inspects: 50 then 50, or a range.", stage_cells, whole=True)
 ]
@@ -224,23 +212,6 @@ Found = Annotated[
     str,
     Word("What happens to defectives that are found: replaced by good items, or removed.", one_of(FOUND)),
 ]
-FractionClaim = Annotated[
-    Any,
-    Word("What is claimed of the fraction outside the limits: 1% or p<=1%; p>=5% to show less.", as_typed),
-]
-LowerLimit = Annotated[float, Word("The lower limit, in the unit of the measurement.", number)]
-UpperLimit = Annotated[float, Word("The upper limit, in the unit of the measurement.", number)]
-KnownSigma = Annotated[
-    float, Word("The known standard deviation, where it is not taken from the sample.", number)
-]
-Figures = Annotated[Any, Word('What was measured: "mean 499.7 s 0.31".', as_typed)]
-Several = Annotated[
-    int, Word("Items to measure: a whole number from 2.", lambda v, n: read_whole(as_typed(v, n), n, 2))
-]
-CapabilityTarget = Annotated[
-    float, Word("The Ppk to be shown, such as 1.33; or the coverage, such as 95%.", number)
-]
-MeasureName = Annotated[str, Word("What the target is: ppk or coverage.", one_of(("ppk", "coverage")))]
 Seed = Annotated[
     int,
     Word(

@@ -36,10 +36,16 @@ def read_items(least: int) -> Any:
 
 
 class MeasuredKind(ThresholdKind):
-    """A threshold kind whose statistic is measured: its power grows with the number of items `n`."""
+    """A threshold kind whose statistic is measured: its power grows with the number of items.
+
+    Attributes
+    ----------
+    most : int
+        The greatest amount.
+    """
 
     law: ContinuousLaw
-    least = 1
+    most = MOST_MEASURED
 
     def verify(self, plan: Plan) -> None:
         """Refuse also the value that the statistic never takes: a standard deviation of 0."""
@@ -62,17 +68,18 @@ class MeasuredKind(ThresholdKind):
         return miss / 2 if claim_of(plan).side == "either" else miss
 
     def smallest_amount(self, need: Need, lasting: bool) -> float:
-        """Return the least n that meets a need, from which on it is always met; NaN where none does."""
+        """Return the least amount that meets a need, from which on it is always met; NaN where none does."""
         del lasting
+        extent, most, least = self.grammar.extent, float(self.most), float(self.grammar.least)
         if not need.whole:
-            raise InvalidValue("n", "be sought as a whole number", "any real number")
-        if not self._meets(need, np.asarray(float(MOST_MEASURED))):
+            raise InvalidValue(extent, "be sought as a whole number", "any real number")
+        if not self._meets(need, np.asarray(most)):
             return math.nan
-        return float(first_whole(lambda n: self._meets(need, n), np.asarray(float(self.least))))
+        return float(first_whole(lambda amount: self._meets(need, amount), np.asarray(least)))
 
-    def _meets(self, need: Need, n: Floats) -> Truth:
+    def _meets(self, need: Need, amount: Floats) -> Truth:
         """Tell whether the region of the need's claim and alpha has the power at every rate to catch."""
-        columns = {**self.row(need.design, need.claim), "n": np.minimum(n, MOST_MEASURED)}
+        columns = {**self.row(need.design, need.claim), self.grammar.extent: np.minimum(amount, self.most)}
         side, claim = need.claim.side, np.asarray(need.claim.value)
         split = need.split if side == "either" else ONE_SIDED
         ends = {end: self.law.critical(columns, claim, need.alpha, end, split) for end in ENDS[side]}

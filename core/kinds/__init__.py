@@ -10,6 +10,7 @@ MODULES = (
     "student",
     "spread",
     "variables",
+    "life",
     "inspected",
     "clustered",
     "until",

@@ -67,7 +67,6 @@ class SpreadKind(MeasuredKind):
     """Tests of a standard deviation."""
 
     law = DeviationLaw()
-    least = 2
     parameters = (
         Measure("sigma", "standard deviation", "unit of the measurement", 0.0, math.inf, lower_open=True),
     )

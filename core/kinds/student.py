@@ -85,7 +85,6 @@ class StudentKind(MeasuredKind):
     """Tests of a mean with sigma unknown."""
 
     law = StudentLaw()
-    least = 2
     parameters = (
         Measure("mean", "mean", _UNIT, -math.inf, math.inf),
         Measure("sigma", "standard deviation", _UNIT, 0.0, math.inf, lower_open=True, optional=True),
