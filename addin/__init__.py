@@ -19,6 +19,7 @@ from steelyard.addin import (
     picking,
     staged,
     together,
+    two_samples,
     until,
 )
 from steelyard.addin.catalogue import CATALOGUE, Cells
@@ -43,4 +44,19 @@ def call(name: str, arguments: list[Cells]) -> Cells:
     return entry.function(*arguments)
 
 
-del ask, assurance, clustered, demonstration, explain, inspected, lots, make, measured, picking, staged, together, until
+del (
+    ask,
+    assurance,
+    clustered,
+    demonstration,
+    explain,
+    inspected,
+    lots,
+    make,
+    measured,
+    picking,
+    staged,
+    together,
+    two_samples,
+    until,
+)

@@ -112,6 +112,14 @@ class Stepping(Protocol):
         """Return amounts inspected, and the acceptance and rejection numbers from there on; None for none."""
 
 
+@runtime_checkable
+class Bordering(Protocol):
+    """A kind that rejects pairs of counts."""
+
+    def borders(self, plan: Plan) -> list[tuple[int, int | None, int | None]]:
+        """Return for each first count up to and from which second count it rejects; None for none."""
+
+
 def rule_making(kind: Kind) -> RuleMaking:
     """Return the kind as one whose rules follow from a claim and alpha, or raise `NoAnswer`."""
     if isinstance(kind, RuleMaking):
@@ -185,6 +193,13 @@ def forecasting(kind: Kind) -> Forecasting:
     if isinstance(kind, Forecasting):
         return kind
     raise _lacking(kind, "closed form for its power over an uncertain rate")
+
+
+def bordering(kind: Kind) -> Bordering:
+    """Return the kind as one that rejects pairs of counts; raise `NoAnswer` if it does not."""
+    if isinstance(kind, Bordering):
+        return kind
+    raise _lacking(kind, "pairs of counts; see SY_REGION")
 
 
 def _lacking(kind: Kind, what: str) -> NoAnswer:

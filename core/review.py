@@ -71,7 +71,9 @@ def sentences(plan: Plan) -> list[str]:
 
 def sample_sentence(plan: Plan) -> str:
     """Return the instruction at the bench."""
-    values = {field.attribute: getattr(plan.design, field.attribute) for field in kind_of(plan).grammar.fields}
+    values = {
+        field.attribute: getattr(plan.design, field.attribute) for field in kind_of(plan).grammar.fields
+    }
     fields = {name: _filled_in(value) for name, value in values.items()}
     return kind_of(plan).grammar.wording.sample.format_map(fields)
 

@@ -17,6 +17,7 @@ MODULES = (
     "three_class",
     "staged",
     "sequential",
+    "two_binomial",
 )
 
 for _module in MODULES:
