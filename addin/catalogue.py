@@ -27,11 +27,14 @@ class Word:
         From one cell and the argument's name to a value; raises a `SteelyardError`.
     whole : bool
         The function takes the range as a whole; it does not run once per cell.
+    left_out : str
+        What an optional argument without a default of its own then means.
     """
 
     help: str
     read: Callable[[Any, str], Any]
     whole: bool = False
+    left_out: str = "not used"
 
 
 @dataclass(frozen=True, slots=True)
@@ -102,7 +105,8 @@ def arguments_of(function: Callable[..., Any]) -> list[Argument]:
         word = _word_in(hints[name])
         required = parameter.default is inspect.Parameter.empty
         default = None if required else parameter.default
-        text = word.help if required else f"{word.help} Left out: {_shown_default(default)}."
+        meaning = word.left_out if default is None else str(default)
+        text = word.help if required else f"{word.help} Left out: {meaning}."
         found.append(Argument(name, text, required, default, True, word))
     return found
 
@@ -111,7 +115,3 @@ def _word_in(hint: Any) -> Word:
     if get_origin(hint) is Annotated:
         return next(part for part in get_args(hint)[1:] if isinstance(part, Word))
     return next(_word_in(part) for part in get_args(hint) if get_origin(part) is Annotated)
-
-
-def _shown_default(default: Any) -> str:
-    return "not used" if default is None else str(default)

@@ -119,18 +119,26 @@ Target = Annotated[
     ),
 ]
 Confidence = Annotated[
-    float, Word("Confidence level, between 0 and 1.", lambda v, n: read_probability(as_typed(v, n), n))
+    float,
+    Word(
+        "Confidence level, between 0 and 1.",
+        lambda v, n: read_probability(as_typed(v, n), n),
+        left_out="1 minus the plan's alpha",
+    ),
 ]
 Side = Annotated[
     str,
     Word(
         "Where the true rate lies when the claim is false: above, below or either.",
         one_of(tuple(SIDES.values())),
+        left_out="as the claim says, else above",
     ),
 ]
 Split = Annotated[str, Word("How a two-sided test shares alpha: half, nearest or rarest.", one_of(SPLITS))]
 Verdict = Annotated[str, Word("What rejecting the claim means for the lot: fail or pass.", one_of(VERDICTS))]
-End = Annotated[str, Word("Which end: lower or upper.", one_of(ENDS))]
+End = Annotated[
+    str, Word("Which end: lower or upper.", one_of(ENDS), left_out="the only end at which the plan rejects")
+]
 Order = Annotated[
     str,
     Word(
