@@ -44,3 +44,15 @@ def entry_text(entry: Entry, width: int = 100) -> str:
 def _wrapped(text: str, width: int, indent: int) -> list[str]:
     margin = " " * indent
     return textwrap.wrap(text, width, initial_indent=margin, subsequent_indent=margin)
+
+
+def markdown() -> str:
+    """Return every function and every kind of plan as the README lists them."""
+    blocks = []
+    for group, title in GROUPS.items():
+        entries = [entry for entry in CATALOGUE.values() if entry.group == group]
+        rows = [f"| `{signature(entry)}` | {entry.help} |" for entry in entries]
+        blocks.append("\n".join([f"**{title}**", "", "| function | what it gives |", "|---|---|", *rows]))
+    kinds = [f"| `{kind.grammar.kind}` | {kind.grammar.wording.title} |" for kind in KINDS.values()]
+    blocks.append("\n".join(["**Kinds of plan**", "", "| kind | for |", "|---|---|", *kinds]))
+    return "\n\n".join(blocks)
