@@ -1,4 +1,4 @@
-"""Words for a plan's circumstances: inspection that errs, clusters, several characteristics, uncertain rates."""
+"""Words for the circumstances of a plan: inspection that errs, clusters, uncertain rates."""
 
 from __future__ import annotations
 

@@ -157,8 +157,11 @@ class InspectedLaw(CountLaw):
 
     def native(self, design: Any, rule: Reject, cell: str) -> str | None:
         """Return the formula of a perfect inspection, at the rate that is found."""
-        line = "+".join(self._line(design))
-        return self.law.native(design, rule, f"{line}*{operand(cell)}")
+        return self.law.native(design, rule, self.line(design, cell))
+
+    def line(self, design: Any, cell: str) -> str:
+        """Return the rate that is found as a formula of the true rate in a cell."""
+        return f"{'+'.join(self._line(design))}*{operand(cell)}"
 
     def _line(self, design: Any) -> list[str]:
         """Return what is found at the rate 0, if anything, and the slope."""

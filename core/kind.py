@@ -12,7 +12,7 @@ from abc import ABC, abstractmethod
 from collections.abc import Callable, Iterable, Sequence
 from dataclasses import dataclass
 from importlib import import_module
-from typing import Any
+from typing import Any, TypeVar
 
 import numpy as np
 
@@ -246,9 +246,10 @@ def claim_of(plan: Plan) -> Any:
 
 
 KINDS: dict[str, Kind] = {}
+AnyKind = TypeVar("AnyKind", bound=Kind)
 
 
-def register(kind: Kind) -> Kind:
+def register(kind: AnyKind) -> AnyKind:
     """Add a kind to the register; its name must be new."""
     name = kind.grammar.kind
     if name in KINDS:

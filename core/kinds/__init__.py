@@ -17,6 +17,7 @@ MODULES = (
     "three_class",
     "staged",
     "sequential",
+    "inspected_stages",
     "two_binomial",
 )
 

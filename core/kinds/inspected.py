@@ -48,11 +48,11 @@ from steelyard.core.questions import size
 from steelyard.core.tabulated import TabulatedLaw, WeightedCounts, digits_of
 
 MOST_DRAWN = 1_000
-_OF_ITEMS = (
+OF_ITEMS = (
     "Inspection misses a share of {misses} of the defectives and condemns a share of {false_alarms} "
     "of the good items."
 )
-_OF_DEFECTS = (
+OF_DEFECTS = (
     "Inspection misses a share of {misses} of the defects and finds {false_alarms} per unit that are none."
 )
 
@@ -159,36 +159,41 @@ def _exact(lot: int, defectives: int, n: int, misses: Fraction, false_alarms: Fr
     return WeightedCounts(digits_of(total * defective**least, n + 1, width))
 
 
+def with_perfect_inspection(plan: Plan) -> list[str]:
+    """Return in words what the same counts would mean if inspection were perfect; nothing without a claim."""
+    if plan.claim is None:
+        return []
+    perfect = show_rate(size(plain(plan)))
+    return [f"With perfect inspection a true claim would be rejected with probability {perfect} at most."]
+
+
 class _Erring:
     """What all kinds with imperfect inspection have in common."""
 
     def remarks(self, plan: Plan) -> list[str]:
         """Return what the same counts would mean if inspection were perfect."""
-        if plan.claim is None:
-            return []
-        perfect = show_rate(size(plain(plan)))
-        return [f"With perfect inspection a true claim would be rejected with probability {perfect} at most."]
+        return with_perfect_inspection(plan)
 
 
 class InspectedBinomialKind(_Erring, BinomialKind):
     """Single plans for the rate of defectives, with imperfect inspection."""
 
     law = InspectedLaw(BinomialLaw(), found_per_item, "p")
-    grammar = inspected_grammar(BinomialKind.grammar, InspectedItems, _OF_ITEMS)
+    grammar = inspected_grammar(BinomialKind.grammar, InspectedItems, OF_ITEMS)
 
 
 class InspectedPoissonKind(_Erring, PoissonKind):
     """Single plans for defects per unit, with imperfect inspection."""
 
     law = InspectedLaw(PoissonLaw(), found_per_unit, "rate")
-    grammar = inspected_grammar(PoissonKind.grammar, InspectedExtent, _OF_DEFECTS)
+    grammar = inspected_grammar(PoissonKind.grammar, InspectedExtent, OF_DEFECTS)
 
 
 class InspectedHypergeometricKind(_Erring, HypergeometricKind):
     """Single plans for a finite lot, with imperfect inspection."""
 
     law = InspectedLotLaw()
-    grammar = inspected_grammar(HypergeometricKind.grammar, InspectedLotSample, _OF_ITEMS)
+    grammar = inspected_grammar(HypergeometricKind.grammar, InspectedLotSample, OF_ITEMS)
 
 
 INSPECTED = tuple(
