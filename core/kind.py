@@ -21,7 +21,6 @@ from steelyard.core.numbers import write_number
 from steelyard.core.parameter import Columns, Floats, Parameter
 from steelyard.core.plan import Claim, Plan, Reject, split_claim
 
-
 REQUIRED = object()
 
 
@@ -214,7 +213,7 @@ class Kind(ABC):
         if always and claim.relation != "=":
             raise InvalidValue("claim", f"be false for some {claim.symbol}", str(claim))
 
-    def verify(self, plan: Plan) -> None:
+    def verify(self, plan: Plan) -> None:  # noqa: B027 - most kinds have nothing to verify
         """Raise when design, claim and rule do not go together."""
 
     def size(self, plan: Plan) -> float:

@@ -184,7 +184,7 @@ class HypergeometricKind(CountKind):
         order=("lot", "n", "claim", "alpha", "split", "reject", "verdict"),
         wording=Wording(
             title="defectives in a finite lot",
-            sample="Draw {n} items at random from the lot of {lot}, without putting any back, and count the defectives.",
+            sample="Draw {n} items at random from the lot of {lot}, put none back, and count the defectives.",
             found="defectives",
             assumptions=(
                 "Every item of the lot has the same chance of being drawn.",

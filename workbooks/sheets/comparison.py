@@ -6,7 +6,7 @@ from collections.abc import Sequence
 
 from openpyxl.utils import get_column_letter
 
-from steelyard.addin import SY_BINOMIAL, SY_CROSSING, SY_DOUBLE, SY_SMALLEST
+from steelyard.addin import call
 from steelyard.workbooks.charts import Axis, Curve, curve_chart
 from steelyard.workbooks.house import Book, Live, Put, Sheet, Value
 from steelyard.workbooks.plans import Planned
@@ -39,9 +39,9 @@ def alternatives(planned: Planned) -> list[tuple[str, str]]:
     half = max(1, round(planned.extent / 2))
     found = [
         ("As planned", planned.text),
-        ("Lasting size", SY_SMALLEST("binomial", *risks, None, "lasting")),
-        ("Half the items", SY_BINOMIAL(half, claim, planned.alpha)),
-        ("Two samples", SY_DOUBLE("binomial", *risks)),
+        ("Lasting size", call("SMALLEST", ["binomial", *risks, None, "lasting"])),
+        ("Half the items", call("BINOMIAL", [half, claim, planned.alpha])),
+        ("Two samples", call("DOUBLE", ["binomial", *risks])),
         ("Reject on the first", f"binomial | n {half} | claim p<={claim!r} | reject x>=1"),
     ]
     return [(name, text) for name, text in found if not text.startswith("SY:")]
@@ -152,7 +152,9 @@ class _Page:
         lives = []
         for place in range(MOST):
             own = self.plans.text(place)
-            found = SY_CROSSING(self.texts[0], self.texts[place]) if place and self.texts[place] else ""
+            found = (
+                call("CROSSING", [self.texts[0], self.texts[place]]) if place and self.texts[place] else ""
+            )
             found = found[0][0] if isinstance(found, list) else found
             shown = found if isinstance(found, float) else ""
             crossing = f"INDEX(SY_CROSSING({first},{own}),1,1)"
@@ -191,7 +193,7 @@ class _Page:
             rate_axis(name, rates[0], rates[-1], self.style == "rate"),
             Axis("power: chance of rejecting", 1.0),
         )
-        chart = curve_chart("Power of the alternatives", *axes, curves, 42.5, 10.0)
+        chart = curve_chart("Power of the alternatives", *axes, curves, 40.0, 10.0)
         sheet.chart(chart, f"Power of {len(curves)} alternative plans by the {name}.")
 
     def _copies(self, place: int) -> list[Live]:

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 from steelyard.workbooks.charts import Axis, Curve, curve_chart
-from steelyard.workbooks.house import Book, Live, LiveArray, Piece, Put, Sheet
+from steelyard.workbooks.house import Book, Live, LiveArray, Piece, Put, Sheet, Value
 from steelyard.workbooks.plans import Planned
 from steelyard.workbooks.terms import Terms, ask, literal
 
@@ -84,11 +84,10 @@ class _Log:
         return Terms(texts, [[value] for value in values] + [[None]] * (ROWS - len(values)))
 
     def _inputs(self, place: int) -> list[Piece]:
+        values: Sequence[Value] = (None,) * 6
         if place < len(self.examples):
             one, found = self.examples[place]
             values = ("example", f"Lot {place + 1}", one.request.characteristic, one.text, one.extent, found)
-        else:
-            values = (None,) * 6
         looks = ("edit", "edit", "edit", "edit", "input count", "input count")
         return [Put(value, look) for value, look in zip(values, looks, strict=True)]
 
