@@ -93,7 +93,8 @@ class Capability:
         beyond, outside, one, two = show_rate(claim.value), show_rate(self.outside), self.one, self.two
         return [
             f"Test: the claim that {beyond} or more lies beyond a limit is rejected, at alpha "
-            f"{show_rate(alpha)}, if (limit - mean)/s is at least {one:.4g}: a sample's Ppk of at least {one / 3:.4g}.",
+            f"{show_rate(alpha)}, if (limit - mean)/s is at least {one:.4g}"
+            f": a sample's Ppk of at least {one / 3:.4g}.",
             f"One limit: with that confidence at most {beyond} lies beyond mean + {one:.4g} s.",
             f"Two limits: with that confidence at most {outside} lies outside mean +- {two:.4g} s.",
             "Holds for a stable, normal process only, with s from all values together.",

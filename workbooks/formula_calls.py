@@ -21,7 +21,7 @@ _NUMBERED = re.compile(r"\[([0-9]+)\]!")
 UNREADABLE = "is written in a way that can't be read here"
 
 
-class Unfollowed(SteelyardError):  # noqa: N818  (mostly a finding, no failure)
+class Unfollowed(SteelyardError):
     """A formula that can't be computed here; the message says what stands in the way."""
 
 

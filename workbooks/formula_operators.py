@@ -13,7 +13,7 @@ from steelyard.workbooks.pieces import Fault, Value
 _NEARLY = 2.0**-48  # spreadsheets take numbers that differ by less, relatively, for equal
 
 
-class Raised(Exception):  # noqa: N818  (it is a value on its way, as IFERROR may catch it)
+class Raised(Exception):
     """An error value on its way out of a formula."""
 
     def __init__(self, fault: str) -> None:

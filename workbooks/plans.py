@@ -231,7 +231,7 @@ def _cell(typed: str, kind: Kind) -> float | str:
     return typed if kind.grammar.extra == "lot" and number >= 1 and typed.rstrip().endswith("%") else number
 
 
-class _Refused(Exception):  # noqa: N818 (it carries a problem, it is none)
+class _Refused(Exception):
     def __init__(self, problem: Problem) -> None:
         self.problem = problem
         super().__init__(problem)

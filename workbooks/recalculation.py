@@ -65,7 +65,7 @@ def recalculate(book: OpenedBook, progress: Progress | None = None) -> Recalcula
     return _Run(book).run(progress)
 
 
-class _Later(Exception):  # noqa: N818  (nothing is wrong)
+class _Later(Exception):
     """An answer that comes with those to other questions."""
 
 

@@ -70,7 +70,5 @@ def test_the_last_candidate_ends_where_its_rule_does() -> None:
 
 def test_a_list_that_would_be_too_long_is_refused(monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.setattr(saw_teeth, "MOST_AMOUNTS", 5)
-    with pytest.raises(
-        NoAnswer, match="27 and 33, lie too far apart for a list"
-    ):
+    with pytest.raises(NoAnswer, match="27 and 33, lie too far apart for a list"):
         candidates(NEEDS[0])
