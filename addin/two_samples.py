@@ -10,10 +10,12 @@ from steelyard.addin.words import Level, Plans, Split, Target, Verdict
 from steelyard.addin.words_two import (
     CountTest,
     FirstItems,
+    FirstUnits,
     FirstValue,
     Ratio,
     SecondItems,
     SecondSide,
+    SecondUnits,
     SecondValue,
     TwoKind,
     TwoTest,
@@ -47,6 +49,23 @@ def SY_TWO_BINOMIAL(
     """Return the text of a plan that compares two defect rates."""
     values = {"n": (first_items, second_items), "test": test}
     return _planned("two binomial", values, side, alpha, split, verdict)
+
+
+@cell(
+    group="make",
+    help="Plan that compares the defects per unit of two samples (conditional exact test).",
+    example='=SY_TWO_POISSON(100,120,5%,"above")',
+)
+def SY_TWO_POISSON(
+    first_units: FirstUnits,
+    second_units: SecondUnits,
+    alpha: Level = 0.05,
+    side: SecondSide = "above",
+    split: Split = "half",
+    verdict: Verdict = "fail",
+) -> Cells:
+    """Return the text of a plan that compares two rates of defects."""
+    return _planned("two poisson", {"units": (first_units, second_units)}, side, alpha, split, verdict)
 
 
 @cell(

@@ -44,3 +44,7 @@ TwoTest = Annotated[
     str, Word("Test of the kind, where it has several: boschloo, barnard, fisher, z; t, welch.", text)
 ]
 TwoKind = Annotated[str, Word("What is compared: two binomial, two poisson, two means or two spreads.", text)]
+FirstUnits = Annotated[
+    float, Word("Units of the first sample, the one compared with: any number above 0.", number)
+]
+SecondUnits = Annotated[float, Word("Units of the second sample: any number above 0.", number)]

@@ -104,7 +104,8 @@ class ComparingKind(Kind):
 
     def completed(self, values: dict[str, Any]) -> dict[str, Any]:
         """Return a design's values, with the usual test where none is named."""
-        return {**values, "test": values.get("test") or self.test or None}
+        chosen = values.get("test") or self.test
+        return {**values, "test": chosen} if chosen else values
 
     def read_claim(self, text: str, design: Any) -> Claim:
         """Return the claim that ``p2<=p1`` or ``p2<=p1+0.1`` makes.

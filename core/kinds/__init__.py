@@ -19,6 +19,7 @@ MODULES = (
     "sequential",
     "inspected_stages",
     "two_binomial",
+    "two_poisson",
 )
 
 for _module in MODULES:
