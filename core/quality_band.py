@@ -33,7 +33,7 @@ from steelyard.core.tails_noncentral import density_factor, student_at_most
 
 _NODES, _WEIGHTS = np.polynomial.legendre.leggauss(48)
 _GRID = np.linspace(0.0, 1.0, 48)
-_ROUNDS = 3
+_ROUNDS, _ENOUGH = 3, _GRID.size // 3  # looks, finer and finer, until the integrand fills such a part
 _DROP, _STEP = 42.0, 9.0
 _LEAST_K, _LEAST_Y, _LAST_Y = 1e-9, 1e-12, 1e6
 _SHARES = np.concatenate([[0.0], np.geomspace(1e-6, 0.5, 14)])
@@ -140,6 +140,8 @@ def _integral(
         first, last = heavy.argmax(axis=-1), heavy.shape[-1] - 1 - heavy[..., ::-1].argmax(axis=-1)
         ends = np.maximum(first - 1, 0), np.minimum(last + 1, heavy.shape[-1] - 1)
         start, stop = (np.take_along_axis(grid, end[..., None], -1)[..., 0] for end in ends)
+        if (ends[1] - ends[0]).min() > _ENOUGH:
+            break
     cuts = np.sort([(step + sign * _STEP / np.sqrt(n)) / k for sign in (-1, 1)], axis=0)
     edges = np.array([start, *(np.clip(cut, start, stop) for cut in cuts), stop])
     half, middle = (edges[1:] - edges[:-1]) / 2, (edges[1:] + edges[:-1]) / 2

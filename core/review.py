@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import dataclasses
+import math
 
 from steelyard.core.abilities import Remarking
 from steelyard.core.errors import SteelyardError
@@ -10,10 +11,11 @@ from steelyard.core.kind import claim_of, kind_of
 from steelyard.core.parameter import show_rate
 from steelyard.core.plan import Plan, same_rule
 from steelyard.core.questions import region, size
-from steelyard.core.rates import rate_for
+from steelyard.core.rates import rates_for
 from steelyard.core.regions import critical_region, empty_tails
 
 _CLAIMED = {"<=": "at most", ">=": "at least", "=": "exactly"}
+_GOALS = (0.5, 0.9, 0.95)
 _MORE = 1e-9  # relative; rounding of a measured critical value gives less
 NOT_PROOF = "Not rejecting a claim does not prove it; a sample proves no lot free of defects."
 
@@ -43,10 +45,13 @@ def check(plan: Plan) -> str:
 
 
 def _given_by_alpha(plan: Plan) -> object | None:
+    if plan.claim is None or plan.alpha is None:
+        return None
     try:
-        return critical_region(kind_of(plan), plan.design, plan.claim, plan.alpha, plan.split)
+        found: object = critical_region(kind_of(plan), plan.design, plan.claim, plan.alpha, plan.split)
     except SteelyardError:
         return None
+    return found
 
 
 def sentences(plan: Plan) -> list[str]:
@@ -137,12 +142,11 @@ def _shown(plan: Plan) -> str:
 
 def _reach(plan: Plan) -> str:
     """Return the rates at which the power is 50, 90 and 95 %, for plans that reject at one end."""
-    parameter = kind_of(plan).parameters[0]
-    try:
-        found = [(goal, parameter.show(rate_for(plan, goal, None), bare=True)) for goal in (0.5, 0.9, 0.95)]
-    except SteelyardError:
+    parameter, found = kind_of(plan).parameters[0], rates_for([plan], _GOALS)[0]
+    if not all(map(math.isfinite, found)):
         return ""
-    told = ", ".join(f"{show_rate(goal)} at {rate}" for goal, rate in found)
+    shown = (parameter.show(float(rate), bare=True) for rate in found)
+    told = ", ".join(f"{show_rate(goal)} at {rate}" for goal, rate in zip(_GOALS, shown, strict=True))
     return f"Power reaches {told} ({parameter.name})."
 
 

@@ -37,6 +37,7 @@ _PEAK_ROUNDS, _END_ROUNDS = 6, 11
 _FARTHEST = 1e15
 _FAR = 1e60  # beyond, the tail is 0 or 1 and squares overflow
 _FLAT = 1e-30  # a slope of Phi that leaves it constant over all y of weight
+_NEAR = 0.05  # of the way from the peak to an end; the ends need not be exact
 _CHUNK = 256  # points at a time, so that their nodes stay in the cache
 _TINY = 1e-300
 _ROOT_TWO = math.sqrt(2.0)
@@ -136,6 +137,8 @@ def _range(t: Floats, df: Floats, delta: Floats) -> tuple[Floats, Floats]:
     for _ in range(_END_ROUNDS):
         step = (_log_weight(ends, t, df, delta) - level) / _slope(ends, t, df, delta)
         ends = np.where(step < ends, ends - step, ends)
+        if (np.abs(step) < _NEAR * np.abs(ends - peak)).all():
+            break
     return ends[0], ends[1]
 
 
@@ -151,7 +154,9 @@ def _peak(t: Floats, df: Floats, delta: Floats) -> Floats:
         mills = _mills(z)
         curvature = t * t * mills * (z + mills) + df * (1 + 1 / (y * y))
         new = y + (t * mills + df * (1 / y - y)) / curvature
-        y = np.where(new > 0, new, y / 2)
+        last, y = y, np.where(new > 0, new, y / 2)
+        if (np.abs(y - last) * np.sqrt(curvature) < _NEAR).all():
+            break
     return y
 
 
