@@ -20,7 +20,7 @@ STEPS = 15
 
 _LETTERS = [get_column_letter(number) for number in range(1, 5 + STEPS + 1)]
 _FIRST_RATE = 3  # index of the first true value's column
-_WIDTHS = (5.0, 24.0, 50.0, *[8.6] * (STEPS + 2))
+_WIDTHS = (5.0, 24.0, 50.0, *[9.6] * (STEPS + 2))
 
 
 def subject_of(planned: Sequence[Planned]) -> Planned | None:
@@ -141,7 +141,10 @@ class _Page:
                 *(cells[place] for cells in lives),
                 crossings[place],
             )
-        sheet.add(None, Put("Items: inspected on average, without stopping inside a sample.", "note", 4))
+        sheet.add(None, Put("Items: inspected on average, without stopping inside a sample.", "note", 2))
+        sheet.add(
+            None, Put("A plan of a large size is powerful because it rejects good lots too.", "note", 2)
+        )
 
     def _ask(self, name: str, plans: Terms, *terms: Terms) -> Terms:
         return ask(self.host, name, plans, *terms, unless_blank=plans)
@@ -193,7 +196,7 @@ class _Page:
             rate_axis(name, rates[0], rates[-1], self.style == "rate"),
             Axis("power: chance of rejecting", 1.0),
         )
-        chart = curve_chart("Power of the alternatives", *axes, curves, 40.0, 10.0)
+        chart = curve_chart("Power of the alternatives", *axes, curves, 42.0, 13.0)
         sheet.chart(chart, f"Power of {len(curves)} alternative plans by the {name}.")
 
     def _copies(self, place: int) -> list[Live]:

@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from steelyard.workbooks.charts import Axis, Curve, curve_chart
 from steelyard.workbooks.house import Book, Live, LiveArray, Piece, Put, Sheet, Value
 from steelyard.workbooks.plans import Planned
+from steelyard.workbooks.sheets import paper
 from steelyard.workbooks.terms import Terms, ask, literal
 
 TITLE = "Results log"
@@ -14,7 +15,7 @@ ROWS = 38
 CONFIDENCE = 0.95
 
 _WIDTHS = {
-    **dict(zip("ABCDEFGH", (11.0, 16.0, 26.0, 46.0, 10.0, 10.0, 22.0, 10.0), strict=True)),
+    **dict(zip("ABCDEFGH", (11.0, 16.0, 26.0, 54.0, 10.0, 10.0, 22.0, 10.0), strict=True)),
     **dict(zip("IJKLMNO", (12.0, 11.0, 11.0, 12.0, 12.0, 3.0, 8.0), strict=True)),
 }
 _HEADS = (
@@ -46,6 +47,7 @@ def add_results(book: Book, planned: Sequence[Planned]) -> Sheet | None:
     sheet.freeze(f"C{log.top + 1}")
     sheet.protect()
     sheet.print_setup(landscape=True, repeat=f"{log.top}:{log.top}", area=f"A1:M{sheet.next_row - 1}")
+    paper.fixed_scale(sheet, 60)
     return sheet
 
 
@@ -88,7 +90,7 @@ class _Log:
         if place < len(self.examples):
             one, found = self.examples[place]
             values = ("example", f"Lot {place + 1}", one.request.characteristic, one.text, one.extent, found)
-        looks = ("edit", "edit", "edit", "edit", "input count", "input count")
+        looks = ("edit", "edit", "edit", "edit", "input count", "tick count")
         return [Put(value, look) for value, look in zip(values, looks, strict=True)]
 
     def _totals(self, row: int, place: int) -> list[Piece]:
@@ -140,11 +142,12 @@ class _Log:
             column="O",
         )
         sheet.next_row = below + 1
+        paper.break_here(sheet)
         x = sheet.ref(f"O{first}", f"O{last}")
         curves = [
             Curve("Rate so far", x, sheet.ref(f"L{first}", f"L{last}"), "points"),
             Curve("Upper limit so far", x, sheet.ref(f"M{first}", f"M{last}")),
         ]
         axes = Axis("row of the log", ROWS, digits="0"), Axis("defect rate", digits="0%")
-        chart = curve_chart("Rates with their upper limits", *axes, curves, 26.0, 8.5)
+        chart = curve_chart("Rates with their upper limits", *axes, curves, 39.0, 13.0)
         sheet.chart(chart, "Rate of defectives so far and its upper confidence limit, by row of the log.")

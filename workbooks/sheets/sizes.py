@@ -121,7 +121,7 @@ class _Page:
             enough = reached.values()[place]
             good = isinstance(enough, float) and enough >= power.cells
             sheet.add(
-                Live(f"={start.texts[0]}+{place}*{step.texts[0]}", sizes[place], "result count"),
+                Live(f"={start.texts[0]}+{place}*{step.texts[0]}", sizes[place], "index count"),
                 *cells,
                 Live(
                     f'=IF(ISNUMBER(E{row}),IF(E{row}>={power.texts[0]},"yes","no"),"no")',
@@ -158,7 +158,7 @@ class _Page:
             *lines,
         ]
         axes = Axis("items inspected, n", digits="0"), Axis("probability", 1.0)
-        chart = curve_chart("Size and power against the number of items", *axes, curves, 18.5, 9.5)
+        chart = curve_chart("Size and power against the number of items", *axes, curves, 21.0, 10.8)
         sheet.chart(chart, "Size and power move in saw teeth as the number of items grows.", f"A{row}")
 
     def _line(self, name: str, role: Role, ends: Sequence[tuple[Piece, Piece]]) -> Curve:
