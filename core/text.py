@@ -105,7 +105,7 @@ def _choose(candidates: list[Kind], words: dict[str, str]) -> Kind:
     covering = [kind for kind in candidates if words.keys() <= _fields(kind)] or candidates
     fitting = [kind for kind in covering if kind.grammar.marker in words] or covering
     if len(fitting) > 1:
-        return _foremost(fitting, words)
+        return _foremost(fitting, candidates, words)
     for word in words:
         if word not in _fields(fitting[0]):
             raise InvalidValue("field", f"be one of {', '.join(fitting[0].grammar.order)}", word)
@@ -116,17 +116,21 @@ def _fields(kind: Kind) -> set[str]:
     return {*kind.grammar.order, kind.grammar.head}
 
 
-def _foremost(fitting: list[Kind], words: dict[str, str]) -> Kind:
-    """Return the one kind that is no form of another; several are told apart by their markers."""
-    if any(kind.grammar.marker in words for kind in fitting):  # and no kind has all the fields
-        bases = {kind.grammar.base for kind in fitting}
-        markers = [kind.grammar.marker for kind in fitting if kind.grammar.kind not in bases]
-        raise InvalidValue("plan", f"have only one of {' and '.join(markers)}", "all of them")
-    plain = [kind for kind in fitting if not kind.grammar.base]
-    if len(plain) != 1:
-        markers = [kind.grammar.marker for kind in plain or fitting]
+def _foremost(fitting: list[Kind], candidates: list[Kind], words: dict[str, str]) -> Kind:
+    """Return the one kind of several that is no form of another, or say what tells them apart."""
+    bases = {kind.grammar.base or kind.grammar.kind for kind in fitting}
+    plain = [kind for kind in candidates if kind.grammar.kind in bases]
+    markers = dict.fromkeys(kind.grammar.marker for kind in plain)
+    written = [word for word in markers if word in words]
+    forms = dict.fromkeys(kind.grammar.marker for kind in fitting if kind.grammar.base)
+    added = [word for word in forms if word in words]
+    if len(plain) == 1 and not added:
+        return plain[0]
+    if len(written) + len(added) < 2:
         raise InvalidValue("plan", f"say {' or '.join(markers)}", None)
-    return plain[0]
+    # No kind has all the fields: two kinds of plan in one, or two forms, or a form that this kind has not.
+    clash = next((found for found in (written, added) if len(found) > 1), written + added)
+    raise InvalidValue("plan", f"have only one of {' and '.join(clash)}", "all of them")
 
 
 def _assemble(grammar: Grammar, kind: Kind, words: dict[str, str]) -> Plan:
