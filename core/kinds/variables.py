@@ -260,10 +260,13 @@ class VariablesKind(Kind):
         z = f"_xlfn.NORM.S.INV({cell})"
         if index.known:
             score = f"SQRT({n})*({write_number(plan.rule.k)}+{z})"
-            return f"_xlfn.NORM.S.DIST({score if rising else f'-{score}'},TRUE)"
-        t = math.sqrt(n) * plan.rule.k
-        low, high = (t, None) if rising else (None, t)
-        return t_power(low, high, n - 1, f"-SQRT({n})*{z}")
+            chance = f"_xlfn.NORM.S.DIST({score if rising else f'-{score}'},TRUE)"
+        else:
+            t = math.sqrt(n) * plan.rule.k
+            low, high = (t, None) if rising else (None, t)
+            chance = t_power(low, high, n - 1, f"-SQRT({n})*{z}") or ""
+        none, all_ = (0, 1) if rising else (1, 0)
+        return f"IF({cell}<=0,{none},IF({cell}>=1,{all_},{chance}))" if chance else None
 
 
 def _chance(columns: Columns, passing: Any, reject: bool, p: Floats, share: Floats | None = None) -> Floats:

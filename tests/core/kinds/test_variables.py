@@ -446,6 +446,7 @@ def native_value(text: str, p: float) -> float:
         .replace(",TRUE)", ")")
     )
     names: dict[str, Any] = {
+        "IF": lambda test, yes, no: yes if test else no,
         "EXP": np.exp,
         "SQRT": math.sqrt,
         "phi": stats.norm.cdf,
@@ -462,7 +463,7 @@ def native_value(text: str, p: float) -> float:
 
 @pytest.mark.parametrize("text", [ONE, SHOWN, ONE.replace("unknown", "0.2").replace("/s>", "/sigma>")])
 def test_native_formula(text: str) -> None:
-    for p in (1e-4, 0.01, 0.2):
+    for p in (0.0, 1e-4, 0.01, 0.2, 1.0):
         assert native_value(text, p) == pytest.approx(power(read_plan(text), p), abs=1e-11)
     assert VARIABLES.native(read_plan(BAND), "B2") is VARIABLES.native(read_plan(KNOWN), "B2") is None
 
@@ -527,7 +528,7 @@ def test_capability() -> None:
     assert "Ppk of at least 1.72" in found.sentences()[0]
     for wrong, message in (
         ((1, 1.33), r"^n must be a whole number of at least 2, but got 1$"),
-        ((30, 0), r"^target must be a Ppk above 0 and at most 10, but got 0$"),
+        ((30, 0), r"^target must be a Ppk from 0.001 to 10, but got 0$"),
         ((30, 1.33, 95), r"^confidence must lie between 0 and 1"),
         ((30, 95, 0.95, "coverage"), r"^target must lie between 0 and 1"),
         ((30, 1.33, 0.95, "cpk"), r"^measure must be one of ppk, coverage, but got cpk"),
