@@ -104,12 +104,8 @@ def _single(cells: Sequence[Any]) -> Iterator[Any]:
 
 
 def _read(arguments: Sequence[Argument], cells: Sequence[Any]) -> list[Any]:
-    if len(cells) > len(arguments):
-        names = ", ".join(argument.name for argument in arguments) or "nothing"
-        raise InvalidValue("arguments", f"be at most {len(arguments)} ({names})", len(cells))
     values = []
-    for place, argument in enumerate(arguments):
-        value = cells[place] if place < len(cells) else None
+    for argument, value in zip(arguments, _filled(arguments, cells), strict=True):
         if not is_blank(value):
             values.append(argument.word.read(value, argument.name))
         elif argument.required:
@@ -117,6 +113,14 @@ def _read(arguments: Sequence[Argument], cells: Sequence[Any]) -> list[Any]:
         else:
             values.append(argument.default)
     return values
+
+
+def _filled(arguments: Sequence[Argument], cells: Sequence[Any]) -> list[Any]:
+    """Return as many cells as there are arguments; blank ones for those left out."""
+    if len(cells) > len(arguments):
+        names = ", ".join(argument.name for argument in arguments) or "nothing"
+        raise InvalidValue("arguments", f"be at most {len(arguments)} ({names})", len(cells))
+    return [*cells, *[None] * (len(arguments) - len(cells))]
 
 
 def _over_ranges(
@@ -127,7 +131,7 @@ def _over_ranges(
 ) -> Cells:
     """Answer cell by cell where an argument is a range; ranges broadcast like rows against columns."""
     try:
-        given = [_range(value, place, arguments) for place, value in enumerate(cells)]
+        given = list(map(_range, _filled(arguments, cells), arguments))
         rows, columns = _shape(arguments, given)
     except SteelyardError as error:
         return refusal(error)
@@ -148,7 +152,7 @@ def _one_cell(
     column: int,
 ) -> Cells:
     picked = [_at(value, row, column) if isinstance(value, list) else value for value in given]
-    for argument, value, whole in zip(arguments, picked, given, strict=False):
+    for argument, value, whole in zip(arguments, picked, given, strict=True):
         if isinstance(whole, list) and argument.required and is_blank(value):
             return None
     answer = one(*picked)
@@ -162,14 +166,14 @@ def _at(rows: list[list[Any]], row: int, column: int) -> Any:
     return line[column if len(line) > 1 else 0]
 
 
-def _range(value: Cells, place: int, arguments: Sequence[Argument]) -> Any:
+def _range(value: Cells, argument: Argument) -> Any:
     """Return a range as rows, a range of one cell as its value, a range taken as a whole as tuples."""
     if not isinstance(value, list | tuple):
         return value
     rows = [list(row) if isinstance(row, list | tuple) else [row] for row in value]
     if value and not isinstance(value[0], list | tuple):
         rows = [list(value)]
-    if place < len(arguments) and arguments[place].word.whole:
+    if argument.word.whole:
         return tuple(map(tuple, rows))
     if not rows or not rows[0] or any(len(row) != len(rows[0]) for row in rows):
         raise InvalidValue("a range", "have rows of one length", f"{len(rows)} uneven rows")
@@ -181,7 +185,7 @@ def _shape(arguments: Sequence[Argument], given: Sequence[Any]) -> tuple[int, in
     if not ranges:
         return 1, 1
     rows, columns = max(map(len, ranges)), max(len(value[0]) for value in ranges)
-    for argument, value in zip(arguments, given, strict=False):
+    for argument, value in zip(arguments, given, strict=True):
         if isinstance(value, list) and (len(value) not in (1, rows) or len(value[0]) not in (1, columns)):
             shape = f"{len(value)} by {len(value[0])} cells"
             raise InvalidValue(argument.name, f"fit the other ranges ({rows} by {columns} cells)", shape)

@@ -10,6 +10,7 @@ import numpy as np
 from steelyard.addin.plans import plan_or_none, table_of
 from steelyard.core.evidence import LIMIT_ENDS
 from steelyard.core.kind import Kind
+from steelyard.core.numbers import MOST
 from steelyard.core.parameter import Floats
 from steelyard.core.plan import Plan
 from steelyard.core.rates import rates_for
@@ -62,4 +63,4 @@ def floats(cells: Any) -> Floats:
 
 
 def _float(cell: Any) -> float:
-    return float(cell) if type(cell) in (int, float) else np.nan
+    return float(cell) if type(cell) in (int, float) and abs(cell) <= MOST else np.nan

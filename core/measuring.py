@@ -21,6 +21,7 @@ from steelyard.core.tolerance import two_sided_factor
 
 MEASURES = ("ppk", "coverage")
 MOST_PPK = 10
+LEAST = 0.001  # of a Ppk or a coverage; below it nothing is shown
 
 
 def variables_plan(
@@ -141,10 +142,13 @@ def capability(n: Any, target: Any, confidence: Any = 0.95, measure: str = "ppk"
 def _allowed(target: Any, measure: str) -> tuple[float, float]:
     """Return the fraction allowed beyond one limit, and outside two."""
     if measure == "coverage":
-        outside = float(1 - typed(read_probability(target, "target")))
+        coverage = read_probability(target, "target")
+        if coverage < LEAST:
+            raise InvalidValue("target", f"be a coverage of at least {LEAST}", target)
+        outside = float(1 - typed(coverage))
         return outside, outside
     ppk = read_number(target, "target")
-    if not 0 < ppk <= MOST_PPK:
-        raise InvalidValue("target", f"be a Ppk above 0 and at most {MOST_PPK}", target)
+    if not LEAST <= ppk <= MOST_PPK:
+        raise InvalidValue("target", f"be a Ppk from {LEAST} to {MOST_PPK}", target)
     beyond = float(normal_at_most(-3 * ppk))
     return beyond, 2 * beyond

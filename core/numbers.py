@@ -7,6 +7,7 @@ decimal arithmetic, because ``1.1 / 100`` is 0.011000000000000001.
 from __future__ import annotations
 
 import math
+import sys
 from decimal import Decimal, InvalidOperation
 from difflib import get_close_matches
 from fractions import Fraction
@@ -15,6 +16,7 @@ from typing import Any
 from steelyard.core.errors import InvalidValue
 
 _SCALES = {"%": 2, "ppm": 6}
+MOST = sys.float_info.max  # a whole number beyond it has no float
 
 
 def write_number(value: float) -> str:
@@ -62,7 +64,7 @@ def read_number(value: Any, name: str) -> float:
     if isinstance(value, bool) or value is None:
         raise InvalidValue(name, "be a number", value)
     if isinstance(value, int | float):
-        number = float(value)
+        number = float(value) if abs(value) <= MOST else math.inf
     else:
         number = _read_text(str(value), name)
     if not math.isfinite(number):

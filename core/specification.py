@@ -15,6 +15,7 @@ from steelyard.core.quality import Index
 from steelyard.core.tails_continuous import beta_at_most, normal_at_least
 
 UNKNOWN = "unknown"
+MOST_SIGMAS = 1e9  # between two limits; wider ones are no limits at all
 SIDES = {"upper": "upper-mean", "lower": "mean-lower"}
 
 
@@ -40,6 +41,12 @@ class Limits:
             raise InvalidValue("sigma", "be greater than 0, or unknown", self.sigma)
         if self.lower is not None and self.upper is not None and self.lower >= self.upper:
             raise InvalidValue("upper", f"be greater than the lower limit {self.lower:g}", self.upper)
+        if self.lower is not None and self.upper is not None and self.deviation is not None:
+            self._check_width(self.upper - self.lower, self.deviation)
+
+    def _check_width(self, width: float, deviation: float) -> None:
+        if width > MOST_SIGMAS * deviation:
+            raise InvalidValue("sigma", f"be at least {width / MOST_SIGMAS:g} for limits so far apart", deviation)
 
     @property
     def deviation(self) -> float | None:

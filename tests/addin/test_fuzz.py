@@ -1,0 +1,60 @@
+"""No cell function breaks its promises, whatever the cells hold; what the search found stays found."""
+
+from __future__ import annotations
+
+from typing import Any
+
+import pytest
+from fuzz import complaint, search
+
+from steelyard.addin import SY_POWER, SY_RATE_FOR, call
+
+PLAN = "binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4"
+BEYOND = 10**400  # a whole number that no float can hold
+
+
+@pytest.mark.parametrize("seed", range(3))
+def test_no_promise_is_broken(seed: int) -> None:
+    assert list(search(800, seed)) == []
+
+
+@pytest.mark.parametrize(
+    ("answer", "wrong"),
+    [
+        (float("nan"), "the number nan"),
+        (float("inf"), "the number inf"),
+        (True, "a cell of type bool"),
+        (None, "a blank for a single cell"),
+        ([[1.0], [1.0, 2.0]], "uneven rows"),
+        ([], "uneven rows"),
+        ("x" * 256, "a text of 256 characters"),
+        ([[None, "x", 1, 0.5]], None),
+    ],
+)
+def test_the_search_knows_a_broken_promise(answer: Any, wrong: str | None) -> None:
+    assert complaint(answer) == wrong
+
+
+def test_a_whole_number_without_a_float_is_refused() -> None:
+    refused = "SY: p must be a finite number, but got 1" + "0" * 38 + "…"
+    assert call("SY_POWER", [PLAN, BEYOND]) == refused
+    assert call("SY_POWER", [PLAN, [[0.1, BEYOND]]])[0] == [SY_POWER(PLAN, 0.1), refused]
+
+
+def test_too_few_or_too_many_arguments_over_a_range() -> None:
+    missing = "SY: power must be given, but got nothing"
+    assert SY_RATE_FOR([[PLAN], [PLAN]]) == [[missing], [missing]]
+    message = "SY: arguments must be at most 3 (plan, power, end), but got 4"
+    assert SY_RATE_FOR([[PLAN], [PLAN]], 0.9, None, 1) == message
+
+
+def test_targets_that_show_nothing_are_refused() -> None:
+    assert call("capability", [2, 1e-83, "99%"]) == "SY: target must be a Ppk from 0.001 to 10, but got 1e-83"
+    refused = "SY: target must be a coverage of at least 0.001, but got 1e-20"
+    assert call("capability", [2, 1e-20, "99%", "coverage"]) == refused
+
+
+def test_limits_too_far_apart_for_their_sigma_are_refused() -> None:
+    arguments = ["p>=5%", 0.01, 0.02, 0.9, 0.4, 800, 8e160]
+    refused = "SY: sigma must be at least 8e+151 for limits so far apart, but got 0.4"
+    assert call("variables", arguments) == refused
