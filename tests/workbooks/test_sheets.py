@@ -97,8 +97,11 @@ def test_a_block_holds_one_parameter_and_like_scales():
         members = [demo()[place] for place in block.places]
         assert len({member.kind.parameters[0].symbol for member in members}) == 1
         assert len(block.rates) <= STEPS + 1
-        assert all(rate <= (member.extra or rate) for member in members for rate in block.rates)
-        assert all(block.rates[-1] >= max(marks(member)) * 0.99 for member in members if not member.extra)
+        lots = [member.request.lot for member in members]
+        assert all(rate <= (lot or rate) for lot in lots for rate in block.rates)
+        assert all(
+            block.rates[-1] >= max(marks(member)) * 0.99 for member in members if not member.request.lot
+        )
     places = [place for block in blocks(demo()) for place in block.places]
     assert sorted(places) == list(range(len(demo())))
 
