@@ -10,10 +10,14 @@ from steelyard.addin.words import Level, Plans, Split, Target, Verdict
 from steelyard.addin.words_two import (
     CountTest,
     FirstItems,
+    FirstMeasured,
     FirstUnits,
     FirstValue,
+    MeansTest,
+    PlanningSigmas,
     Ratio,
     SecondItems,
+    SecondMeasured,
     SecondSide,
     SecondUnits,
     SecondValue,
@@ -70,6 +74,41 @@ def SY_TWO_POISSON(
 
 @cell(
     group="make",
+    help="Plan that compares the means of two samples: Welch's test, or the pooled t.",
+    example='=SY_TWO_MEANS(12,15,0.4,5%,"above")',
+)
+def SY_TWO_MEANS(
+    first_items: FirstMeasured,
+    second_items: SecondMeasured,
+    planning_sigma: PlanningSigmas,
+    alpha: Level = 0.05,
+    side: SecondSide = "above",
+    test: MeansTest = "welch",
+    verdict: Verdict = "fail",
+) -> Cells:
+    """Return the text of a plan that compares two means."""
+    values = {"n": (first_items, second_items), "planning_sigma": planning_sigma, "test": test}
+    return _planned("two means", values, side, alpha, verdict=verdict)
+
+
+@cell(
+    group="make",
+    help="Plan that compares the standard deviations of two samples (F test).",
+    example='=SY_TWO_SPREADS(12,15,5%,"above")',
+)
+def SY_TWO_SPREADS(
+    first_items: FirstMeasured,
+    second_items: SecondMeasured,
+    alpha: Level = 0.05,
+    side: SecondSide = "above",
+    verdict: Verdict = "fail",
+) -> Cells:
+    """Return the text of a plan that compares two standard deviations."""
+    return _planned("two spreads", {"n": (first_items, second_items)}, side, alpha, verdict=verdict)
+
+
+@cell(
+    group="make",
     help="The smallest two samples that show a difference with the wanted power.",
     example='=SY_TWO_SMALLEST("two binomial",10%,25%,90%)',
 )
@@ -82,9 +121,10 @@ def SY_TWO_SMALLEST(
     side: SecondSide = "above",
     ratio: Ratio = 1.0,
     test: TwoTest | None = None,
+    planning_sigma: PlanningSigmas | None = None,
 ) -> Cells:
     """Return the text of the first plan with two samples that reaches a power."""
-    values = {"test": test}
+    values = {"test": test, "planning_sigma": planning_sigma}
     rates = (first_value, second_value)
     return write_plan(two_sizes.smallest_comparison(kind, values, rates, power, alpha, side, ratio))
 

@@ -48,3 +48,24 @@ FirstUnits = Annotated[
     float, Word("Units of the first sample, the one compared with: any number above 0.", number)
 ]
 SecondUnits = Annotated[float, Word("Units of the second sample: any number above 0.", number)]
+FirstMeasured = Annotated[
+    int,
+    Word(
+        "Items to measure of the first sample, the one compared with: a whole number from 2.",
+        lambda v, name: read_whole(as_typed(v, name), name, 2),
+    ),
+]
+SecondMeasured = Annotated[
+    int,
+    Word(
+        "Items to measure of the second sample: a whole number from 2.",
+        lambda v, name: read_whole(as_typed(v, name), name, 2),
+    ),
+]
+PlanningSigmas = Annotated[
+    Any,
+    Word('Standard deviation that power is computed with: one for both, or "0.4 and 0.6".', as_typed),
+]
+MeansTest = Annotated[
+    str, Word("welch (sigmas may differ) or t (pooled; assumes equal ones).", one_of(("t", "welch")))
+]

@@ -20,6 +20,8 @@ MODULES = (
     "inspected_stages",
     "two_binomial",
     "two_poisson",
+    "two_means",
+    "two_spreads",
 )
 
 for _module in MODULES:

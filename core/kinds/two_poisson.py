@@ -230,8 +230,9 @@ def _mean(question: Any, columns: Columns, rates: tuple[Floats, ...]) -> Floats:
         columns["plan"], columns["first"] * rates[0], columns["second"] * rates[1]
     )
     found = np.empty(plans.shape)
-    for place in np.ndindex(plans.shape):
-        found[place] = _mean_at(question, plans[place], *(float(mean[place]) for mean in means))
+    flat: list[Plan] = plans.ravel().tolist()
+    for place, plan in enumerate(flat):
+        found.flat[place] = _mean_at(question, plan, *(float(mean.flat[place]) for mean in means))
     return found
 
 
