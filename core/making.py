@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 from steelyard.core.claims import claim_from
@@ -67,15 +68,12 @@ def plan_from_rule(
     """
     kind = kind_named(kind_name)
     design = design_from(kind, extent_values(kind, extent, extra))
-    side = "either" if None not in (reject_from, reject_to) else "above" if reject_to is None else "below"
-    plan = Plan(
-        kind=kind.grammar.kind,
-        design=design,
-        rule=kind.given_rule(Reject(reject_to, reject_from)),
-        claim=None if claim is None else claim_from(kind, claim, _implied(claim, side), design),
-        alpha=alpha,
-        verdict=verdict,
-    )
+    rule = kind.given_rule(Reject(reject_to, reject_from))
+    plan = Plan(kind.grammar.kind, design, rule, alpha=alpha, verdict=verdict)
+    if claim is not None:
+        one_sided = "above" if kind.rises(plan) else "below"
+        side = one_sided if None in (reject_from, reject_to) else "either"
+        plan = replace(plan, claim=claim_from(kind, claim, _implied(claim, side), design))
     kind.verify(plan)
     return plan
 

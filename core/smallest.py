@@ -158,6 +158,11 @@ def smallest_sizes(
     """
     kind, side = kind_named(kind_name), read_choice(side, "side", ("above", "below"))
     law, extra_field = count_law(kind), kind.grammar.extra
+    if kind.grammar.base:
+        message = (
+            f"many sizes at once are sought for plans without further fields, not for {kind.grammar.kind}"
+        )
+        raise NoAnswer(message)
     given = (claim, catch, alpha, power, *([extra] if extra_field else []))
     arrays = np.broadcast_arrays(*(np.asarray(number, dtype=float) for number in given))
     rate, aim, level, target, *rest = (array.ravel() for array in arrays)

@@ -28,6 +28,7 @@ from steelyard.core.questions import not_rejected, power, size
 from steelyard.core.rates import rate_for
 from steelyard.core.regions import make_plan
 from steelyard.core.review import check, sentences
+from steelyard.core.smallest import smallest_sizes
 from steelyard.core.text import read_plan, write_plan
 
 ITEMS = "binomial | n 50 | claim p<=0.02 | alpha 0.05 | misses 0.1 | false-alarms 0.01 | reject x>=4"
@@ -339,3 +340,8 @@ def test_outgoing_quality_is_refused_because_missed_defectives_stay() -> None:
     for text, rate, lot in ((ITEMS, 0.02, 800), (DEFECTS, 0.05, 800), (LOT, 16, None)):
         with pytest.raises(NoAnswer, match="outgoing quality is known for inspection without errors"):
             outgoing(read_plan(text), rate, lot)
+
+
+def test_many_sizes_at_once_are_refused() -> None:
+    with pytest.raises(NoAnswer, match="not for inspected binomial"):
+        smallest_sizes("inspected binomial", 0.02, 0.05, 0.1, 0.9)

@@ -22,6 +22,7 @@ from steelyard.core.evidence import decide, limit, p_value
 from steelyard.core.forms import keeping_alpha, resized
 from steelyard.core.kind import kind_of
 from steelyard.core.kinds.until import UNTIL, Until, UntilLaw
+from steelyard.core.making import plan_from_rule
 from steelyard.core.outgoing import average_sample
 from steelyard.core.plan import RELATIONS, Claim, Plan
 from steelyard.core.questions import acceptance, not_rejected, power, region, size
@@ -293,6 +294,15 @@ def test_power_and_rates() -> None:
     assert power(plan, rate_for(plan, 0.9)) == pytest.approx(0.9, rel=1e-12)
     assert power(many, rate_for(many, 0.9)) == pytest.approx(0.9, rel=1e-12)
     assert average_sample(many, 0) == 149 and average_sample(plan, 1) == 3
+
+
+def test_a_rule_from_outside_takes_its_side_from_its_end() -> None:
+    few = plan_from_rule("until", 3, None, 40, claim="2%")
+    assert write_plan(few) == "until 3 defectives | claim p<=0.02 | reject inspected<=40"
+    many = plan_from_rule("until", 1, 150, None, claim=0.02, verdict="pass")
+    assert write_plan(many) == "until 1 defective | claim p>=0.02 | reject inspected>=150 | verdict pass"
+    both = plan_from_rule("until", 4, 80, 9, claim=0.1)
+    assert both.claim is not None and both.claim.side == "either"
 
 
 def test_cells() -> None:
