@@ -5,6 +5,7 @@ The only place where a cell's content becomes a value.
 
 from __future__ import annotations
 
+import re
 from typing import Annotated, Any
 
 from steelyard.addin.catalogue import Word
@@ -17,6 +18,8 @@ from steelyard.core.stages import STOPS
 from steelyard.core.switching import ANSWERS
 from steelyard.core.switching_rules import Rules, read_rules
 
+LONGEST_ADDRESS = 60
+_ADDRESS = re.compile(r"(?:(?:'[^']+'|\$?\w+)[!.])?(?:\$?[A-Z]{1,3}\$?\d{1,7}|[^\W\d]\w*)", re.IGNORECASE)
 ENDS = ("lower", "upper")
 ORDERS = ("first", "lasting")
 
@@ -38,6 +41,14 @@ def text(value: Any, name: str) -> str:
 def number(value: Any, name: str) -> float:
     """Return a number; TRUE and FALSE are none."""
     return read_number(as_typed(value, name), name)
+
+
+def address(value: Any, name: str) -> str:
+    """Return a cell's address or name, which may say its sheet."""
+    found = text(value, name)
+    if len(found) > LONGEST_ADDRESS or not _ADDRESS.fullmatch(found):
+        raise InvalidValue(name, "be the address of a cell, such as B2 or 'Power grid'!B2", value)
+    return found
 
 
 def one_of(allowed: tuple[str, ...]) -> Any:
@@ -154,7 +165,7 @@ Observed = Annotated[
 ]
 KindName = Annotated[str, Word("Kind of plan: binomial, poisson, hypergeometric, …", text)]
 Number = Annotated[float, Word("A number.", number)]
-CellName = Annotated[str, Word("Address of the cell with the rate, as text such as B2.", text)]
+CellName = Annotated[str, Word("Address of the cell with the rate, as text such as B2.", address)]
 Size = Annotated[float, Word("How much is inspected: items, or units for defects per unit.", number)]
 Extra = Annotated[Any, Word("The lot's size, or the known sigma, where the kind needs one.", as_typed)]
 RejectFrom = Annotated[float, Word("Reject the claim from this count (or measure) upwards.", number)]

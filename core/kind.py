@@ -9,8 +9,9 @@ a question that needs one refuses in one sentence where a kind lacks it.
 from __future__ import annotations
 
 from abc import ABC, abstractmethod
-from collections.abc import Callable, Iterable, Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from functools import lru_cache
 from importlib import import_module
 from typing import Any, TypeVar
 
@@ -268,14 +269,20 @@ def known_kinds() -> dict[str, Kind]:
     return KINDS
 
 
-def heads() -> dict[str, list[Kind]]:
+def heads() -> dict[str, tuple[Kind, ...]]:
     """Return the kinds by the words that open their text."""
-    found: dict[str, list[Kind]] = {}
-    for kind in known_kinds().values():
-        found.setdefault(kind.grammar.head, []).append(kind)
+    return _heads(tuple(known_kinds().values()))
+
+
+@lru_cache(maxsize=4)
+def _heads(kinds: tuple[Kind, ...]) -> dict[str, tuple[Kind, ...]]:
+    found: dict[str, tuple[Kind, ...]] = {}
+    for kind in kinds:
+        found[kind.grammar.head] = (*found.get(kind.grammar.head, ()), kind)
     return found
 
 
-def words_of(kinds: Iterable[Kind]) -> list[str]:
+@lru_cache(maxsize=256)
+def words_of(kinds: tuple[Kind, ...]) -> tuple[str, ...]:
     """Return the field words of several kinds, each once, in order."""
-    return list(dict.fromkeys(word for kind in kinds for word in kind.grammar.order))
+    return tuple(dict.fromkeys(word for kind in kinds for word in kind.grammar.order))

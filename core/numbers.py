@@ -11,6 +11,7 @@ import sys
 from decimal import Decimal, InvalidOperation
 from difflib import get_close_matches
 from fractions import Fraction
+from functools import lru_cache
 from typing import Any
 
 from steelyard.core.errors import InvalidValue
@@ -72,6 +73,7 @@ def read_number(value: Any, name: str) -> float:
     return number + 0.0  # no minus zero
 
 
+@lru_cache(maxsize=4096)
 def _read_text(text: str, name: str) -> float:
     digits, scale = text.strip().lower(), 0
     for suffix, places in _SCALES.items():
@@ -81,7 +83,7 @@ def _read_text(text: str, name: str) -> float:
         if "_" in digits or not digits.isascii():
             raise InvalidOperation
         return float(Decimal(digits).scaleb(-scale))
-    except InvalidOperation:
+    except (InvalidOperation, ValueError):  # a signalling NaN is a Decimal, but no float
         hint = "write decimals with a point" if "," in digits else ""
         raise InvalidValue(name, "be a number", text, hint) from None
 

@@ -66,7 +66,7 @@ class Parameter:
             When the value is no number or outside the parameter's range.
         """
         number = read_number(value, self.symbol)
-        if not self.allowed(np.float64(number)):
+        if not self.allowed(number):
             raise InvalidValue(self.symbol, self.rule(), value)
         return number
 
@@ -78,7 +78,7 @@ class Parameter:
     def allowed(self, values: Any) -> Any:
         """Return a mask of the values that lie in the parameter's range."""
         above = values > self.lower if self.lower_open else values >= self.lower
-        return above & (values <= self.upper) & np.isfinite(values)
+        return above & (values <= self.upper) & (abs(values) < np.inf)
 
     def convert(self, values: Floats, columns: Columns) -> Floats:
         """Return queried values in the parameter's own unit, NaN where they are refused."""

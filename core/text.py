@@ -6,7 +6,9 @@ The canonical order is written back; writing then reading gives an equal plan.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from difflib import get_close_matches
+from functools import lru_cache
 from typing import Any
 
 from steelyard.core.errors import InvalidValue
@@ -15,6 +17,7 @@ from steelyard.core.numbers import read_choice, read_probability, write_number
 from steelyard.core.plan import SPLITS, VERDICTS, Plan
 
 LONGEST = 255
+MOST_GROWTH = 4  # of a text that is written back: 1e15 becomes 1000000000000000
 
 
 def read_plan(text: str) -> Plan:
@@ -32,15 +35,16 @@ def read_plan(text: str) -> Plan:
     >>> write_plan(plan)
     'binomial | n 50 | claim p<=0.02 | reject x>=4'
     """
-    opening, *segments = [" ".join(part.split()) for part in str(text).split("|")]
+    text = str(text)
+    opening, *segments = [" ".join(part.split()) for part in text.split("|")]
     candidates, words = _candidates(opening)
     for segment in segments:
         word, _, rest = segment.partition(" ")
         _store(words, word, rest, candidates)
-    kind = _choose(candidates, words)
+    kind = _choose(candidates, tuple(words))
     plan = _assemble(kind.grammar, kind, words)
     kind.verify(plan)
-    if len(write_plan(plan)) > LONGEST:
+    if len(text) * MOST_GROWTH > LONGEST and len(write_plan(plan)) > LONGEST:
         raise InvalidValue("plan text", f"be at most {LONGEST} characters long", text)
     return plan
 
@@ -71,7 +75,7 @@ def write_plan(plan: Plan) -> str:
     return " | ".join([opening, *(f"{word} {texts[word]}" for word in grammar.order if word in texts)])
 
 
-def _candidates(opening: str) -> tuple[list[Kind], dict[str, str]]:
+def _candidates(opening: str) -> tuple[tuple[Kind, ...], dict[str, str]]:
     """Find the kinds that the first segment may open; ``until 3 defectives`` is head and field in one."""
     known, wanted = heads(), " ".join(opening.lower().split())
     if wanted in known:
@@ -84,10 +88,10 @@ def _candidates(opening: str) -> tuple[list[Kind], dict[str, str]]:
     raise InvalidValue("kind", f"be one of {', '.join(known)}", opening, hint)
 
 
-def _store(words: dict[str, str], word: str, rest: str, candidates: list[Kind]) -> None:
+def _store(words: dict[str, str], word: str, rest: str, candidates: tuple[Kind, ...]) -> None:
     known, word = words_of(candidates), word.lower()
-    for name in known:  # a field of several words, such as "at end accept x<=3"
-        if " " in name and f"{word} {rest}".lower().startswith(name + " "):
+    for name in _phrases(known).get(word, ()):
+        if f"{word} {rest}".lower().startswith(name + " "):
             word, rest = name, f"{word} {rest}"[len(name) :]
     if word not in known:
         close = get_close_matches(word, known, n=1)
@@ -100,9 +104,21 @@ def _store(words: dict[str, str], word: str, rest: str, candidates: list[Kind]) 
     words[word] = rest.strip()
 
 
-def _choose(candidates: list[Kind], words: dict[str, str]) -> Kind:
+@lru_cache(maxsize=256)
+def _phrases(known: tuple[str, ...]) -> dict[str, tuple[str, ...]]:
+    """Return by their first word the fields of several, such as ``at end`` in "at end accept x<=3"."""
+    found: dict[str, tuple[str, ...]] = {}
+    for name in known:
+        first, _, others = name.partition(" ")
+        if others:
+            found[first] = (*found.get(first, ()), name)
+    return found
+
+
+@lru_cache(maxsize=1024)
+def _choose(candidates: tuple[Kind, ...], words: tuple[str, ...]) -> Kind:
     """Return the kind whose fields cover the words and whose marker is among them."""
-    covering = [kind for kind in candidates if words.keys() <= _fields(kind)] or candidates
+    covering = [kind for kind in candidates if _fields(kind).issuperset(words)] or candidates
     fitting = [kind for kind in covering if kind.grammar.marker in words] or covering
     if len(fitting) > 1:
         return _foremost(fitting, candidates, words)
@@ -116,7 +132,7 @@ def _fields(kind: Kind) -> set[str]:
     return {*kind.grammar.order, kind.grammar.head}
 
 
-def _foremost(fitting: list[Kind], candidates: list[Kind], words: dict[str, str]) -> Kind:
+def _foremost(fitting: Sequence[Kind], candidates: tuple[Kind, ...], words: tuple[str, ...]) -> Kind:
     """Return the one kind of several that is no form of another, or say what tells them apart."""
     bases = {kind.grammar.base or kind.grammar.kind for kind in fitting}
     plain = [kind for kind in candidates if kind.grammar.kind in bases]

@@ -1,9 +1,9 @@
 """
 Every cell function with every kind of wrong value that a spreadsheet can hand over.
 
-``python tests/addin/fuzz.py --calls 1000000 --seed 1`` prints each broken promise once, with the call that
-shows it. Promised are: no exception, only plain finite numbers, texts and blanks in cells, refusals that start
-with "SY: ", stay below 255 characters and report no fault of our own, and an answer within a second.
+``python tests/addin/fuzz.py --calls 1000000 --seed 1`` prints the broken promises, each with a call that
+shows it. Promised are: no exception, only plain finite numbers, texts and blanks in cells, refusals that
+start with "SY: ", stay below 255 characters and report no fault of our own, an answer within a second.
 """
 
 from __future__ import annotations
@@ -54,19 +54,21 @@ PLANS = [
     *(f"binomial | n {n} | claim p<=0.01 | alpha 0.05 | reject x>=3" for n in (82, 400)),
 ]
 NUMBERS = [
-    0, 1, -1, 2, 3, 8, 50, 800, 0.5, 0.05, 0.01, 0.001, 1e-9, 5e-324, 1e-300, 0.999999, 1.5, 50.5, 1e5, 10**7, 10**9,
-    1e15, 2.0**53, 1e16, 1e300, -1e300, 10**400, math.inf, -math.inf, math.nan, -0.0, 499.7, 0.4, 1.33,
+    0, 1, -1, 2, 3, 8, 50, 800, 0.5, 0.05, 0.01, 0.001, 1e-9, 5e-324, 1e-300, 0.999999, 1.5, 50.5, 1e5,
+    10**7, 10**9, 1e15, 2.0**53, 1e16, 1e300, -1e300, 10**400, math.inf, -math.inf, math.nan, -0.0, 499.7,
+    0.4, 1.33,
 ]  # fmt: skip
 TEXTS = [
-    "", " ", "5%", "2 %", "1.1%", "50 ppm", "-5%", "0,05", "1e999", "nan", "inf", "--", "TRUE", "p<=2%", "p>=5%", "p=50%",
-    "P<=", "D<=8", "rate<=0.05", "mean>=500", "sigma<=0.4", "life<=1000", "p2<=p1", "bad<=0.001 and marginal<=0.05",
-    "<=0.02", "lower", "upper", "first", "lasting", "above", "below", "either", "half", "rarest", "nearest", "fail", "pass",
-    "any", "independent", "all", "right", "replaced", "removed", "ppk", "coverage", "boschloo", "fisher", "z",
-    "binomial", "poisson", "hypergeometric", "normal", "student", "spread", "variables", "until", "two binomial",
-    "life", "three-class", "50 then 50", "1 then 4", "4 then 5", "none then 2", "4 and 6", "stage-end", "on-reject",
-    "mean 499.7 s 0.31", "mean 499.7", "2 then 1", "tighten 2 of 5 | resume 5 | stop 5 | reduce 30 by 2", "never",
-    "B2", "$B$2", "A1:B2", "n", "claim", "alpha", "SY: refused", "x" * 300, "é≤≥∞\x00\ud800", "1" * 400, "٣", "1_000",
-    *sorted(ERRORS),
+    "", " ", "5%", "2 %", "1.1%", "50 ppm", "-5%", "0,05", "1e999", "nan", "inf", "--", "TRUE", "p<=2%",
+    "p>=5%", "p=50%", "P<=", "D<=8", "rate<=0.05", "mean>=500", "sigma<=0.4", "life<=1000", "p2<=p1",
+    "bad<=0.001 and marginal<=0.05", "<=0.02", "lower", "upper", "first", "lasting", "above", "below",
+    "either", "half", "rarest", "nearest", "fail", "pass", "any", "independent", "all", "right", "replaced",
+    "removed", "ppk", "coverage", "boschloo", "fisher", "z", "binomial", "poisson", "hypergeometric",
+    "normal", "student", "spread", "variables", "until", "two binomial", "life", "three-class",
+    "50 then 50", "1 then 4", "4 then 5", "none then 2", "4 and 6", "stage-end", "on-reject",
+    "mean 499.7 s 0.31", "mean 499.7", "2 then 1", "tighten 2 of 5 | resume 5 | stop 5 | reduce 30 by 2",
+    "never", "B2", "$B$2", "A1:B2", "n", "claim", "alpha", "SY: refused", "x" * 300, "é≤≥∞\x00\ud800",
+    "1" * 400, "٣", "1_000", *sorted(ERRORS),
 ]  # fmt: skip
 SENSIBLE: dict[str, list[Any]] = {
     "rate": [0, 0.01, 0.02, "5%", 0.1, 0.5, 1, 8, 499.5, 0.6],
@@ -258,7 +260,9 @@ def main() -> int:
             if seen[key] <= options.each:
                 print(what, "in", name, re.sub(r"0{30,}", "0…0", ascii(arguments))[:600], flush=True)
     signal.setitimer(signal.ITIMER_PROF, 0)
-    print(f"{options.calls} calls, seed {options.seed}, {time.monotonic() - start:.0f} s; faults: {dict(seen)}")
+    print(
+        f"{options.calls} calls, seed {options.seed}, {time.monotonic() - start:.0f} s; faults: {dict(seen)}"
+    )
     return 1 if seen else 0
 
 

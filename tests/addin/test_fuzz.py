@@ -7,7 +7,7 @@ from typing import Any
 import pytest
 from fuzz import complaint, search
 
-from steelyard.addin import SY_POWER, SY_RATE_FOR, call
+from steelyard.addin import SY_NATIVE, SY_POWER, SY_RATE_FOR, call
 
 PLAN = "binomial | n 50 | claim p<=0.02 | alpha 0.05 | reject x>=4"
 BEYOND = 10**400  # a whole number that no float can hold
@@ -15,7 +15,7 @@ BEYOND = 10**400  # a whole number that no float can hold
 
 @pytest.mark.parametrize("seed", range(3))
 def test_no_promise_is_broken(seed: int) -> None:
-    assert list(search(800, seed)) == []
+    assert list(search(600, seed)) == []
 
 
 @pytest.mark.parametrize(
@@ -58,3 +58,19 @@ def test_limits_too_far_apart_for_their_sigma_are_refused() -> None:
     arguments = ["p>=5%", 0.01, 0.02, 0.9, 0.4, 800, 8e160]
     refused = "SY: sigma must be at least 8e+151 for limits so far apart, but got 0.4"
     assert call("variables", arguments) == refused
+
+
+def test_a_signalling_nan_is_no_number() -> None:
+    assert call("SY_POWER", [PLAN, "snan"]) == "SY: p must be a number, but got snan"
+
+
+@pytest.mark.parametrize("cell", ["B2", "$b$2", "Grid!B2", "'Power grid'!$B$2", "$Grid.B2", "true_rate"])
+def test_native_formulas_take_addresses(cell: str) -> None:
+    assert SY_NATIVE(PLAN, cell).count(cell) == SY_NATIVE(PLAN, "B2").count("B2") > 0
+
+
+@pytest.mark.parametrize("cell", ["B2+1", "50| x", "B2,B3", "x" * 61, "2", "'B2"])
+def test_native_formulas_take_nothing_else(cell: str) -> None:
+    assert SY_NATIVE(PLAN, cell).startswith(
+        "SY: cell must be the address of a cell, such as B2 or 'Power grid'!B2"
+    )
