@@ -13,8 +13,8 @@ from steelyard.core.numbers import read_whole, typed, write_number
 from steelyard.core.walk import NONE, Look
 
 MOST_ITEMS = 1_000_000
-MOST_FOUND = 500  # the largest reject number, and
-MOST_OPEN = 100  # the most counts between the lines: they bound the work, so that no cell has to wait
+MOST_FOUND = 150  # the largest reject number, and
+MOST_OPEN = 60  # the most counts between the lines: they bound the work, so that no cell has to wait
 
 _NUMBER = r"(?:\d+\.?\d*|\.\d+)(?:e[-+]?\d+)?"
 _LINE = re.compile(rf"x(<=|>=)({_NUMBER})\*n(?:([+-])({_NUMBER}))?")
@@ -99,7 +99,7 @@ class SequentialRule:
             raise InvalidValue("accept and reject", rule, f"{self.accept} and {self.reject}")
         low, high = self.numbers(most)
         if high > MOST_FOUND:
-            raise InvalidValue("reject", f"stay below {MOST_FOUND} to the end", high)
+            raise InvalidValue("reject", f"not pass {MOST_FOUND} before the end", high)
         if not max(low, 0) <= self.last < min(high, most):
             open_ = f"{max(low, 0)} to {min(high, most) - 1}"
             raise InvalidValue("at end", f"accept up to {open_}, which the lines leave open", self.last)

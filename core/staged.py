@@ -17,7 +17,16 @@ from steelyard.core.parameter import Floats
 from steelyard.core.partwise import PartwiseKind
 from steelyard.core.plan import Plan
 from steelyard.core.rates import rates_for
-from steelyard.core.stages import STOPS, StageRule, Stages, read_counts, read_stop, write_list
+from steelyard.core.stages import (
+    MOST_FOUND,
+    MOST_FOUND_EARLY,
+    STOPS,
+    StageRule,
+    Stages,
+    read_counts,
+    read_stop,
+    write_list,
+)
 from steelyard.core.threshold import CountKind
 from steelyard.core.walk import Look
 
@@ -105,7 +114,7 @@ class StagedKind(PartwiseKind):
     def verify(self, plan: Plan) -> None:
         """Refuse numbers that do not go together, and claims that many defectives do not contradict."""
         super().verify(plan)
-        plan.rule.check()
+        plan.rule.check(MOST_FOUND_EARLY if plan.design.stop == "on-decision" else MOST_FOUND)
         most, last = self.law.most({self.law.amount: plan.design.total}), plan.rule.reject[-1]
         if last > most:
             raise InvalidValue("reject", f"end with a count that {most:g} {self.things} can show", last)

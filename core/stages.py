@@ -14,6 +14,7 @@ from steelyard.core.walk import NONE, Look
 MOST_STAGES = 20
 MOST_FOUND = 500  # the largest reject number: it bounds the counts to follow, so that no cell has to wait
 MOST_IN_LOT = 1_000_000
+MOST_FOUND_EARLY = 50  # the same where every item may end the inspection
 STOPS = ("stage-end", "on-reject", "on-decision")
 
 Numbers = tuple[int | None, ...]
@@ -91,7 +92,7 @@ class StageRule:
     accept: Numbers
     reject: Numbers
 
-    def check(self) -> None:
+    def check(self, most: int = MOST_FOUND) -> None:
         """Refuse numbers that fall from stage to stage, stages that leave nothing open, a last one that does.
 
         Raises
@@ -102,8 +103,8 @@ class StageRule:
         if last is None or self.accept[-1] != last - 1:
             rule = "end with the last acceptance number plus 1"
             raise InvalidValue("reject", rule, write_list(self.reject))
-        if last > MOST_FOUND:
-            raise InvalidValue("reject", f"end with {MOST_FOUND} at most", last)
+        if last > most:
+            raise InvalidValue("reject", f"end with {most} at most", last)
         for name, numbers in (("accept", self.accept), ("reject", self.reject)):
             known = [number for number in numbers if number is not None]
             if known != sorted(known):

@@ -20,7 +20,8 @@ def staged_kind(name: str) -> Kind:
     InvalidValue
         With the list of laws.
     """
-    found = {kind.grammar.head: kind for kind in KINDS.values() if isinstance(kind, StagedKind)}
+    staged = [kind for kind in KINDS.values() if isinstance(kind, StagedKind) and not kind.grammar.base]
+    found = {kind.grammar.head: kind for kind in staged}
     return found[read_choice(name, "kind", tuple(found))]
 
 

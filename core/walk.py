@@ -67,7 +67,11 @@ class Course(ABC):
         self.rate = rate
         self.amount = 0.0
         self.counts = np.zeros(1, dtype=np.intp)
-        self.chance = np.ones((1, rate.size))  # of each count, at each rate
+
+    @property
+    @abstractmethod
+    def chance(self) -> Floats:
+        """The chances of the counts, one row for each, at all rates."""
 
     def accepted(self, look: Look) -> Floats:
         """Return the chance of being accepted at the next look."""
@@ -91,15 +95,16 @@ class Course(ABC):
 
     def go_on(self, look: Look) -> None:
         """Pass the look with the counts that it leaves undecided."""
-        counts = self._undecided(look)
-        self.chance = self._moved(counts, look.amount)
+        counts = np.arange(max(int(self.counts[0]), look.accept + 1), look.reject)
+        self._keep(counts, look.amount)
         self.counts, self.amount = counts, look.amount
 
     def _accepted_counts(self, look: Look) -> Counts:
         return np.arange(self.counts[0], look.accept + 1)
 
-    def _undecided(self, look: Look) -> Counts:
-        return np.arange(max(int(self.counts[0]), look.accept + 1), look.reject)
+    @abstractmethod
+    def _keep(self, counts: Counts, amount: float) -> None:
+        """Remember what the chances of counts will be when `amount` has been inspected."""
 
     @abstractmethod
     def _moved(self, counts: Counts, amount: float) -> Floats:
@@ -119,9 +124,18 @@ class ProcessCourse(Course):
 
     def __init__(self, law: CountLaw, rate: Floats, looks: Sequence[Look]) -> None:
         super().__init__(rate)
+        self._chance = np.ones((1, rate.size))
         lowest = np.maximum.accumulate([0, *(look.accept + 1 for look in looks[:-1])])
         widest = max(look.reject - low for look, low in zip(looks, lowest, strict=True))
         self._part = cache(lambda step: _Part(law, step, rate, int(widest)))
+
+    @property
+    def chance(self) -> Floats:
+        """The chances of the counts."""
+        return self._chance
+
+    def _keep(self, counts: Counts, amount: float) -> None:
+        self._chance = self._moved(counts, amount)
 
     def _moved(self, counts: Counts, amount: float) -> Floats:
         if not counts.size:
@@ -173,6 +187,8 @@ class _Part:
         For the time T of the y-th find that is E min(T, step) = E(T; T <= step) + step P(T > step).
         """
         count = np.arange(self.most + 1)[:, None]
+        if self.step == 1 and not self.law.divisible:
+            return np.broadcast_to(np.minimum(count, 1.0), (count.size, self.rate.size))
         found = self.law.at_least(count + 1, self._columns(0 if self.law.divisible else 1), self.rate)
         before = np.divide(count * found, self.rate, out=np.zeros(found.shape), where=self.rate > 0)
         return before + self.step * self.law.at_most(count - 1, self._columns(), self.rate)
@@ -193,11 +209,14 @@ class LotCourse(Course):
         self.lot = lot
         self._weights = np.ones(1)
 
-    def go_on(self, look: Look) -> None:
-        """Pass the look with the counts that it leaves undecided."""
-        weights = self._weights_at(self._undecided(look), look.amount)
-        super().go_on(look)
-        self._weights = weights
+    @property
+    def chance(self) -> Floats:
+        """The weights of the counts times what the lot gives them."""
+        point = tails.hypergeometric_pmf(self.counts[:, None], self.lot, self.rate, self.amount)
+        return self._weights[:, None] * point
+
+    def _keep(self, counts: Counts, amount: float) -> None:
+        self._weights = self._weights_at(counts, amount)
 
     def left(self, look: Look) -> Floats:
         """Return the expected defectives left among the items not drawn, where the next look accepts."""
@@ -219,6 +238,8 @@ class LotCourse(Course):
 
     def _wait(self, more: Counts, amount: float) -> Floats:
         (rest, left), step, count = self._rest(), amount - self.amount, more[:, None]
+        if step == 1:
+            return np.ones(left.shape)
         found = tails.hypergeometric_at_least(count + 1, rest + 1, left + 1, step + 1)
         missed = tails.hypergeometric_at_most(count - 1, rest, left, step)
         return count * (rest + 1) / (left + 1) * found + step * missed

@@ -63,7 +63,6 @@ def test_every_question_works_on_a_plan_in_stages() -> None:
         ("SY_CRITICAL", [DOUBLE]),
         ("SY_SMALLEST", ["staged binomial", 0.01, 0.05, 0.05, 0.9]),
         ("SY_RULE", ["staged binomial", 50, 4]),
-        ("SY_INSPECTED", [DOUBLE, 0.1]),
         ("SY_PVALUE", [DOUBLE, 2]),
     ],
 )

@@ -62,7 +62,7 @@ def test_spaces_case_and_signs_are_free() -> None:
         ("at end accept x<=3", "at end reject x>=4", "at end must have the form accept x<=3"),
         ("at end accept x<=3", "at end accept x<=2", "at end must accept up to 3 to 6, which the lines"),
         ("at end accept x<=3", "at end accept x<=7", "at end must accept up to 3 to 6, which the lines"),
-        ("to 120", "to 99999", "reject must stay below 500 to the end"),
+        ("to 120", "to 99999", "reject must not pass 150 before the end"),
         ("at end accept x<=3", "at end accept x<=3 | claim p>=0.1", "claim must have the form p<=…"),
     ],
 )  # fmt: skip
@@ -271,7 +271,7 @@ def test_the_plan_for_two_risks() -> None:
         (("p>=5%", "5%", "1%", "90%"), "claim must be of the form p<=0.02, above 0"),
         (("1%", "5%", 1, "90%"), "catch must be less than 1"),
         (("1%", "5%", "5%", "90%", 0), "stop_at must be a whole number from 1"),
-        (("1%", "5%", "1.2%", "90%"), "reject must stay below 500 to the end"),
+        (("1%", "5%", "1.2%", "90%"), "reject must not pass 150 before the end"),
     ],
 )
 def test_what_makes_no_sense_is_refused(arguments: tuple, message: str) -> None:

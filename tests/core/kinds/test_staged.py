@@ -68,6 +68,7 @@ def test_any_order_and_spaces_are_read() -> None:
         ("stages 50 then 5.5 | accept 1 then 4 | reject 4 then 5", "stages must be a whole number"),
         ("stages 50 then none | accept 1 then 4 | reject 4 then 5", "stages must be a number"),
         ("stages 9999 | accept 500 | reject 501", "reject must end with 500 at most"),
+        ("stages 99 | accept 50 | reject 51 | stop on-decision", "reject must end with 50 at most"),
         ("stages 50 | accept 1.5 | reject 2", "accept must be a whole number of at least 0"),
         ("stages 50 | accept 1 | reject 2 | stop early", "stop must be one of stage-end, on-reject, on-dec"),
         ("stages 50 | accept 1 | reject 2 | claim p>=0.02", "claim must have the form p<=…"),
