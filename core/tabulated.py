@@ -19,7 +19,7 @@ import numpy as np
 from steelyard.core.law import CountLaw
 from steelyard.core.parameter import Columns, Floats
 
-_KEPT = 32  # tables, of a row and its rates
+_KEPT, _KEPT_LARGE = 512, 8  # tables of one rate, tables of many
 
 
 @dataclass(frozen=True, slots=True)
@@ -86,16 +86,19 @@ class TabulatedLaw(CountLaw):
         for number, design in enumerate(designs.T):
             places = np.flatnonzero(which.ravel() == number)
             distinct, line = np.unique(at[places], return_inverse=True)
-            table = getattr(_table(self, tuple(design.tolist()), tuple(distinct.tolist())), part)
+            find = _table if distinct.size == 1 else _large_table
+            table = getattr(find(self, tuple(design.tolist()), tuple(distinct.tolist())), part)
             wanted, last = count[places], table.shape[1] - 1
             inside = table[line.ravel(), np.clip(wanted, 0, last).astype(np.intp)]
             found[places] = np.where(wanted < 0, below, np.where(wanted > last, above, inside))
         return found.reshape(given[0].shape)[()]
 
 
-@lru_cache(_KEPT)
-def _table(law: TabulatedLaw, row: tuple[float, ...], rates: tuple[float, ...]) -> Table:
+def _tabulate(law: TabulatedLaw, row: tuple[float, ...], rates: tuple[float, ...]) -> Table:
     return Table.of(law.chances(row, np.array(rates)))
+
+
+_table, _large_table = lru_cache(_KEPT)(_tabulate), lru_cache(_KEPT_LARGE)(_tabulate)
 
 
 @dataclass(frozen=True, slots=True)

@@ -107,14 +107,18 @@ class InspectedLotLaw(TabulatedLaw):
     def chances(self, row: tuple[float, ...], rates: Floats) -> Floats:
         """Return the generating function's coefficients, by Horner's rule from the most defectives down."""
         lot, n, misses, false_alarms = row
-        most = min(n, rates.max())
-        defectives = tails.hypergeometric_pmf(np.arange(most + 1), lot, rates[:, None], n)
-        good = tails.binomial_pmf(np.arange(n + 1), n - most, false_alarms)
+        defectives = tails.hypergeometric_pmf(np.arange(n + 1), lot, rates[:, None], n)
+        possible = np.flatnonzero((defectives > 0).any(axis=0))
+        least, most = int(possible[0]), int(possible[-1])
+        good = np.eye(1, most - least + 1)[0]
         found = np.zeros((rates.size, good.size))
-        for chance in defectives.T[::-1]:
+        for chance in defectives.T[most : least - 1 if least else None : -1]:
             found = _times(found, misses, 1 - misses) + chance[:, None] * good
             good = _times(good, 1 - false_alarms, false_alarms)
-        return found
+        caught = tails.binomial_pmf(least - np.arange(least + 1), least, misses)
+        alarmed = tails.binomial_pmf(np.arange(n - most + 1), n - most, false_alarms)
+        always = np.convolve(caught, alarmed)  # of the defectives and good items that every sample has
+        return np.array([np.convolve(chances, always) for chances in found])
 
     def exact(self, row: Mapping[str, Any], rate: Fraction) -> ExactLaw:
         """Return the law in whole numbers."""

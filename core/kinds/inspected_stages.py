@@ -144,7 +144,7 @@ def condemned_items(lot: int, rate: Floats, misses: float, false_alarms: float) 
     Returns
     -------
     condemned : ndarray of float, shape (numbers,)
-        All neighbouring numbers whose chance is not negligible at some rate.
+        All numbers whose chance is not negligible at some rate.
     chances : ndarray of float, shape (rates, numbers)
     """
     parts = []
@@ -152,12 +152,12 @@ def condemned_items(lot: int, rate: Floats, misses: float, false_alarms: float) 
         first, caught = _likely(defectives, 1 - misses, misses)
         second, alarmed = _likely(lot - defectives, false_alarms, 1 - false_alarms)
         parts.append((first + second, np.convolve(caught, alarmed)))
-    low = min(start for start, _ in parts)
-    high = max(start + len(chances) for start, chances in parts)
-    weights = np.zeros((rate.size, high - low))
+    condemned = np.unique(np.concatenate([start + np.arange(len(chances)) for start, chances in parts]))
+    weights = np.zeros((rate.size, condemned.size))
     for row, (start, chances) in zip(weights, parts, strict=True):
-        row[start - low : start - low + len(chances)] = chances
-    return np.arange(low, high, dtype=float), weights
+        place = np.searchsorted(condemned, start)
+        row[place : place + len(chances)] = chances
+    return condemned.astype(float), weights
 
 
 def _likely(n: float, p: float, q: float) -> tuple[int, Floats]:
