@@ -83,7 +83,7 @@ def _read_text(text: str, name: str) -> float:
         if "_" in digits or not digits.isascii():
             raise InvalidOperation
         return float(Decimal(digits).scaleb(-scale))
-    except (InvalidOperation, ValueError):  # a signalling NaN is a Decimal, but no float
+    except (ArithmeticError, ValueError):  # 1e9999999 and a signalling NaN are no floats
         hint = "write decimals with a point" if "," in digits else ""
         raise InvalidValue(name, "be a number", text, hint) from None
 

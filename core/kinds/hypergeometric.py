@@ -64,8 +64,10 @@ class Defectives(Parameter):
             if number.is_integer() and 0 <= number <= lot:
                 return number
             raise InvalidValue("D", f"be a whole number from 0 to {lot}, or a proportion of the lot", value)
+        if not 0 <= number <= 1:
+            raise InvalidValue("rate", "lie between 0 and 1", value)
         count = round(number * lot)
-        if count / lot == number and count <= lot:
+        if count / lot == number:
             return float(count)
         near = math.floor(typed(number) * lot)
         hint = f"neighbours: D = {near} is {near / lot:.6g}, D = {near + 1} is {(near + 1) / lot:.6g}"

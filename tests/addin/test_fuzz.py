@@ -74,3 +74,9 @@ def test_native_formulas_take_nothing_else(cell: str) -> None:
     assert SY_NATIVE(PLAN, cell).startswith(
         "SY: cell must be the address of a cell, such as B2 or 'Power grid'!B2"
     )
+
+
+@pytest.mark.parametrize("rate", ["-5%", "150%", "-1 ppm"])
+def test_a_share_of_the_lot_lies_between_nothing_and_all(rate: str) -> None:
+    plan = "hypergeometric | lot 60 | n 32 | claim D<=0 | alpha 0.05 | reject x>=1"
+    assert SY_POWER(plan, rate) == f"SY: rate must lie between 0 and 1, but got {rate}"
