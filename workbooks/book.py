@@ -11,11 +11,12 @@ from typing import Any
 
 from steelyard.core import VERSION
 from steelyard.core.errors import InvalidValue
+from steelyard.workbooks.classes import RiskTable
 from steelyard.workbooks.formulas import Host
 from steelyard.workbooks.house import Book
 from steelyard.workbooks.plans import Planned
-from steelyard.workbooks.requests import Problem
 from steelyard.workbooks.sheets.checks import add_checks
+from steelyard.workbooks.sheets.classes import add_classes
 from steelyard.workbooks.sheets.comparison import add_comparison
 from steelyard.workbooks.sheets.grid import add_grid
 from steelyard.workbooks.sheets.justification import Source, add_justification
@@ -23,6 +24,7 @@ from steelyard.workbooks.sheets.readme import add_readme, fill_readme
 from steelyard.workbooks.sheets.register import Register
 from steelyard.workbooks.sheets.results import add_results
 from steelyard.workbooks.sheets.sizes import add_sizes
+from steelyard.workbooks.tables import Problem
 
 JUSTIFIED_BY_DEFAULT = 30
 
@@ -69,6 +71,7 @@ def build_book(
     source: Path | None = None,
     justify: str | Sequence[str] | None = None,
     problems: Sequence[Problem] = (),
+    classes: RiskTable | None = None,
     progress: Progress | None = None,
 ) -> Summary:
     """Write the plan book of a request list.
@@ -87,6 +90,8 @@ def build_book(
         Characteristics that get a justification sheet; all of up to 30 if left out, none of more.
     problems : sequence of Problem
         Rows that were refused, listed in *Read me*.
+    classes : RiskTable, optional
+        The table from which the rows took their risks, shown on a sheet of its own.
     progress : callable, optional
         Shows how far the work on a list of things has come.
 
@@ -110,6 +115,7 @@ def build_book(
     agreeing, checked = add_checks(book, register)
     for add in (add_comparison, add_sizes, add_results):
         add(book, planned)
+    add_classes(book, classes)
     steps = progress(chosen, "justifications") if progress else chosen
     titles = [add_justification(book, register, place, origin).title for place in steps]
     summary = Summary(len(planned), len(titles), len(problems), agreeing, checked)

@@ -111,6 +111,11 @@ COMMANDS = (
             output(),
             HOST,
             takes(
+                "--classes",
+                metavar="FILE",
+                help="table of risk classes, .csv or .xlsx (default: the list's own sheet Risk classes)",
+            ),
+            takes(
                 "--justify", metavar="A,B,C", help="characteristics that get a justification sheet, or: all"
             ),
         ),

@@ -28,7 +28,7 @@ def demo(options: argparse.Namespace) -> int:
     target = Path(options.list)
     target.write_bytes((files("steelyard.workbooks") / "data" / "demo_requests.csv").read_bytes())
     print(f"wrote {target}", file=sys.stderr)
-    options.requests, options.justify = str(target), "all"
+    options.requests, options.justify, options.classes = str(target), "all", None
     return build(options)
 
 
@@ -45,13 +45,15 @@ def template(options: argparse.Namespace) -> int:
 def build(options: argparse.Namespace) -> int:
     """Build a plan book; every refused row is told, the others are built."""
     from steelyard.workbooks.book import build_book
+    from steelyard.workbooks.classes import find_classes
     from steelyard.workbooks.plans import plan_requests
     from steelyard.workbooks.progress import progress
     from steelyard.workbooks.requests import read_requests
 
     started = time.monotonic()
     source, target = Path(options.requests), Path(options.output)
-    requests, problems = read_requests(source)
+    given = Path(options.classes) if options.classes else None
+    requests, problems = read_requests(source, given)
     planned, refused = plan_requests(requests)
     problems = sorted([*problems, *refused], key=lambda problem: problem.row)
     for problem in problems:
@@ -59,6 +61,7 @@ def build(options: argparse.Namespace) -> int:
     if not planned:
         print("steelyard: no row could be planned; nothing was written", file=sys.stderr)
         return 1
+    named = any(one.request.risk_class for one in planned)
     summary = build_book(
         planned,
         target,
@@ -66,6 +69,7 @@ def build(options: argparse.Namespace) -> int:
         source=source,
         justify=_names(options.justify),
         problems=problems,
+        classes=find_classes(source, given) if named else None,
         progress=progress,
     )
     print(f"{summary} ({time.monotonic() - started:.1f} s)", file=sys.stderr)

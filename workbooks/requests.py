@@ -5,19 +5,14 @@ Only cells and columns are checked here; whether claim, catch and kind fit toget
 
 from __future__ import annotations
 
-import re
-from collections import Counter
-from collections.abc import Sequence
-from dataclasses import dataclass
-from difflib import get_close_matches
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import Any
 
-from openpyxl.utils import get_column_letter
-
-from steelyard.core.errors import InvalidValue, SteelyardError, shown
-from steelyard.workbooks.columns import COLUMNS, Cell, Column
-from steelyard.workbooks.tabular import Raw, Row, Unusable, read_rows
+from steelyard.workbooks.classes import RISKS, RiskClass, find_classes
+from steelyard.workbooks.columns import COLUMNS, Column
+from steelyard.workbooks.tables import Problem, read_table
+from steelyard.workbooks.tabular import read_rows
 
 __all__ = ["COLUMNS", "Column", "Problem", "Request", "read_requests"]
 
@@ -55,28 +50,7 @@ class Request:
     note: str | None = None
 
 
-@dataclass(frozen=True, slots=True)
-class Problem:
-    """A cell that can't be used; its row is left out.
-
-    Examples
-    --------
-    >>> print(Problem(7, "alpha", 5.0, "a probability between 0 and 1", "type 5% or 0.05"))
-    row 7: alpha must be a probability between 0 and 1, but got 5 (type 5% or 0.05)
-    """
-
-    row: int
-    column: str
-    value: Any
-    allowed: str
-    hint: str = ""
-
-    def __str__(self) -> str:
-        tail = f" ({self.hint})" if self.hint else ""
-        return f"row {self.row}: {self.column} must be {self.allowed}, but got {shown(self.value)}{tail}"
-
-
-def read_requests(path: Path) -> tuple[list[Request], list[Problem]]:
+def read_requests(path: Path, classes: Path | None = None) -> tuple[list[Request], list[Problem]]:
     """Read a request list.
 
     Parameters
@@ -84,6 +58,9 @@ def read_requests(path: Path) -> tuple[list[Request], list[Problem]]:
     path : Path
         An .xlsx workbook (sheet *Requests*, else its first) or a .csv file in UTF-8, separated by commas,
         semicolons or tabs; decimal commas are understood where semicolons separate.
+    classes : Path, optional
+        A table of risk classes; left out, that of the workbook's sheet *Risk classes*. It gives alpha, catch
+        and power where a row names a class and leaves them empty.
 
     Returns
     -------
@@ -94,106 +71,41 @@ def read_requests(path: Path) -> tuple[list[Request], list[Problem]]:
     ------
     SteelyardError
         When the file as a whole can't be used: unreadable, too large, wrong headings, mixed decimal marks.
+        Likewise for a table of risk classes with any row that can't be used.
     """
-    rows = read_rows(path)
-    if not rows.found:
-        message = f"{path.name} must hold a row of headings ({_headings()}), but is empty"
-        raise SteelyardError(message)
-    (_, headings), *body = rows.found
-    columns = _match(path, headings)
-    if rows.comma_allowed:
-        body = _decimal_points(path, columns, body)
-    requests: list[Request] = []
+    rows, problems = read_table(path, read_rows(path), COLUMNS)
+    requests = [Request(number, **values) for number, values in rows]
+    if not any(request.risk_class for request in requests):
+        return requests, problems
+    table = find_classes(path, classes)
+    good, unknown = _filled(requests, table.classes if table else {})
+    return good, sorted([*problems, *unknown], key=lambda problem: problem.row)
+
+
+def _filled(
+    requests: Sequence[Request], classes: Mapping[str, RiskClass]
+) -> tuple[list[Request], list[Problem]]:
+    """Fill in what rows leave to their class; what is typed in a row wins."""
+    good: list[Request] = []
     problems: list[Problem] = []
-    for row in body:
-        values, wrong = _read_row(columns, row)
-        problems += wrong
-        if not wrong:
-            requests.append(Request(row[0], **values))
-    return requests, problems
+    for request in requests:
+        empty = [name for name in RISKS if getattr(request, name) is None]
+        if request.risk_class is None:
+            good.append(request)
+        elif (found := classes.get(request.risk_class.casefold())) is not None:
+            good.append(replace(request, **{name: getattr(found, name) for name in empty}))
+        elif classes or empty:
+            problems.append(_unknown(request, empty, classes))
+        else:  # a mere label: every number stands in the row
+            good.append(request)
+    return good, problems
 
 
-def _headings() -> str:
-    return ", ".join(column.name for column in COLUMNS)
-
-
-def _plain(heading: Raw) -> str:
-    text = heading.shown if isinstance(heading, Unusable) else str(heading)
-    return " ".join(re.sub(r"[_\-*:]", " ", text).lower().split())
-
-
-def _match(path: Path, headings: Sequence[Raw]) -> list[Column | None]:
-    """Return the column of each heading; all that is wrong with the headings is told at once."""
-    known = {column.name: column for column in COLUMNS}
-    names = [None if heading is None else _plain(heading) for heading in headings]
-    wrong = []
-    for name in filter(None, names):
-        if name not in known:
-            close = get_close_matches(name, known, n=1)
-            wrong.append(f"unknown heading {name}" + (f" (did you mean {close[0]}?)" if close else ""))
-    wrong += [f"heading {name} twice" for name, count in Counter(filter(None, names)).items() if count > 1]
-    wrong += [
-        f"no heading {column.name}" for column in COLUMNS if column.required and column.name not in names
-    ]
-    if wrong:
-        message = f"{path.name}: {'; '.join(wrong)}. The headings are: {_headings()}"
-        raise SteelyardError(message)
-    return [known[name] if name else None for name in names]
-
-
-def _decimal_points(path: Path, columns: Sequence[Column | None], rows: Sequence[Row]) -> list[Row]:
-    """Turn decimal commas into points, unless the file uses both."""
-    seen: dict[str, str] = {}
-    for number, cells in rows:
-        for column, cell in zip(columns, cells, strict=False):
-            if column is not None and column.numeric and isinstance(cell, str):
-                for mark in re.findall(r"(?<=\d)[.,](?=\d)", cell):
-                    seen.setdefault(mark, f"{cell} in row {number}, {column.name}")
-    if len(seen) > 1:
-        message = f"{path.name} must keep to one decimal mark, but has {' and '.join(seen.values())}"
-        raise SteelyardError(message)
-    if "," not in seen:
-        return list(rows)
-    return [
-        (number, [_point(column, cell) for column, cell in _pairs(columns, cells)]) for number, cells in rows
-    ]
-
-
-def _point(column: Column | None, cell: Raw) -> Raw:
-    if column is None or not column.numeric or not isinstance(cell, str):
-        return cell
-    return re.sub(r"(?<=\d),(?=\d)", ".", cell)
-
-
-def _pairs(columns: Sequence[Column | None], cells: Sequence[Raw]) -> list[tuple[Column | None, Raw]]:
-    """Return the cells with their columns; short rows are filled, cells without a heading have no column."""
-    width = max(len(columns), len(cells))
-    wide = [*columns, *[None] * (width - len(columns))]
-    return list(zip(wide, [*cells, *[None] * (width - len(cells))], strict=True))
-
-
-def _read_row(columns: Sequence[Column | None], row: Row) -> tuple[dict[str, Any], list[Problem]]:
-    number, cells = row
-    values: dict[str, Any] = {}
-    problems = []
-    for place, (column, cell) in enumerate(_pairs(columns, cells), 1):
-        if column is None:
-            if cell is not None:
-                name = f"column {get_column_letter(place)}"
-                problems.append(Problem(number, name, cell, "empty, as it has no heading"))
-            continue
-        try:
-            values[column.field] = _value(column, cell)
-        except InvalidValue as error:
-            problems.append(Problem(number, column.name, error.value, column.allowed, error.hint))
-    return values, problems
-
-
-def _value(column: Column, cell: Raw) -> Cell | None:
-    if isinstance(cell, Unusable):
-        raise InvalidValue(column.name, f"be {column.allowed}", cell.shown)
-    if cell is not None:
-        return column.read(cell, column.name)
-    if column.required:
-        raise InvalidValue(column.name, f"be {column.allowed}", None)
-    return None
+def _unknown(request: Request, empty: Sequence[str], classes: Mapping[str, RiskClass]) -> Problem:
+    """Return the problem of a class that no table holds."""
+    if classes:
+        names = ", ".join(one.risk_class for one in classes.values())
+        return Problem(request.row, "risk class", request.risk_class, f"one of {names}")
+    allowed = "a class of a table of risk classes"
+    hint = f"there is no table; give one, or type {', '.join(empty)} in the row"
+    return Problem(request.row, "risk class", request.risk_class, allowed, hint)

@@ -61,13 +61,15 @@ class Rows:
     comma_allowed: bool = False
 
 
-def read_rows(path: Path) -> Rows:
+def read_rows(path: Path, sheet: str = "") -> Rows:
     """Return the rows of a workbook's sheet *Requests* (or its first sheet), or of a .csv file.
 
     Parameters
     ----------
     path : Path
         Ends in .xlsx or .csv.
+    sheet : str, optional
+        Another sheet of a workbook; no rows where it is missing.
 
     Returns
     -------
@@ -83,7 +85,7 @@ def read_rows(path: Path) -> Rows:
     if suffix not in (".xlsx", ".csv"):
         _refuse(path, "must end in .xlsx or .csv")
     try:
-        rows = _csv(path) if suffix == ".csv" else _xlsx(path)
+        rows = _csv(path) if suffix == ".csv" else _xlsx(path, sheet)
     except OSError as error:
         _refuse(path, f"can't be read ({error.strerror})")
     if len(rows.found) > MOST_ROWS:
@@ -114,15 +116,15 @@ def _kept(rows: Iterable[tuple[int, Sequence[Raw]]]) -> Iterator[Row]:
 # Workbooks
 
 
-def _xlsx(path: Path) -> Rows:
+def _xlsx(path: Path, sheet: str) -> Rows:
     check_package(path, LARGEST, links=False)
     with warnings.catch_warnings():
         warnings.simplefilter("ignore")  # openpyxl tells of features that a list does not need
         try:
             _check_parts(path)
-            rows = _sheet_rows(path, calculated=False)
+            rows = _sheet_rows(path, sheet, calculated=False)
             if any(cell is _FORMULA for _, cells in rows for cell in cells):
-                rows = _with_values(rows, dict(_sheet_rows(path, calculated=True)))
+                rows = _with_values(rows, dict(_sheet_rows(path, sheet, calculated=True)))
         except _DAMAGE as error:
             if isinstance(error, SteelyardError):
                 raise
@@ -144,11 +146,15 @@ def _check_parts(path: Path) -> None:
                 _refuse(path, "is damaged: a part declares a document type")
 
 
-def _sheet_rows(path: Path, calculated: bool) -> list[Row]:
+def _sheet_rows(path: Path, wanted: str, calculated: bool) -> list[Row]:
     with path.open("rb") as file:
         workbook = load_workbook(file, read_only=True, data_only=calculated, keep_links=False)
         sheets = workbook.worksheets
-        sheet = next((sheet for sheet in sheets if sheet.title.lower() == PREFERRED_SHEET), sheets[0])
+        title = (wanted or PREFERRED_SHEET).lower()
+        sheet = next((sheet for sheet in sheets if sheet.title.lower() == title), None)
+        if sheet is None and wanted:
+            return []
+        sheet = sheet or sheets[0]
         sheet.reset_dimensions()  # what a file says about its own size is no promise
         rows = sheet.iter_rows(max_col=MOST_COLUMNS)
         return list(_kept((number, [_cell(cell) for cell in row]) for number, row in enumerate(rows, 1)))

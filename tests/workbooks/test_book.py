@@ -44,7 +44,7 @@ def test_the_demo_list_covers_what_the_book_can_do():
     assert len(plans) >= 24
     pairs = {(plan.kind, plan.claim.side) for plan in plans}
     kinds, sides = ("binomial", "poisson", "hypergeometric"), ("above", "below", "either")
-    assert pairs == {(kind, side) for kind in kinds for side in sides}
+    assert pairs >= {(kind, side) for kind in kinds for side in sides}
     assert sum(plan.rule.high == 1 and plan.claim.value > 0 for plan in plans) >= 2
     assert any(plan.verdict == "pass" for plan in plans)
     assert any(plan.claim.value == 5e-5 for plan in plans)

@@ -114,11 +114,11 @@ def test_our_own_book_follows_its_register(tmp_path):
     assert done.unfollowed == {}
     cells = shown(tmp_path / "book.xlsx", "Register")
     plan = call("smallest", ["binomial", 0.02, 0.05, 0.1, 0.9])
-    assert cells["Q7"] == plan
-    assert cells["AD7"] == 0.1
-    assert cells["V7"] == pytest.approx(call("power", [plan, 0.1]), rel=1e-13)
-    assert cells["Y7"] == pytest.approx(call("rate_for", [plan, 0.5]), rel=1e-13)
-    assert cells["Q8"] == call("smallest", ["binomial", 0.05, 0.01, 0.2, 0.8])
+    assert cells["R7"] == plan
+    assert cells["AE7"] == 0.1
+    assert cells["W7"] == pytest.approx(call("power", [plan, 0.1]), rel=1e-13)
+    assert cells["Z7"] == pytest.approx(call("rate_for", [plan, 0.5]), rel=1e-13)
+    assert cells["R8"] == call("smallest", ["binomial", 0.05, 0.01, 0.2, 0.8])
     grid = shown(tmp_path / "book.xlsx", "Power grid")
     row = next(ref[1:] for ref, value in grid.items() if value == plan)
     assert grid[f"G{row}"] == pytest.approx(call("power", [plan, grid["G6"]]), rel=1e-13)

@@ -18,6 +18,7 @@ SHEETS = (
     ("Comparison", "Up to six plans side by side: items, risks, curves, where they cross."),
     ("Sample size", "Size and power against the number of items, for one requirement."),
     ("Results log", "A row for each inspected lot: decision, p-value, limits, running totals."),
+    ("Risk classes", "The table from which rows took alpha, catch and power."),
 )
 STEPS = (
     "Edit the yellow cells of the Register; plan, risks and curves follow when Steelyard's add-in is loaded.",

@@ -49,6 +49,7 @@ HEADS = (
     Head("fixed", "Size, if fixed", 8.5),
     Head("verdict", "Verdict on rejecting", 10),
     Head("split", "Split", 8.5),
+    Head("class", "Risk class", 9),
     Head("reference", "Reference", 20),
     Head("note", "Note", 32),
     Head("plan", "Plan", 60, "Plan and risks"),
@@ -171,6 +172,7 @@ class Register:
         self._input("fixed", self._each(lambda planned: planned.request.n), "input number", _SIZE)
         self._input("verdict", self._each(lambda planned: planned.plan.verdict), "pick", choice(VERDICTS))
         self._input("split", self._each(lambda planned: planned.plan.split), "pick", choice(SPLITS))
+        self._input("class", self._each(lambda planned: planned.request.risk_class), "entry words")
         self._input("reference", self._each(lambda planned: planned.request.reference), "entry words")
         self._input("note", self._each(lambda planned: planned.request.note), "entry words")
 
