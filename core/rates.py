@@ -19,7 +19,7 @@ from steelyard.core.parameter import Columns, Floats
 from steelyard.core.plan import Plan, Reject
 from steelyard.core.questions import power
 from steelyard.core.regions import design_row
-from steelyard.core.splits import NEAR, compare
+from steelyard.core.splits import compare, doubt
 from steelyard.core.threshold import CountKind
 from steelyard.core.two_sided import region_tails
 
@@ -145,7 +145,7 @@ def _solve(plans: Sequence[Plan], targets: Floats, end: str, both: bool) -> Floa
     def reached(rates: Floats) -> Truth:
         found = kind.reject(columns, rates)
         hit = np.where(high, kind.accept(columns, rates) <= missed if high.any() else False, found >= targets)
-        close = np.abs(found - targets) <= NEAR * targets
+        close = np.abs(found - targets) <= doubt(targets)
         if isinstance(kind, CountKind) and kind.parameters[0].whole and close.any():
             tails = region_tails(columns["low"], columns["high"])
             hit = compare(kind.law, columns, rates, tails, targets) >= 0

@@ -9,6 +9,7 @@ behind which count there are no more gaps.
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass
 
@@ -17,6 +18,7 @@ import numpy as np
 from steelyard.core.errors import InvalidValue
 from steelyard.core.law import CountLaw
 from steelyard.core.need import Need
+from steelyard.core.others import Others
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.spans import Risk, Rows
 
@@ -62,6 +64,29 @@ class Requirements:
 
     def first(self) -> Floats:
         """Return the first amounts that meet the requirements; NaN where none allowed does."""
+        return self._by_the_fewer(Requirements._first)
+
+    def lasting(self) -> Floats:
+        """Return the amounts from which on the requirements are met for good; NaN beyond the largest."""
+        return self._by_the_fewer(Requirements._lasting)
+
+    def _by_the_fewer(self, find: Callable[[Requirements], Floats]) -> Floats:
+        """Search by the events where these are the fewer, else by what is none."""
+        if math.isinf(self.law.most({self.law.amount: np.ones(())})):
+            return find(self)
+        often = self.law.share(self.columns, self.claim) + self.law.share(self.columns, self.catch) > 1
+        if not often.any():
+            return find(self)
+        amount = np.empty(self.claim.shape)
+        turned = "below" if self.side == "above" else "above"
+        for rows, law, side in ((~often, self.law, self.side), (often, Others(self.law), turned)):
+            if rows.any():
+                columns = {name: column[rows] for name, column in self.columns.items()}
+                numbers = self.claim[rows], self.catch[rows], self.alpha[rows], self.power[rows]
+                amount[rows] = find(Requirements(law, columns, side, *numbers))
+        return amount
+
+    def _first(self) -> Floats:
         spans, most, last = self._spans(), self.claim.size, self.last_counts()
 
         def ends(rows: Rows, count: Floats) -> tuple[Floats, Floats]:
@@ -70,8 +95,7 @@ class Requirements:
 
         return self._amount(_least(last, ends)[1] * spans.step[:most])
 
-    def lasting(self) -> Floats:
-        """Return the amounts from which on the requirements are met for good; NaN beyond the largest."""
+    def _lasting(self) -> Floats:
         spans, most, last = self._spans(), self.claim.size, self.last_counts()
 
         def gaps(rows: Rows, mirrored: Floats) -> tuple[Floats, Floats]:

@@ -19,12 +19,13 @@ from numpy.typing import NDArray
 
 from steelyard.core.law import CountLaw
 from steelyard.core.parameter import Columns, Floats
-from steelyard.core.splits import NEAR, Truth, compare
+from steelyard.core.splits import Truth, compare, doubt
 
 Rows = NDArray[np.intp]
 
 _PATIENCE = 6  # Newton steps before every second step halves the bracket
-_TINY = 1e-300
+_MOST_STEPS = 2.0**52  # beyond, a float has no neighbour one step away
+_TINY, _RARE = 1e-300, 1e-200
 
 
 @dataclass(frozen=True, slots=True)
@@ -73,8 +74,8 @@ class Risk:
             Closing: the last size that keeps it, at most the largest size allowed.
         """
         part = self._rows(rows)
-        first = _first_size(part, count, np.floor(part.law.largest(part.columns) / part.step))
-        return first - part.closing
+        largest = np.minimum(np.floor(part.law.largest(part.columns) / part.step), _MOST_STEPS)
+        return _first_size(part, count, largest) - part.closing
 
     def _rows(self, rows: Rows) -> Risk:
         columns = {name: column[rows] for name, column in self.columns.items()}
@@ -90,7 +91,8 @@ class Risk:
             else self.law.at_most(count - 1, columns, self.rate)
         )
         sign = np.sign(tail - self.bound)
-        near = np.flatnonzero(np.abs(tail - self.bound) <= NEAR * self.bound)
+        # Between whole sizes there are no ties that matter: any real size will do there, to 12 digits.
+        near = np.flatnonzero((np.abs(tail - self.bound) <= doubt(self.bound)) & (self.step == 1))
         if near.size:
             sign[near] = self._rows(near)._exact_sign(size[near], count[near])
         risen = sign if self.end == "high" else -sign
@@ -121,11 +123,7 @@ def _first_size(risk: Risk, count: Floats, largest: Floats) -> Floats:
     bounded = np.isfinite(risk.law.most({risk.law.amount: largest}))
     beyond = np.array(np.broadcast_to(largest + 1, count.shape))
     before = np.minimum(np.where(bounded, count - 1, 0.0), largest)
-    size, tail, passed = (
-        _guess(risk, count, bounded),
-        np.zeros(count.shape),
-        np.zeros(count.shape, dtype=bool),
-    )
+    size, tail, passed = _guess(risk, count, bounded), np.zeros(count.shape), np.zeros(count.shape, bool)
     found, rows, rounds = beyond.copy(), np.arange(count.size), 0
     while True:
         found[rows] = beyond
@@ -155,7 +153,7 @@ def _guess(risk: Risk, count: Floats, bounded: Truth) -> Floats:
     level = risk.bound if risk.end == "high" else 1.0 - risk.bound
     root = 1.0 - 1.0 / (9.0 * count) + _normal_quantile(level) / (3.0 * np.sqrt(count))
     mean = count * np.maximum(root, 0.05) ** 3
-    share = np.maximum(risk.law.share(risk.columns, risk.rate), _TINY)
+    share = np.maximum(risk.law.share(risk.columns, risk.rate), _RARE)
     amount = mean / share - np.where(bounded, (mean - count + 1.0) / 2.0, 0.0)
     size: Floats = np.ceil(amount / risk.step)
     return size

@@ -33,6 +33,7 @@ Tail = tuple[Any, str, Floats]
 Truth = NDArray[np.bool_]
 
 NEAR = 1e-8  # relative; wider than a tail's error, because a rate near 1 leaves few digits of 1 - rate
+_ROUNDING = 1e-11  # relative; ten times a tail's error
 ONE_SIDED = "one-sided"
 ENDS = {"above": ("high",), "below": ("low",), "either": ("low", "high")}
 FALLING_ENDS = {"above": ("low",), "below": ("high",), "either": ("low", "high")}  # of a count that falls
@@ -169,8 +170,13 @@ def compare(law: CountLaw, columns: Columns, rate: Floats, tails: list[Tail], bo
         return exact.compare(list(zip(map(int, weights), ends, map(int, counts), strict=True)), typed(bound))
 
     numbers = [bound, *(weight for weight, _, _ in tails), *(x for _, _, x in tails)]
-    close = np.abs(total - bound) <= NEAR * bound
+    close = np.abs(total - bound) <= doubt(bound)
     return _settle(law, columns, rate, np.sign(total - bound), close, settle, numbers)
+
+
+def doubt(bound: Any) -> Any:
+    """Return how close to a bound floats do not decide: relative to the bound or what it leaves to 1."""
+    return NEAR * np.minimum(bound, 1 - bound) + _ROUNDING * bound
 
 
 def first_whole(predicate: Callable[[Floats], Truth], start: Floats, step: float = 1.0) -> Floats:

@@ -22,7 +22,8 @@ from steelyard.core.parameter import Columns, Floats
 from steelyard.core.requirements import Requirements
 from steelyard.core.splits import ENDS, ONE_SIDED, Tail, Truth, compare
 
-MOST_SIZES = 10_000
+MOST_SIZES = {"half": 20_000, "nearest": 5_000, "rarest": 2_000}  # by what one size costs
+LARGEST = 5_000  # amount of a plan with another split than half
 _BLOCK = 64
 _NARROWINGS = 2
 _ROUNDS = 60
@@ -45,14 +46,19 @@ def two_sided_amount(law: CountLaw, row: Columns, need: Need, lasting: bool) -> 
     InvalidValue
         When any real amount is asked for.
     NoAnswer
-        When more than `MOST_SIZES` sizes would have to be looked at.
+        When more than `MOST_SIZES` sizes would have to be looked at, or a plan would be too large for that.
     """
     if not need.whole:
         raise InvalidValue(law.amount, "be sought as a whole number for a two-sided claim", "any real number")
     start, stop = _between(law, row, need, lasting)
     if np.isnan(start):
         return np.nan
-    for amounts in _blocks(start, stop, backwards=lasting):
+    if need.split != "half" and start > LARGEST:
+        message = (
+            f"a plan of more than {LARGEST} {law.amount} for a two-sided claim is sought with split half only"
+        )
+        raise NoAnswer(message)
+    for amounts in _blocks(start, stop, lasting, MOST_SIZES[need.split]):
         met = meets(law, row, need, amounts)
         if lasting and not met.all():
             return float(amounts[~met].max()) + 1 if amounts[~met].max() < stop else np.nan
@@ -145,12 +151,12 @@ def _rarest_bound(requirement: Requirements, need: Need) -> float:
     return float(np.ceil(np.maximum(amount, -np.log1p(-need.power) / at_catch) * (1 + 1e-9))[0])
 
 
-def _blocks(start: float, stop: float, backwards: bool) -> Iterator[Floats]:
+def _blocks(start: float, stop: float, backwards: bool, most: int) -> Iterator[Floats]:
     """Yield the whole numbers from `start` to `stop` in growing blocks, from either end."""
     seen, length = 0, _BLOCK
     while seen <= stop - start:
-        if seen > MOST_SIZES:
-            message = f"more than {MOST_SIZES} sizes would have to be looked at: ask for each side by itself"
+        if seen > most:
+            message = f"more than {most} sizes would have to be looked at: ask for each side by itself"
             raise NoAnswer(message)
         offsets = np.arange(seen, min(seen + length, int(stop - start) + 1), dtype=np.float64)
         yield stop - offsets if backwards else start + offsets

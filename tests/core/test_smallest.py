@@ -180,7 +180,7 @@ def test_real_amounts_are_least(side: str, lasting: bool) -> None:
             at = [brute.poisson(typed(units) * typed(rate)) for rate in (case.claim, *case.catches)]
             return brute.meets(at[0], at[1:], side, alpha, power, "half")
 
-        assert met(amount)
+        assert met(amount * (1 + 1e-12))
         assert not met(amount * (1 - 1e-12))
         assert not lasting or all(met(amount * (1 + 1e-6 * step)) for step in range(1, 1000, 90))
 
@@ -248,9 +248,9 @@ NO_REAL = "{} must be sought as a whole number{}, but got any real number"
         ("binomial 2% 4% 90%", {"extra": 50}, "must be left out for a plan of kind binomial, but got 50"),
         ("binomal 2% 4% 90%", {}, "(did you mean binomial?)"),
         (
-            "binomial p<=0.5 0.5000001 90%",
+            "binomial p<=0.5 0.50001 90%",
             {},
-            "no plan of a size that is allowed has alpha 0.05 for the claim p<=0.5 and power 0.9 at",
+            "no plan of a size that is allowed has alpha 0.05 for the claim p<=0.5 and power 0.9 at 0.50001",
         ),
     ],
 )
@@ -276,9 +276,13 @@ def test_refused_pairs(claim: str, catch: object, message: str) -> None:
 
 
 def test_too_many_sizes_for_a_two_sided_claim_are_refused(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(two_sided, "MOST_SIZES", 50)
+    monkeypatch.setitem(two_sided.MOST_SIZES, "nearest", 50)
     with pytest.raises(NoAnswer, match="more than 50 sizes would have to be looked at"):
         smallest_plan("binomial", "p=0.02", 0.05, 0.03, 0.9, split="nearest")
+    with pytest.raises(
+        NoAnswer, match="a plan of more than 5000 n for a two-sided claim is sought with split half only"
+    ):
+        smallest_plan("binomial", "p=0.02", 0.05, 0.021, 0.9, split="rarest")
 
 
 def test_one_bad_requirement_does_not_spoil_the_others() -> None:
