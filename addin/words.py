@@ -80,7 +80,8 @@ def stage_cells(value: Any, name: str) -> Any:
     if len(cells) == 1:
         return cells[0]
     return " then ".join(
-        "none" if cell is None else cell if isinstance(cell, str) else write_number(cell) for cell in cells
+        "none" if cell is None else cell if isinstance(cell, str) else write_number(read_number(cell, name))
+        for cell in cells
     )
 
 

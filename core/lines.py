@@ -9,7 +9,7 @@ from fractions import Fraction
 from typing import Any
 
 from steelyard.core.errors import InvalidValue
-from steelyard.core.numbers import read_whole, typed, write_number
+from steelyard.core.numbers import read_number, read_whole, typed, write_number
 from steelyard.core.walk import NONE, Look
 
 MOST_ITEMS = 1_000_000
@@ -175,8 +175,8 @@ def read_line(text: str | None, name: str) -> Line:
     match = _LINE.fullmatch(compact)
     if match is None or match[1] != _RELATIONS[name]:
         raise InvalidValue(name, f"have the form {example}", text)
-    intercept = float(match[4] or 0)
-    return Line(float(match[2]), -intercept if match[3] == "-" else intercept)
+    slope, intercept = read_number(match[2], name), read_number(match[4] or 0, name)
+    return Line(slope, -intercept if match[3] == "-" else intercept)
 
 
 def read_end(text: str | None) -> int:

@@ -80,3 +80,17 @@ def test_native_formulas_take_nothing_else(cell: str) -> None:
 def test_a_share_of_the_lot_lies_between_nothing_and_all(rate: str) -> None:
     plan = "hypergeometric | lot 60 | n 32 | claim D<=0 | alpha 0.05 | reject x>=1"
     assert SY_POWER(plan, rate) == f"SY: rate must lie between 0 and 1, but got {rate}"
+
+
+def test_lines_have_finite_numbers() -> None:
+    plan = "binomial | sequential to 9 | accept x<=0.1*n-1 | reject x>=0.1*n+1e999 | at end accept x<=1"
+    assert call("check", [plan]).startswith("SY: reject must be a finite number, but got ")
+
+
+def test_a_number_too_large_for_a_decimal_is_no_number() -> None:
+    assert call("SY_POWER", [PLAN, "1e99999999999"]) == "SY: p must be a number, but got 1e99999999999"
+
+
+def test_a_stage_without_a_float_is_refused() -> None:
+    answer = call("stages", ["binomial", [[50], [50]], [[1], [4]], [[4], [BEYOND]]])
+    assert answer.startswith("SY: rejects must be a finite number, but got 1000")
