@@ -33,6 +33,9 @@ RATIOS = (1, 2)
 MOST_ACCEPTED = 28
 """The largest acceptance number of the single plan for the same risks; beyond, the search would take long."""
 
+MOST_LAST = 100
+"""The largest acceptance number tried after the second stage: more than three times that."""
+
 _NEAR = 1e-10  # relative; chances closer to a bound are compared exactly
 _COARSE = 48  # first stages at which all pairs with one last number are looked at
 _WAYS = 32  # first stages of one pair tried at a time
@@ -112,8 +115,8 @@ class _Search:
     def best(self) -> Found | None:
         """Return the best plan of all pairs of acceptance numbers; None where there is none."""
         best: Found | None = None
-        largest, last, start = self._largest(), 1, 1.0
-        while True:
+        largest, start = self._largest(), 1.0
+        for last in range(1, MOST_LAST + 1):
             stop = min(largest, best[0] if best else math.inf)
             if start > stop:
                 return best
@@ -126,7 +129,7 @@ class _Search:
                     found = self._cheapest(accept, last, least, gap, best[0] if best else math.inf)
                     best = min(filter(None, (best, found)), default=None)
             start = float(stages[max(int(reached[0].argmax()) - 1, 0)])
-            last += 1
+        return best
 
     def _promising(self, stages: Floats, last: int, reached: Any) -> list[tuple[float, int, float, float]]:
         """Return pairs that may be best: bound of the average, first number, least stage and its width."""
