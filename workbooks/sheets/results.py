@@ -143,6 +143,7 @@ class _Log:
         )
         sheet.next_row = below + 1
         paper.break_here(sheet)
+        sheet.skip()
         x = sheet.ref(f"O{first}", f"O{last}")
         curves = [
             Curve("Rate so far", x, sheet.ref(f"L{first}", f"L{last}"), "points"),
