@@ -17,6 +17,7 @@ from typing import Any
 from steelyard.core.errors import InvalidValue
 
 _SCALES = {"%": 2, "ppm": 6}
+LEAST = 1e-290  # a smaller probability is not computed to all its digits
 MOST = sys.float_info.max  # a whole number beyond it has no float
 
 
@@ -112,8 +113,10 @@ def read_probability(value: Any, name: str) -> float:
     0.05
     """
     number = read_number(value, name)
-    if 0 < number < 1:
+    if LEAST <= number < 1:
         return number
+    if 0 < number < LEAST:
+        raise InvalidValue(name, f"be at least {LEAST}", value)
     percent = write_number(float(Decimal(repr(number)) / 100))
     hint = f"type {write_number(number)}% or {percent}" if 1 <= number < 100 else ""
     raise InvalidValue(name, "lie between 0 and 1", value, hint)

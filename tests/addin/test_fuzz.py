@@ -94,3 +94,8 @@ def test_a_number_too_large_for_a_decimal_is_no_number() -> None:
 def test_a_stage_without_a_float_is_refused() -> None:
     answer = call("stages", ["binomial", [[50], [50]], [[1], [4]], [[4], [BEYOND]]])
     assert answer.startswith("SY: rejects must be a finite number, but got 1000")
+
+
+def test_an_alpha_below_what_is_computed_is_refused() -> None:
+    refused = "SY: alpha must be at least 1e-290, but got 5e-324"
+    assert call("SY_VARIABLES", ["p<=2%", 5e-324, "10%", 0.9]) == refused
