@@ -19,6 +19,7 @@ from steelyard.core.plan import Plan
 from steelyard.core.splits import NEAR
 
 LIMIT_ENDS = ("lower", "upper")
+LEAST_CONFIDENCE = 1e-6  # what it lacks of 1 must be a number below 1, and well below
 
 
 def p_value(plan: Plan, observed: Any) -> float:
@@ -102,7 +103,10 @@ def limit(plan: Plan, observed: Any, end: Any, confidence: Any = None) -> float:
     kind = _judging(plan, "confidence limit")
     end = read_choice(end, "end", LIMIT_ENDS)
     if confidence is not None:
-        miss = float(1 - typed(read_probability(confidence, "confidence")))
+        wanted = read_probability(confidence, "confidence")
+        if wanted < LEAST_CONFIDENCE:
+            raise InvalidValue("confidence", f"be at least {LEAST_CONFIDENCE:g}", confidence)
+        miss = float(1 - typed(wanted))
     elif plan.alpha is not None:
         miss = plan.alpha
     else:

@@ -99,3 +99,10 @@ def test_a_stage_without_a_float_is_refused() -> None:
 def test_an_alpha_below_what_is_computed_is_refused() -> None:
     refused = "SY: alpha must be at least 1e-290, but got 5e-324"
     assert call("SY_VARIABLES", ["p<=2%", 5e-324, "10%", 0.9]) == refused
+
+
+def test_a_confidence_of_nothing_is_refused() -> None:
+    refused = "SY: confidence must be at least 1e-06, but got 1e-64"
+    student = "student | n 12 | planning-sigma 0.4 | claim mean>=500 | alpha 0.05 | reject t<=-1.7958848187"
+    assert call("limit", [student, "mean 499.7 s 0.31", "upper", 1e-64]) == refused
+    assert call("limit", [PLAN, 1, "lower", 1e-64]) == refused
