@@ -18,6 +18,7 @@ from steelyard.core.errors import InvalidValue, SteelyardError
 
 LONGEST = 255
 MOST_CELLS = 2_000_000
+MOST_AT_ONCE = 10_000  # cells of a range that one answer takes as a whole
 ERRORS = frozenset(
     ["#N/A", "#VALUE!", "#REF!", "#DIV/0!", "#NUM!", "#NAME?", "#NULL!", "#SPILL!", "#CALC!", "#GETTING_DATA"]
 )
@@ -174,6 +175,8 @@ def _range(value: Cells, argument: Argument) -> Any:
     if value and not isinstance(value[0], list | tuple):
         rows = [list(value)]
     if argument.word.whole:
+        if (count := sum(map(len, rows))) > MOST_AT_ONCE:
+            raise InvalidValue(argument.name, f"be a range of at most {MOST_AT_ONCE} cells", count)
         return tuple(map(tuple, rows))
     if not rows or not rows[0] or any(len(row) != len(rows[0]) for row in rows):
         raise InvalidValue("a range", "have rows of one length", f"{len(rows)} uneven rows")

@@ -106,3 +106,8 @@ def test_a_confidence_of_nothing_is_refused() -> None:
     student = "student | n 12 | planning-sigma 0.4 | claim mean>=500 | alpha 0.05 | reject t<=-1.7958848187"
     assert call("limit", [student, "mean 499.7 s 0.31", "upper", 1e-64]) == refused
     assert call("limit", [PLAN, 1, "lower", 1e-64]) == refused
+
+
+def test_a_range_for_one_answer_is_limited() -> None:
+    refused = "SY: plans must be a range of at most 10000 cells, but got 10001"
+    assert call("best", [[[PLAN]] * 10_001, 0.1]) == refused
