@@ -22,7 +22,7 @@ from steelyard.core.others import Others
 from steelyard.core.parameter import Columns, Floats
 from steelyard.core.spans import Risk, Rows
 
-_HALVINGS = 6
+_HALVINGS = 4
 _AT_ONCE = 64  # counts to look at in one call, at the least
 _TINY = 1e-300
 _REAL_STEPS = 2.0**46  # so many steps to the largest size that can be needed, where it may be any real number

@@ -33,6 +33,7 @@ Tail = tuple[Any, str, Floats]
 Truth = NDArray[np.bool_]
 
 NEAR = 1e-8  # relative; wider than a tail's error, because a rate near 1 leaves few digits of 1 - rate
+_FEW, _AT_ONCE = 4, 32
 _ROUNDING = 1e-11  # relative; ten times a tail's error
 ONE_SIDED = "one-sided"
 ENDS = {"above": ("high",), "below": ("low",), "either": ("low", "high")}
@@ -194,6 +195,15 @@ def first_whole(predicate: Callable[[Floats], Truth], start: Floats, step: float
     found = predicate(start)
     ahead = np.array(np.broadcast_to(start, found.shape), dtype=float)
     behind, stride = ahead - step, step
+    if found.size <= _FEW and not found.all():  # then many numbers in one call are faster than few calls
+        run = ahead + step * np.arange(1.0, _AT_ONCE).reshape(-1, *[1] * ahead.ndim)
+        true = predicate(run)
+        hit = true.any(axis=0)
+        first = np.where(hit, np.take_along_axis(run, true.argmax(axis=0)[np.newaxis], 0)[0], run[-1] + step)
+        ahead, behind = np.where(found, ahead, first), np.where(found, behind, first - step)
+        found = found | hit
+        if not found.all():
+            found = predicate(ahead)
     while not found.all():
         behind, stride = np.where(found, behind, ahead), 2 * stride
         ahead = np.where(found, ahead, ahead + stride)
