@@ -46,7 +46,9 @@ class Limits:
 
     def _check_width(self, width: float, deviation: float) -> None:
         if width > MOST_SIGMAS * deviation:
-            raise InvalidValue("sigma", f"be at least {width / MOST_SIGMAS:g} for limits so far apart", deviation)
+            raise InvalidValue(
+                "sigma", f"be at least {width / MOST_SIGMAS:g} for limits so far apart", deviation
+            )
 
     @property
     def deviation(self) -> float | None:

@@ -14,7 +14,7 @@ TEXT = (ROOT / "README.md").read_text(encoding="utf-8")
 
 
 def test_the_lists_are_the_catalogues():
-    """Renew them with ``python tests/readme.py``."""
+    """Renew them with ``python tests/workbooks/readme.py``."""
     from readme import renewed
 
     assert renewed(TEXT) == TEXT

@@ -1,4 +1,4 @@
-"""Renew the lists of functions and kinds in the README: ``python tests/readme.py``."""
+"""Renew the lists of functions and kinds in the README: ``python tests/workbooks/readme.py``."""
 
 from __future__ import annotations
 
@@ -7,7 +7,7 @@ from pathlib import Path
 
 from steelyard.workbooks.catalogue_text import markdown
 
-README = Path(__file__).resolve().parent.parent / "README.md"
+README = Path(__file__).resolve().parents[2] / "README.md"
 LIST = re.compile(r"(?<=<!-- functions -->\n).*?(?=<!-- /functions -->)", re.DOTALL)
 
 
