@@ -108,20 +108,30 @@ def _calc() -> Iterator[Finding]:
     if hasattr(os, "geteuid") and os.geteuid() == 0:
         yield Finding("Calc add-in", "not looked at: LibreOffice's tool does not run as root")
         return
-    if IDENTIFIER in _output([str(tool), "list"]):
-        yield Finding("Calc add-in", "installed for this user")
-    else:
+    listed = _output([str(tool), "list"])
+    told = listed.partition(f"Identifier: {IDENTIFIER}")[2].partition("Identifier: ")[0]
+    if not told:
         yield Finding("Calc add-in", "not installed", "run: steelyard connect calc")
+    elif "is registered: no" in told:
+        yield Finding(
+            "Calc add-in", "installed, but not registered", "run: steelyard connect calc", serious=True
+        )
+    else:
+        release = told.partition("Version: ")[2].partition("\n")[0].strip() or "of unknown version"
+        fault = "" if release == VERSION else f"Steelyard is {VERSION}: run: steelyard connect calc"
+        yield Finding("Calc add-in", f"{release}, installed for this user", fault, serious=bool(fault))
 
 
 def _excel() -> Iterator[Finding]:
-    from steelyard.addin.excel.machine import Machine, faults
+    from steelyard.addin.excel.machine import Machine, excel_kind, faults
     from steelyard.addin.excel.xlam import INTERPRETER, read_settings
 
     machine = Machine.this()
     if machine.system != "Windows":
         yield Finding("Excel", "not on this system: Excel calls Python on Windows only")
         return
+    if machine.excel:
+        yield Finding("Excel", excel_kind())
     for fault in faults(machine):
         yield Finding("Excel", "can not call Python", fault, serious=machine.excel)
     file = machine.startup / "steelyard.xlam"

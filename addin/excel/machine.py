@@ -114,6 +114,22 @@ def _excel_is_registered() -> bool:
     return True
 
 
+def excel_kind() -> str:
+    """Return where Excel starts from and who installed it; an Excel of the Microsoft Store runs fenced in."""
+    if sys.platform != "win32":
+        return ""
+    import winreg
+
+    try:
+        key = r"SOFTWARE\Microsoft\Windows\CurrentVersion\App Paths\excel.exe"
+        path = winreg.QueryValue(winreg.HKEY_LOCAL_MACHINE, key)
+    except OSError:
+        return "installed, but not where Windows lists its programs"
+    kind = "Microsoft Store" if "WindowsApps" in path else "desktop"
+    bits = 32 if "(x86)" in path else 64
+    return f"{kind}, probably {bits} bit, {path}"
+
+
 def _import_fault(python: Path) -> str:
     command = [str(python), "-B", "-P", "-c", PROBE]
     try:
