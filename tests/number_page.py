@@ -128,7 +128,7 @@ def student(rng: random.Random) -> Case:
 CHECKS = (
     Check("binomial", "n 1 to 10,000,000; p 0 to 1", "50 digits, n to 100,000", binomial),
     Check("poisson", "units to 1e9; mean to 1e9", "50 digits, mean to 30,000", poisson),
-    Check("hypergeometric", "lot 2 to 1,000,000,000", "50 digits, lots to 100,000", hypergeometric),
+    Check("hypergeometric", "lot 2 to 1,000,000", "50 digits, lots to 100,000", hypergeometric),
     Check("until", "1 to 10,000 defectives", "50 digits, as binomial tails", until),
     Check("staged binomial", "counts as in a single plan", "50 digits, two stages summed up", staged),
     Check("normal", "any mean; sigma above 0", "50 digits", normal),

@@ -1,8 +1,8 @@
 """Power from the spreadsheet's own functions, so that anybody can check a plan without Steelyard.
 
 Unlike those of SY_NATIVE, the formulas here take sample size and critical counts from cells, and follow when
-these change. Upper tails are lower tails of the items that are not counted, because 1 minus a lower tail
-loses small probabilities; for defects per unit they are a gamma distribution.
+these change. Upper tails are a beta or a gamma distribution, in lots the lower tail of the good items:
+1 minus a lower tail loses small probabilities.
 
 Kinds of plan that do not count have the formula of SY_NATIVE, with the numbers of the plan as it was built.
 """
@@ -33,7 +33,7 @@ class Tails:
 
 # A hypergeometric count has a least and a greatest value, outside which the spreadsheet's function fails.
 TAILS = {
-    "binomial": Tails("BINOM.DIST({x},{n},{rate},TRUE)", "BINOM.DIST({n}-{x},{n},1-{rate},TRUE)"),
+    "binomial": Tails("BINOM.DIST({x},{n},{rate},TRUE)", "BETA.DIST({rate},{x},{n}-{x}+1,TRUE)"),
     "poisson": Tails(
         "IF({rate}=0,1,POISSON.DIST({x},{units}*{rate},TRUE))", "GAMMA.DIST({units}*{rate},{x},1,TRUE)"
     ),
@@ -47,7 +47,7 @@ TAILS = {
 
 def follows(plan: Plan) -> bool:
     """Tell whether a plan's native formula follows the cells of its critical counts."""
-    return plan.kind in TAILS
+    return plan.kind in TAILS and kind_of(plan).native(plan, "A1") is not None
 
 
 def power_formula(kind: str, low: str, high: str, rate: str, **design: str) -> str:
@@ -56,7 +56,7 @@ def power_formula(kind: str, low: str, high: str, rate: str, **design: str) -> s
     Examples
     --------
     >>> power_formula("binomial", "C2", "D2", "E2", n="B2")
-    'IF(ISTEXT(C2),0,BINOM.DIST(C2,B2,E2,TRUE))+IF(ISTEXT(D2),0,BINOM.DIST(B2-D2,B2,1-E2,TRUE))'
+    'IF(ISTEXT(C2),0,BINOM.DIST(C2,B2,E2,TRUE))+IF(ISTEXT(D2),0,BETA.DIST(E2,D2,B2-D2+1,TRUE))'
     """
     tails = TAILS[kind]
     lower = tails.at_most.format(x=low, rate=rate, **design)
