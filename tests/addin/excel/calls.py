@@ -18,6 +18,7 @@ PLANS = (
 RATE = 0.05
 REFERENCE = re.compile(r"([A-Z])(\d+)(?::([A-Z])(\d+))?")
 PART = re.compile(r'((?:"[^"]*"|\([^()]*\)|[^,])*),')
+NUMBER = re.compile(r"\d+(?:\.\d+)?(?:e-?\d+)?")
 CALL = re.compile(r"(SY_[A-Z_]+)\((.*)\)")
 
 
@@ -84,5 +85,13 @@ def differs(found: Any, wanted: Any) -> bool:
     if isinstance(wanted, list):
         return len(found) != len(wanted) or any(map(differs, found, wanted))
     if isinstance(wanted, str):
-        return bool(found != wanted)
+        return found != wanted and (not isinstance(found, str) or _texts_differ(found, wanted))
     return not abs(found - wanted) <= 1e-9 * abs(wanted)
+
+
+def _texts_differ(found: str, wanted: str) -> bool:
+    """Compare plan texts: their words to the letter, their numbers as numbers."""
+    if NUMBER.split(found) != NUMBER.split(wanted):
+        return True
+    pairs = zip(NUMBER.findall(found), NUMBER.findall(wanted), strict=True)
+    return any(differs(float(one), float(other)) for one, other in pairs)
